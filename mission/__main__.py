@@ -1,0 +1,7 @@
+"""``python -m mission`` is the command ``mission``."""
+
+import sys
+
+from .cli import main
+
+sys.exit(main())

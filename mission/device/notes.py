@@ -1,0 +1,85 @@
+"""What stands out in the data of a module and must be repeated with results."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from .curves import on_state_voltage_v, switching_energy_j
+
+_NAMES = {
+    "switch.on_state": "on-state voltage of the switch",
+    "diode.on_state": "on-state voltage of the diode",
+    "switch.turn_on": "turn-on energy",
+    "switch.turn_off": "turn-off energy",
+    "diode.recovery": "recovery energy",
+}
+
+
+def module_notes(module) -> tuple[str, ...]:
+    """Extensions of the curves inside the ratings, then data that are possible but unusual.
+
+    Parameters
+    ----------
+    module : PowerModule
+
+    Returns
+    -------
+    tuple of str
+        One sentence each; empty when nothing stands out.
+    """
+    return (*_extensions(module), *_oddities(module))
+
+
+def _extensions(module):
+    r = module.ratings
+    every = module.on_state_curves() | module.energy_curves()
+    for place, curves in every.items():
+        what = _NAMES[place]
+        first, last = curves.current_data_a
+        if first > 0.0:
+            yield f"{what}: below {first:g} A the line through the first two points is used, not below zero"
+        if last < r.i_nominal_a:
+            yield f"{what}: data end at {last:g} A, below the nominal current of {r.i_nominal_a:g} A; extended in a straight line"
+        elif last < r.i_peak_repetitive_a:
+            yield f"{what}: data end at {last:g} A, below the peak rating of {r.i_peak_repetitive_a:g} A; extended in a straight line"
+    for t_c, names in _grouped(every, lambda c: c.curve[0].t_vj_c, lambda t: t > r.t_vj_op_min_c):
+        yield f"{names}: below {t_c:g} degC extended in a straight line over temperature (module rated from {r.t_vj_op_min_c:g} degC)"
+    for t_c, names in _grouped(every, lambda c: c.curve[-1].t_vj_c, lambda t: t < r.t_vj_op_max_c):
+        yield f"{names}: above {t_c:g} degC extended in a straight line over temperature (module rated to {r.t_vj_op_max_c:g} degC)"
+
+
+def _grouped(every, temperature, concerns):
+    """One entry for all curve sets that end at the same temperature."""
+    groups: dict[float, list[str]] = {}
+    for place, curves in every.items():
+        if concerns(temperature(curves)):
+            groups.setdefault(temperature(curves), []).append(_NAMES[place])
+    return [(t, "all curves" if len(names) == len(every) else ", ".join(names)) for t, names in groups.items()]
+
+
+def _oddities(module):
+    r = module.ratings
+    i = r.i_nominal_a
+    for place, curves in module.on_state_curves().items():
+        v = np.array([float(on_state_voltage_v(curves, i, t)) for t in curves.t_vj_c])
+        if (v < 0.5).any() or (v > 6.0).any():
+            yield f"{_NAMES[place]}: {v.min():.3g} to {v.max():.3g} V at nominal current is unusual; 1 to 4 V are common"
+    for place, curves in module.energy_curves().items():
+        t = curves.t_vj_c
+        e = np.array([float(switching_energy_j(curves, i, x)) for x in t])
+        if (np.diff(e) < 0.0).any():
+            yield f"{_NAMES[place]}: falls with temperature at nominal current, which is unusual"
+        if e.max() == 0.0:
+            yield f"{_NAMES[place]}: zero at nominal current"
+        ratio = curves.v_ref_v / r.v_ces_v
+        if not 0.25 <= ratio <= 0.8:
+            yield f"{_NAMES[place]}: reference voltage {curves.v_ref_v:g} V is {ratio:.0%} of the blocking voltage; about half is common"
+    for name, thermal in (("switch", module.switch.thermal), ("diode", module.diode.thermal)):
+        if thermal.r_total_k_per_w > 5.0:
+            yield f"thermal resistance of the {name}: {thermal.r_total_k_per_w:.3g} K/W is unusually high"
+        if thermal.tau_s[-1] > 30.0:
+            yield f"thermal branches of the {name}: a time constant of {thermal.tau_s[-1]:g} s is long for a module; does it hold a sink?"
+    if module.diode.thermal.r_total_k_per_w < 0.7 * module.switch.thermal.r_total_k_per_w:
+        yield "thermal resistance: the diode is much better cooled than the switch, which is unusual"
+    if not module.failure_mode:
+        yield "no failure mode in the module file: temperatures can be computed, a life cannot"

@@ -1,0 +1,139 @@
+"""The history that is kept: an envelope of bounded size, and the peaks."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from .march import CHIP_NAMES, RowEnvelope
+
+
+@dataclass(frozen=True)
+class JunctionHistory:
+    """Temperatures and losses of a mission; b time buckets, twelve chips.
+
+    Attributes
+    ----------
+    edge_s : ndarray, shape (b + 1,)
+        Borders of the buckets.
+    t_min_c, t_max_c, case_min_c, case_max_c, loss_w : ndarray, shape (b, 12)
+        Extremes of junction and case points, mean losses.
+    coolant_c : ndarray, shape (b,)
+        Mean coolant temperature.
+    phase_id : ndarray, shape (b,)
+        Phase that holds most of the bucket.
+    peak_c, peak_time_s, peak_phase_id, lowest_c, case_peak_c, energy_j : ndarray, shape (12,)
+        Highest junction temperature, end of the row that holds it, its phase; lowest
+        junction temperature; highest case temperature; loss energy of the mission.
+    beyond_data_s : ndarray, shape (12,)
+        Time in which the junction stood outside the temperatures of the data-sheet
+        curves, so that losses were extended in a straight line.
+    """
+
+    chips: tuple[str, ...]
+    phases: tuple[str, ...]
+    duration_s: float
+    edge_s: np.ndarray
+    t_min_c: np.ndarray
+    t_max_c: np.ndarray
+    case_min_c: np.ndarray
+    case_max_c: np.ndarray
+    loss_w: np.ndarray
+    coolant_c: np.ndarray
+    phase_id: np.ndarray
+    peak_c: np.ndarray
+    peak_time_s: np.ndarray
+    peak_phase_id: np.ndarray
+    lowest_c: np.ndarray
+    case_peak_c: np.ndarray
+    energy_j: np.ndarray
+    beyond_data_s: np.ndarray
+
+    @property
+    def hottest(self) -> int:
+        """Index of the chip with the highest junction temperature."""
+        return int(np.argmax(self.peak_c))
+
+    def to_frame(self):
+        """One row per bucket: times, phase, coolant, and per chip minimum, maximum, case extremes and mean loss."""
+        import pandas as pd
+
+        columns = {"start_s": self.edge_s[:-1], "end_s": self.edge_s[1:],
+                   "phase": np.array(self.phases, dtype=object)[self.phase_id], "coolant_c": self.coolant_c}
+        for i, chip in enumerate(self.chips):
+            columns[f"{chip} t_vj_min_c"] = self.t_min_c[:, i]
+            columns[f"{chip} t_vj_max_c"] = self.t_max_c[:, i]
+            columns[f"{chip} t_case_min_c"] = self.case_min_c[:, i]
+            columns[f"{chip} t_case_max_c"] = self.case_max_c[:, i]
+            columns[f"{chip} loss_w"] = self.loss_w[:, i]
+        return pd.DataFrame(columns)
+
+
+class EnvelopeBuilder:
+    """Gathers row envelopes into at most ``n_buckets`` equal stretches of time."""
+
+    def __init__(self, duration_s: float, phases, data_c, *, n_buckets: int = 8640):
+        self.duration_s, self.phases, self.data_c = float(duration_s), tuple(phases), data_c
+        b = self._b = int(n_buckets)
+        self._width = self.duration_s / b
+        self._temps = np.empty((4, b, 12))
+        self._temps[::2], self._temps[1::2] = np.inf, -np.inf
+        self._loss, self._coolant = np.zeros((b, 12)), np.zeros(b)
+        self._phase_time = np.zeros((b, len(self.phases)), np.float32)
+        self.peak_c, self.peak_time_s, self.peak_phase_id = np.full(12, -np.inf), np.zeros(12), np.zeros(12, np.int64)
+        self.lowest_c, self.case_peak_c = np.full(12, np.inf), np.full(12, -np.inf)
+        self.energy_j, self.beyond_data_s = np.zeros(12), np.zeros(12)
+
+    def add(self, rows: RowEnvelope) -> None:
+        """Take the rows of one block."""
+        span = rows.end_s - rows.start_s
+        best = np.argmax(rows.t_max_c, axis=0)
+        chip = np.arange(12)
+        higher = rows.t_max_c[best, chip] > self.peak_c
+        self.peak_c = np.where(higher, rows.t_max_c[best, chip], self.peak_c)
+        self.peak_time_s = np.where(higher, rows.end_s[best], self.peak_time_s)
+        self.peak_phase_id = np.where(higher, rows.phase_id[best], self.peak_phase_id)
+        self.lowest_c = np.minimum(self.lowest_c, rows.t_min_c.min(axis=0))
+        self.case_peak_c = np.maximum(self.case_peak_c, rows.case_max_c.max(axis=0))
+        self.energy_j += rows.loss_j.sum(axis=0)
+        low, high = self.data_c
+        working = rows.loss_j > 1e-6 * np.maximum(span, 1e-12)[:, None]
+        self.beyond_data_s += (((rows.t_min_c < low) | (rows.t_max_c > high)) & working).T @ span
+        first = np.minimum((rows.start_s / self._width + 1e-9).astype(int), self._b - 1)
+        last = np.clip(np.ceil(rows.end_s / self._width - 1e-9).astype(int) - 1, first, self._b - 1)
+        inside = first == last
+        self._gather(first[inside], rows, inside, span[inside], 1.0)
+        for r in np.flatnonzero(~inside):
+            here = np.arange(first[r], last[r] + 1)
+            edges = np.clip(np.array([here, here + 1]) * self._width, rows.start_s[r], rows.end_s[r])
+            part = edges[1] - edges[0]
+            pick = np.full(here.size, r)
+            self._gather(here, rows, pick, part, (part / span[r])[:, None])
+
+    def _gather(self, bucket, rows, pick, span, share):
+        if bucket.size == 0:
+            return
+        temps = (rows.t_min_c[pick], rows.t_max_c[pick], rows.case_min_c[pick], rows.case_max_c[pick])
+        starts = np.flatnonzero(np.concatenate([[True], bucket[1:] != bucket[:-1]]))
+        here = bucket[starts]
+        for k, values in enumerate(temps):
+            gather = np.minimum if k % 2 == 0 else np.maximum
+            self._temps[k, here] = gather(self._temps[k, here], gather.reduceat(values, starts))
+        self._loss[here] += np.add.reduceat(rows.loss_j[pick] * share, starts)
+        self._coolant[here] += np.add.reduceat(rows.coolant_c[pick] * span, starts)
+        np.add.at(self._phase_time, (bucket, rows.phase_id[pick].astype(int)), span)
+
+    def finish(self, end_s: float | None = None) -> JunctionHistory:
+        """The history up to ``end_s`` (default: the whole mission); buckets that no row touched are left out."""
+        end = self.duration_s if end_s is None else end_s
+        time = self._phase_time.sum(axis=1)
+        used = time > 0.0
+        width = self._width
+        # a bucket shorter than a row shows the row's extremes; one without any row cannot occur within the mission
+        edge = np.append(np.flatnonzero(used) * width, min(end, self.duration_s))
+        return JunctionHistory(
+            CHIP_NAMES, self.phases, float(end), edge, *(self._temps[k][used] for k in range(4)),
+            self._loss[used] / time[used, None], self._coolant[used] / time[used], self._phase_time[used].argmax(axis=1),
+            self.peak_c, self.peak_time_s, self.peak_phase_id, self.lowest_c, self.case_peak_c, self.energy_j, self.beyond_data_s,
+        )

@@ -1,0 +1,740 @@
+"""The electrothermal march: plain arrays in, plain arrays out, no checks.
+
+Three ways to cross a stretch of time, all with the exact exponential of every
+mode and the loss read at the temperature of the middle of the step:
+
+* idle: no current; steps double.
+* mean (fast rotation): the mean over the period is marched, steps double; the
+  periodic ripple is added in closed form.
+* angle (slow rotation, standstill, and the first periods after a jump): the
+  electrical angle is marched, every chip has its own loss.
+
+Everything that a step touches lies in one flat work array at fixed places, so
+that the compiler can see that nothing overlaps and uses vector instructions
+across the twelve chips. Local states are scaled with their output weight: a
+junction temperature is the coolant plus the plain sum of its local states plus
+the shared part.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numba import njit
+
+from ..losses.kernels import at_temperature, instant_corners, period_mean_corners, to_hinges, zero_sequence
+
+N = 12  # chips: six switches, then six diodes, a-upper, a-lower, b-upper ...
+L_MAX, S_MAX, K_MAX = 16, 96, 8  # local modes a chip, shared modes, hinge coefficients
+# places in the work array w
+X_L, A_L, B_L = 0, 192, 384  # [mode, chip]
+X_S, A_S, W_S, HEAT = 576, 672, 768, 960  # [mode]
+B_S = 1056  # [chip, S_MAX] heat input, one chip after the other
+C_S = 2208  # [mode, chip] output
+T, FREE, P, P_MID, ENERGY, D_SELF = 3360, 3376, 3392, 3408, 3424, 3440  # [chip]
+SHARED, GAIN = 864, 880  # [chip] coolant plus shared part, and what the latest step added to it
+HINGE = 3456  # [coefficient, 16]
+KNOT = 3584  # [corner]
+CASE_L, CASE_S, CASE = 3600, 3792, 4944  # [mode, chip], [mode, chip], [chip]
+W_SIZE = 4960
+
+# scalars carried from row to row
+TIME, THETA, COOLANT, REGIME, SETTLE, LEVEL, WINDOW_CYCLES, WINDOW_START, H_LOADED, WINDOW_PHASE = range(10)
+N_NOW = 10
+# columns of the row table
+DT, FREQ, DIRECTION, I_PEAK, MOD, PHI, ANGLE_OFFSET, T_COOLANT, S_ON, S_OFF, S_REC = range(11)
+N_ROW = 11
+# settings
+F_SLOW, STEPS, H0, H_MAX, SETTLE_PERIODS, SETTLE_K, T_STOP = range(7)
+IDLE, MEAN, ANGLE = 0, 1, 2
+OK, RUNAWAY = 0, 1
+NODES, RIPPLE_NODES = 64, 32  # along the conducting half wave
+CHUNK = 256
+SIN, COS = np.sin(np.pi * np.arange(NODES + 1) / NODES), np.cos(np.pi * np.arange(NODES + 1) / NODES)
+SIN[NODES] = 0.0
+TINY_W = 1e-9  # keeps decaying states out of the denormal range, where the processor crawls
+THIRD = 2.0 * np.pi / 3.0
+ROOT3_2 = np.sqrt(3.0) / 2.0
+
+
+@njit(cache=True)
+def step_factors(h, lam_l, rho, lam_s, out):
+    """Factors of an exact step of length ``h`` into ``out`` (2 L N + N + 2 S): keep, heat in (local), own rise, keep, gain (shared)."""
+    n_l = lam_l.shape[0]
+    n_s = lam_s.size
+    own = 2 * n_l * N
+    for i in range(N):
+        out[own + i] = 0.0
+    for k in range(n_l):
+        for i in range(N):
+            e = np.expm1(-lam_l[k, i] * h)
+            out[k * N + i] = 1.0 + e
+            b = -rho[k, i] * e / lam_l[k, i]
+            out[n_l * N + k * N + i] = b
+            out[own + i] += b
+    for s in range(n_s):
+        e = np.expm1(-lam_s[s] * h)
+        out[own + N + s] = 1.0 + e
+        out[own + N + n_s + s] = -e / lam_s[s]
+
+
+@njit(cache=True, inline="always")
+def load_factors(w, n_l, n_s, factors):
+    """Put the factors of a step into their places."""
+    m = n_l * N
+    for j in range(m):
+        w[A_L + j] = factors[j]
+        w[B_L + j] = factors[m + j]
+    for i in range(N):
+        w[D_SELF + i] = factors[2 * m + i]
+    for s in range(n_s):
+        w[A_S + s] = factors[2 * m + N + s]
+        w[W_S + s] = factors[2 * m + N + n_s + s]
+
+
+@njit(cache=True, inline="always")
+def hinge_losses(w, n_h, source, target):
+    """Losses of all chips at the temperatures in ``source``, into ``target``."""
+    for i in range(N):
+        w[target + i] = w[HINGE + i] + w[HINGE + 16 + i] * (w[source + i] - w[KNOT])
+    for k in range(1, n_h):
+        for i in range(N):
+            d = w[source + i] - w[KNOT + k]
+            d = d if d > 0.0 else 0.0
+            w[target + i] += w[HINGE + 16 + 16 * k + i] * d
+    for i in range(N):
+        w[target + i] = w[target + i] if w[target + i] > TINY_W else TINY_W
+
+
+@njit(cache=True, inline="always")
+def one_step(w, n_l, n_s, n_h, t_cool, stretch):
+    """All chips over one step, exact in every mode, loss at the predicted middle temperature.
+
+    ``stretch``: this step over the one before.
+    """
+    for i in range(N):
+        # the shared part goes on at the rate of the step before: good enough for the temperature of the loss
+        w[FREE + i] = w[SHARED + i] + stretch * w[GAIN + i]
+    for k in range(n_l):
+        for i in range(N):
+            w[X_L + k * N + i] *= w[A_L + k * N + i]
+            w[FREE + i] += w[X_L + k * N + i]
+    hinge_losses(w, n_h, T, P)
+    for i in range(N):
+        w[P_MID + i] = 0.5 * (w[T + i] + w[FREE + i] + w[D_SELF + i] * w[P + i])
+    hinge_losses(w, n_h, P_MID, P)
+    for i in range(N):
+        w[T + i] = w[FREE + i] - w[SHARED + i] - stretch * w[GAIN + i] + w[D_SELF + i] * w[P + i]
+        w[GAIN + i] = -w[SHARED + i]
+        w[SHARED + i] = t_cool
+    for k in range(n_l):
+        for i in range(N):
+            w[X_L + k * N + i] += w[B_L + k * N + i] * w[P + i]
+    for s in range(n_s):
+        w[HEAT + s] = 0.0
+    for i in range(N):
+        for s in range(n_s):
+            w[HEAT + s] += w[B_S + i * S_MAX + s] * w[P + i]
+    for s in range(n_s):
+        w[X_S + s] = w[A_S + s] * w[X_S + s] + w[W_S + s] * w[HEAT + s]
+    for s in range(n_s):
+        for i in range(N):
+            w[SHARED + i] += w[C_S + s * N + i] * w[X_S + s]
+    for i in range(N):
+        w[T + i] += w[SHARED + i]
+        w[GAIN + i] += w[SHARED + i]
+
+
+@njit(cache=True)
+def case_points(w, n_l, n_s, t_cool):
+    """Case temperatures under the chips into their place."""
+    for i in range(N):
+        w[CASE + i] = t_cool
+    for k in range(n_l):
+        for i in range(N):
+            w[CASE + i] += w[CASE_L + k * N + i] * w[X_L + k * N + i]
+    for s in range(n_s):
+        for i in range(N):
+            w[CASE + i] += w[CASE_S + s * N + i] * w[X_S + s]
+
+
+@njit(cache=True)
+def shared_part(w, n_s, t_cool):
+    """Coolant plus shared modes, seen at each chip; after a change from outside."""
+    for i in range(N):
+        w[SHARED + i] = t_cool
+        w[GAIN + i] = 0.0
+    for s in range(n_s):
+        for i in range(N):
+            w[SHARED + i] += w[C_S + s * N + i] * w[X_S + s]
+
+
+@njit(cache=True)
+def junctions(w, n_l, n_s, t_cool):
+    """Junction temperatures from the states."""
+    shared_part(w, n_s, t_cool)
+    for i in range(N):
+        w[T + i] = w[SHARED + i]
+    for k in range(n_l):
+        for i in range(N):
+            w[T + i] += w[X_L + k * N + i]
+
+
+@njit(cache=True)
+def half_wave(op, stride, i_step, voltage, energy, modulation, knot_c, nodes):
+    """Losses of switch and diode along the half wave that they conduct: hinges ``nodes`` (NODES + 1, 2, k).
+
+    Node j stands at j pi/NODES of the current; only every ``stride``-th is made.
+    """
+    n_k = knot_c.size
+    phi = op[PHI] * op[DIRECTION]
+    cos_phi, sin_phi = np.cos(phi), np.sin(phi)
+    scale = op[S_ON:S_REC + 1]
+    corner = np.empty(n_k)
+    m = op[MOD]
+    for j in range(0, NODES + 1, stride):
+        sin_x = SIN[j] * cos_phi + COS[j] * sin_phi
+        cos_x = COS[j] * cos_phi - SIN[j] * sin_phi
+        a = m * sin_x
+        b = m * (-0.5 * sin_x - ROOT3_2 * cos_x)
+        share = 0.5 * (1.0 + a + zero_sequence(modulation, a, b, -a - b))
+        current = op[I_PEAK] * SIN[j]
+        for kind in range(2):
+            instant_corners(kind, current, share if kind == 0 else 1.0 - share, scale, i_step, voltage, energy, corner)
+            to_hinges(corner, knot_c, n_k, nodes[j, kind])
+
+
+@njit(cache=True, inline="always")
+def leg_losses(leg, psi, nodes, w):
+    """Losses of one leg at the angle ``psi`` (within a turn) of its current: one switch and the opposite diode conduct."""
+    if psi < np.pi:
+        on, fly, off_switch, off_diode = 2 * leg, 7 + 2 * leg, 2 * leg + 1, 6 + 2 * leg
+    else:
+        on, fly, off_switch, off_diode = 2 * leg + 1, 6 + 2 * leg, 2 * leg, 7 + 2 * leg
+        psi -= np.pi
+    place = psi * (NODES / np.pi)
+    j = int(place)
+    if j > NODES - 1:
+        j = NODES - 1
+    u = place - j
+    for k in range(nodes.shape[2]):
+        w[HINGE + 16 * k + on] = nodes[j, 0, k] + u * (nodes[j + 1, 0, k] - nodes[j, 0, k])
+        w[HINGE + 16 * k + fly] = nodes[j, 1, k] + u * (nodes[j + 1, 1, k] - nodes[j, 1, k])
+        w[HINGE + 16 * k + off_switch] = 0.0
+        w[HINGE + 16 * k + off_diode] = 0.0
+
+
+@njit(cache=True)
+def feed(first, n_points, values, times, half, ripple, phase, last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count):
+    """Feed samples ``values`` (points, N) of N signals from ``first`` on to their turning-point filters."""
+    for i in range(N):
+        signal = first + i
+        head = heading[signal]
+        newest = last[signal, 0]
+        at = -1  # where in this feed the newest point stands; -1: it came with an earlier feed
+        k = p_count[signal]
+        for j in range(n_points):
+            value = values[j, i]
+            if value == newest and head != 2:
+                continue
+            up = 1 if value > newest else -1
+            if up != head and head != 2:
+                p_value[signal, k] = newest
+                if at >= 0:
+                    p_time[signal, k] = times[at]
+                    p_half[signal, k] = half
+                    p_ripple[signal, k] = ripple[i]
+                    p_phase[signal, k] = np.int16(phase)
+                else:
+                    p_time[signal, k] = last[signal, 1]
+                    p_half[signal, k] = last[signal, 2]
+                    p_ripple[signal, k] = last[signal, 3]
+                    p_phase[signal, k] = np.int16(last[signal, 4])
+                k += 1
+            head = up if head != 2 else 0
+            newest = value
+            at = j
+        if at >= 0:
+            last[signal, 0] = newest
+            last[signal, 1] = times[at]
+            last[signal, 2] = half
+            last[signal, 3] = ripple[i]
+            last[signal, 4] = phase
+        heading[signal] = head
+        p_count[signal] = k
+
+
+@njit(cache=True)
+def flush_points(last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count):
+    """Hand over the newest point of every signal at the end of the mission."""
+    for signal in range(heading.size):
+        if heading[signal] != 2:
+            k = p_count[signal]
+            p_value[signal, k] = last[signal, 0]
+            p_time[signal, k] = last[signal, 1]
+            p_half[signal, k] = last[signal, 2]
+            p_ripple[signal, k] = last[signal, 3]
+            p_phase[signal, k] = np.int16(last[signal, 4])
+            p_count[signal] = k + 1
+            heading[signal] = 2
+
+
+@njit(cache=True)
+def ripple_of(kind, t_mean, op, half_nodes, knot_c, lam, rho, nodes, result):
+    """Periodic ripple of one chip about its mean temperature, its own feedback included.
+
+    Power is a broken line over the angle, so the response of each mode is exact.
+    ``half_nodes``: see :func:`half_wave`. ``result``: kappa (what the ripple adds
+    to the mean loss, relative), lowest and highest ripple [K], loss at the mean
+    temperature, that temperature. ``nodes`` (RIPPLE_NODES + 1, L) gets the scaled
+    states less their means.
+    """
+    n = RIPPLE_NODES
+    n_l = lam.size
+    n_h = max(knot_c.size - 1, 1)
+    f = op[FREQ]
+    stride = NODES // RIPPLE_NODES
+    # turning backwards the half wave is crossed from its other end
+    begin, stride = (0, stride) if op[DIRECTION] > 0.0 else (NODES, -stride)
+    dt = 0.5 / (f * n)
+    a_k, w0, w1, over, x_k = np.empty(n_l), np.empty(n_l), np.empty(n_l), np.empty(n_l), np.empty(n_l)
+    for k in range(n_l):
+        z = lam[k] * dt
+        a_k[k] = np.exp(-z)
+        if z < 1e-5:
+            w1[k] = dt * (0.5 - z / 6.0)
+            w0[k] = dt * (0.5 - z / 3.0)
+        else:
+            mean = -np.expm1(-z) / z
+            w1[k] = dt * (1.0 - mean) / z
+            w0[k] = dt * (mean - a_k[k]) / z
+        half = 0.5 * lam[k] / f
+        over[k] = np.exp(-half) / -np.expm1(-2.0 * half)
+    tau = np.zeros(n + 1)
+    p = np.empty(n + 1)
+    mean_before = 0.0
+    mean_p = 0.0
+    for turn in range(3):
+        mean_p = 0.0
+        for j in range(n + 1):
+            p[j] = at_temperature(half_nodes[begin + stride * j, kind], knot_c, n_h, t_mean + tau[j])
+            mean_p += p[j] if 0 < j < n else 0.5 * p[j]
+        mean_p *= 0.5 / n
+        if turn == 0:
+            mean_before = mean_p
+        for k in range(n_l):
+            x_k[k] = 0.0
+        for j in range(n):
+            for k in range(n_l):
+                x_k[k] = a_k[k] * x_k[k] + w0[k] * p[j] + w1[k] * p[j + 1]
+        for k in range(n_l):
+            x_k[k] *= over[k]
+            nodes[0, k] = rho[k] * (x_k[k] - mean_p / lam[k])
+        for j in range(n):
+            for k in range(n_l):
+                x_k[k] = a_k[k] * x_k[k] + w0[k] * p[j] + w1[k] * p[j + 1]
+                nodes[j + 1, k] = rho[k] * (x_k[k] - mean_p / lam[k])
+        for j in range(n + 1):
+            total = 0.0
+            for k in range(n_l):
+                total += nodes[j, k]
+            tau[j] = total
+    result[0] = mean_p / mean_before - 1.0 if mean_before > 0.0 else 0.0
+    result[1] = tau.min()
+    result[2] = tau.max()
+    result[3] = mean_before
+    result[4] = t_mean
+
+
+@njit(cache=True)
+def ripples(op, w, group, group_kind, group_lam, group_rho, half_nodes, knot_c, nodes, out):
+    """Ripple of every group of like chips at their mean temperature: ``nodes`` (G, ., L) and ``out`` (G, 5)."""
+    for g in range(group_kind.size):
+        total, count = 0.0, 0
+        for i in range(N):
+            if group[i] == g:
+                total += w[T + i]
+                count += 1
+        ripple_of(group_kind[g], total / count, op, half_nodes, knot_c, group_lam[g], group_rho[g], nodes[g], out[g])
+
+
+@njit(cache=True)
+def small_change(op, made_for):
+    """Whether a ripple made for one operating point serves another when scaled with the loss."""
+    return (abs(op[FREQ] - made_for[FREQ]) <= 0.005 * made_for[FREQ] and op[DIRECTION] == made_for[DIRECTION]
+            and abs(op[I_PEAK] - made_for[I_PEAK]) <= 0.03 * made_for[I_PEAK]
+            and abs(op[MOD] - made_for[MOD]) <= 0.02 and abs(op[PHI] - made_for[PHI]) <= 0.03
+            and abs(op[S_ON] - made_for[S_ON]) <= 0.02 * made_for[S_ON] and abs(op[S_OFF] - made_for[S_OFF]) <= 0.02 * made_for[S_OFF]
+            and abs(op[S_REC] - made_for[S_REC]) <= 0.02 * made_for[S_REC])
+
+
+@njit(cache=True)
+def ripple_share(w, n_h, i, result):
+    """A chip's loss over the loss that its group's ripple was made for."""
+    if result[3] <= 0.0:
+        return 1.0
+    p = w[HINGE + i] + w[HINGE + 16 + i] * (w[T + i] - w[KNOT])
+    for k in range(1, n_h):
+        d = w[T + i] - w[KNOT + k]
+        if d > 0.0:
+            p += w[HINGE + 16 + 16 * k + i] * d
+    return max(p, 0.0) / (result[3] * (1.0 + result[0]))
+
+
+@njit(cache=True)
+def add_ripple(sign, op, theta_rotor, w, n_l, n_h, group, group_lam, group_rho, ripple, nodes):
+    """Turn mean states into physical ones at the present angle (sign +1), or back (-1)."""
+    f = op[FREQ]
+    theta = theta_rotor + op[ANGLE_OFFSET]
+    for i in range(N):
+        g = group[i]
+        share = sign * ripple_share(w, n_h, i, ripple[g])
+        psi = theta - THIRD * ((i % 6) // 2)
+        if (i % 2 == 1) != (i >= 6):
+            psi -= np.pi  # lower switch and upper diode carry the negative half wave
+        if op[DIRECTION] < 0.0:
+            psi = np.pi - psi
+        psi = wrap(psi)
+        change = 0.0
+        if psi < np.pi:
+            place = psi / np.pi * RIPPLE_NODES
+            j = min(int(place), RIPPLE_NODES - 1)
+            u = place - j
+            for k in range(n_l):
+                d = share * ((1.0 - u) * nodes[g, j, k] + u * nodes[g, j + 1, k])
+                w[X_L + k * N + i] += d
+                change += d
+        else:
+            since = (psi - np.pi) / (2.0 * np.pi * f)
+            for k in range(n_l):
+                # after the half wave the state itself decays, its mean does not
+                mean = group_rho[g, k] / group_lam[g, k] * ripple[g, 3] * (1.0 + ripple[g, 0])
+                d = share * ((nodes[g, RIPPLE_NODES, k] + mean) * np.exp(-group_lam[g, k] * since) - mean)
+                w[X_L + k * N + i] += d
+                change += d
+        w[T + i] += change
+
+
+@njit(cache=True)
+def wrap(angle):
+    """Angle within one turn from zero."""
+    return angle - 2.0 * np.pi * np.floor(angle / (2.0 * np.pi))
+
+
+@njit(cache=True)
+def mean_hinges(op, w, i_step, conduction, energy_mean, order, amount, knot_c, group, ripple):
+    """Mean losses with the ripple's share, as hinges of every chip."""
+    n_k = knot_c.size
+    corner = np.empty(n_k)
+    hinge = np.empty(max(n_k, 2))
+    for kind in range(2):
+        period_mean_corners(kind, op[I_PEAK], op[MOD], op[PHI], op[S_ON:S_REC + 1], i_step, conduction, energy_mean, order, amount, corner)
+        to_hinges(corner, knot_c, n_k, hinge)
+        for i in range(6 * kind, 6 * kind + 6):
+            gain = 1.0 + ripple[group[i], 0]
+            for k in range(hinge.size):
+                w[HINGE + 16 * k + i] = hinge[k] * gain
+
+
+@njit(cache=True)
+def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, levels, odd,
+          half_nodes, knot_c, settings, now,
+          t_buffer, t_time, c_buffer, c_time, no_ripple, extreme, envelope,
+          last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count):
+    """Cross ``duration`` in one regime (ANGLE with f = 0 is standstill).
+
+    ``extreme`` (4, N) gets lowest temperature, its time, highest, its time;
+    ``envelope`` (4, N): running junction and case extremes of the row.
+    """
+    n_k = knot_c.size
+    n_h = max(n_k - 1, 1)
+    t_cool = now[COOLANT]
+    start = now[TIME]
+    turning = regime == ANGLE and op[FREQ] > 0.0
+    omega = 2.0 * np.pi * op[FREQ] * op[DIRECTION]
+    theta = now[THETA] + op[ANGLE_OFFSET]
+    h_angle = 1e30
+    if turning:
+        h_angle = min(1.0 / (op[FREQ] * settings[STEPS]), 0.02)
+    elif regime == ANGLE:
+        for leg in range(3):
+            leg_losses(leg, wrap(theta - THIRD * leg), half_nodes, w)
+    for i in range(N):
+        extreme[0, i] = w[T + i]
+        extreme[1, i] = start
+        extreme[2, i] = w[T + i]
+        extreme[3, i] = start
+    used, h_even = 0.0, 0.0
+    n_t, n_c, count = 0, 0, 0
+    once = now[LEVEL] > 0.0
+    h_before = 0.0
+    while used < duration:
+        left = duration - used
+        level = int(now[LEVEL])
+        h = settings[H0] * 2.0**level
+        if h_even == 0.0 and h < left * (1.0 - 1e-12) and h < h_angle and level + 1 < levels.shape[0]:
+            if now[H_LOADED] != h:
+                load_factors(w, n_l, n_s, levels[level])
+                now[H_LOADED] = h
+            # the first size is taken twice, then sizes double
+            if once and 2.0 * h <= settings[H_MAX]:
+                now[LEVEL] = level + 1.0
+            once = True
+        else:
+            if turning:
+                if h_even == 0.0:
+                    h_even = left / np.ceil(left / h_angle - 1e-9)
+                h = h_even if left > 1.5 * h_even else left
+                if abs(h - h_even) < 1e-9 * h_even:
+                    h = h_even
+            else:
+                h = min(left, settings[H_MAX])
+            if now[H_LOADED] != h:
+                step_factors(h, lam_l, rho, lam_s, odd)
+                load_factors(w, n_l, n_s, odd)
+                now[H_LOADED] = h
+        if turning:
+            middle = theta + omega * (used + 0.5 * h)
+            for leg in range(3):
+                leg_losses(leg, wrap(middle - THIRD * leg), half_nodes, w)
+        one_step(w, n_l, n_s, n_h, t_cool, h / h_before if h_before > 0.0 else 0.0)
+        h_before = h
+        used = used + h if left - h > 1e-12 * duration else duration
+        count += 1
+        for i in range(N):
+            w[ENERGY + i] += w[P + i] * h
+            t_buffer[n_t, i] = w[T + i]
+        t_time[n_t] = start + used
+        n_t += 1
+        if not turning or count % 8 == 0 or used >= duration:
+            case_points(w, n_l, n_s, t_cool)
+            for i in range(N):
+                c_buffer[n_c, i] = w[CASE + i]
+            c_time[n_c] = start + used
+            n_c += 1
+        if n_t == CHUNK or used >= duration:
+            if regime == MEAN:
+                for j in range(n_t):
+                    for i in range(N):
+                        v = t_buffer[j, i]
+                        if v < extreme[0, i]:
+                            extreme[0, i] = v
+                            extreme[1, i] = t_time[j]
+                        if v > extreme[2, i]:
+                            extreme[2, i] = v
+                            extreme[3, i] = t_time[j]
+            else:
+                for j in range(n_t):
+                    for i in range(N):
+                        v = t_buffer[j, i]
+                        extreme[0, i] = v if v < extreme[0, i] else extreme[0, i]
+                        extreme[2, i] = v if v > extreme[2, i] else extreme[2, i]
+            hot = 0.0
+            for i in range(N):
+                hot = max(hot, t_buffer[n_t - 1, i]) if t_buffer[n_t - 1, i] == t_buffer[n_t - 1, i] else np.inf
+            for j in range(n_c):
+                for i in range(N):
+                    envelope[2, i] = min(envelope[2, i], c_buffer[j, i])
+                    envelope[3, i] = max(envelope[3, i], c_buffer[j, i])
+            if regime != MEAN:
+                feed(0, n_t, t_buffer, t_time, 0.0, no_ripple, phase, last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
+            feed(N, n_c, c_buffer, c_time, 0.0, no_ripple, phase, last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
+            n_t, n_c = 0, 0
+            if not hot < settings[T_STOP]:
+                now[TIME] = start + used
+                return RUNAWAY
+    now[TIME] = start + duration
+    now[THETA] = wrap(now[THETA] + omega * duration)
+    if regime != MEAN:
+        for i in range(N):
+            envelope[0, i] = min(envelope[0, i], extreme[0, i])
+            envelope[1, i] = max(envelope[1, i], extreme[2, i])
+    return OK
+
+
+@njit(cache=True)
+def close_window(now, op, window, pair, pair_time, pair_ripple,
+                 last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count, rip, rip_row, rip_count):
+    """Hand over the lowest and highest point since the window opened, and count the ripple beyond one cycle.
+
+    ``window`` (5, N): lowest, its time, highest, its time, ripple range times cycles.
+    """
+    cycles = now[WINDOW_CYCLES]
+    if cycles <= 0.0:
+        return
+    half = 0.5 / op[FREQ]
+    phase = now[WINDOW_PHASE]
+    r = rip_count[0]
+    for i in range(N):
+        rising = window[1, i] <= window[3, i]
+        pair[0, i] = window[0, i] if rising else window[2, i]
+        pair[1, i] = window[2, i] if rising else window[0, i]
+        pair_ripple[i] = window[4, i] / cycles
+        rip[r, i, 0] = pair_ripple[i]
+        rip[r, i, 1] = 0.5 * (window[0, i] + window[2, i])
+        rip[r, i, 2] = max(cycles - 1.0, 0.0)
+    # one clock for all chips: the window's borders stand for the two points
+    pair_time[0] = now[WINDOW_START]
+    pair_time[1] = now[TIME]
+    feed(0, 2, pair, pair_time, half, pair_ripple, phase, last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
+    rip_row[r, 0] = half
+    rip_row[r, 1] = now[WINDOW_START]
+    rip_row[r, 2] = now[TIME]
+    rip_row[r, 3] = phase
+    rip_count[0] = r + 1
+    now[WINDOW_CYCLES] = 0.0
+
+
+@njit(cache=True)
+def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, levels, odd,
+               group, group_kind, group_lam, group_rho,
+               knot_c, i_step, conduction, energy_mean, voltage, energy, order, amount, modulation,
+               settings, now, old, ripple_op, ripple, nodes, window, last, heading,
+               p_value, p_time, p_half, p_ripple, p_phase, p_count, rip, rip_row, rip_count, row_temps, row_loss):
+    """March rows from ``begin`` until the end of the block or until the point buffers are nearly full.
+
+    ``row_temps`` (rows, 4, N): junction minimum, maximum, case minimum, maximum;
+    ``row_loss`` (rows, N) [J]. Returns (row to go on with, OK or RUNAWAY).
+    """
+    cap = p_value.shape[1]
+    n_h = max(knot_c.size - 1, 1)
+    t_buffer, t_time = np.empty((CHUNK, N)), np.empty(CHUNK)
+    c_buffer, c_time = np.empty((CHUNK, N)), np.empty(CHUNK)
+    no_ripple = np.zeros(N)
+    extreme = np.empty((4, N))
+    pair, pair_time, pair_ripple = np.empty((2, N)), np.empty(2), np.empty(N)
+    fresh = np.zeros_like(ripple)
+    fresh_nodes = np.zeros_like(nodes)
+    half_nodes = np.zeros((NODES + 1, 2, max(knot_c.size, 2)))
+    fine = False  # whether every node stands for the latest operating point
+    for row in range(begin, table.shape[0]):
+        op = table[row]
+        f = op[FREQ]
+        left = op[DT]
+        if row > begin:
+            # angle steps, or doubling steps and the settling periods
+            most = 64 + int(left / settings[H_MAX]) + int(settings[STEPS] * (settings[SETTLE_PERIODS] + 2.0))
+            if op[I_PEAK] > 0.0 and 0.0 < f < settings[F_SLOW]:
+                most += int(left * max(f * settings[STEPS], 50.0))
+            if p_count.max() + most > cap or rip_count[0] + 3 > rip.shape[0]:
+                return row, OK
+        phase = float(phases[row])
+        change = op[T_COOLANT] - now[COOLANT]
+        if change != 0.0:
+            for s in range(n_s):
+                w[X_S + s] -= g_cool[s] * change
+            now[COOLANT] = op[T_COOLANT]
+            shared_part(w, n_s, now[COOLANT])
+        changed = False
+        for k in range(FREQ, N_ROW):
+            if k != T_COOLANT and op[k] != old[k]:
+                changed = True
+        before = int(now[REGIME])
+        want = ANGLE
+        if op[I_PEAK] <= 0.0:
+            want = IDLE
+        elif f >= settings[F_SLOW]:
+            want = MEAN
+        small = want == MEAN and before == MEAN and small_change(op, ripple_op)
+        if changed:
+            # after a small change the first steps may be coarser
+            now[LEVEL] = 6.0 if small else 0.0
+            now[SETTLE] = 0.0
+        if before == MEAN and want != MEAN:
+            close_window(now, old, window, pair, pair_time, pair_ripple,
+                         last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count, rip, rip_row, rip_count)
+            add_ripple(1.0, old, now[THETA], w, n_l, n_h, group, group_lam, group_rho, ripple, nodes)
+            before = ANGLE
+        renew = False
+        if want == MEAN:
+            renew = before != MEAN or (changed and not small)
+            if not renew:
+                for i in range(N):
+                    renew = renew or abs(w[T + i] - ripple[group[i], 4]) > 8.0
+        if renew:
+            fine = False
+            half_wave(op, NODES // RIPPLE_NODES, i_step, voltage, energy, modulation, knot_c, half_nodes)
+            ripples(op, w, group, group_kind, group_lam, group_rho, half_nodes, knot_c, fresh_nodes, fresh)
+            if changed and before != ANGLE:
+                # a jump is first marched by angle, from the temperatures that really stand there
+                jump = 0.0
+                for g in range(fresh.shape[0]):
+                    then = ripple[g, 2] - ripple[g, 1] if before == MEAN else 0.0
+                    jump = max(jump, abs(fresh[g, 2] - fresh[g, 1] - then))
+                if jump > max(settings[SETTLE_K], 0.15 * (ripple[:, 2] - ripple[:, 1]).max() if before == MEAN else 0.0):
+                    if before == MEAN:
+                        close_window(now, old, window, pair, pair_time, pair_ripple,
+                                     last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count, rip, rip_row, rip_count)
+                        add_ripple(1.0, old, now[THETA], w, n_l, n_h, group, group_lam, group_rho, ripple, nodes)
+                    before = ANGLE
+                    now[SETTLE] = settings[SETTLE_PERIODS] / f
+            ripple[:] = fresh
+            nodes[:] = fresh_nodes
+            ripple_op[:] = op
+        old[:] = op
+        for i in range(N):
+            w[ENERGY + i] = 0.0
+        status = OK
+        if want == IDLE:
+            for j in range(16 * K_MAX):
+                w[HINGE + j] = 0.0
+            status = cross(row, left, IDLE, phase, op, w, n_l, n_s, lam_l, rho, lam_s, levels, odd, half_nodes,
+                           knot_c, settings, now, t_buffer, t_time, c_buffer, c_time, no_ripple, extreme, row_temps[row],
+                           last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
+            now[REGIME] = IDLE
+        else:
+            by_angle = left if want == ANGLE else min(left, now[SETTLE])
+            if by_angle > 0.0:
+                if changed or not fine:
+                    half_wave(op, 1, i_step, voltage, energy, modulation, knot_c, half_nodes)
+                    fine = True
+                status = cross(row, by_angle, ANGLE, phase, op, w, n_l, n_s, lam_l, rho, lam_s, levels, odd, half_nodes,
+                               knot_c, settings, now, t_buffer, t_time, c_buffer, c_time, no_ripple, extreme, row_temps[row],
+                               last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
+                left -= by_angle
+                before = ANGLE
+                now[REGIME] = ANGLE
+                if want == MEAN:
+                    now[SETTLE] -= by_angle
+                    if now[SETTLE] < 1e-9 / f:
+                        now[SETTLE] = 0.0
+                    if left <= 1e-9 * op[DT]:
+                        left = 0.0
+                    if left > 0.0:
+                        ripples(op, w, group, group_kind, group_lam, group_rho, half_nodes, knot_c, nodes, ripple)
+            if want == MEAN and left > 0.0 and status == OK:
+                mean_hinges(op, w, i_step, conduction, energy_mean, order, amount, knot_c, group, ripple)
+                if before == ANGLE:
+                    add_ripple(-1.0, op, now[THETA], w, n_l, n_h, group, group_lam, group_rho, ripple, nodes)
+                now[REGIME] = MEAN
+                opened = now[WINDOW_CYCLES] == 0.0
+                if opened:
+                    now[WINDOW_START] = now[TIME]
+                status = cross(row, left, MEAN, phase, op, w, n_l, n_s, lam_l, rho, lam_s, levels, odd, half_nodes,
+                               knot_c, settings, now, t_buffer, t_time, c_buffer, c_time, no_ripple, extreme, row_temps[row],
+                               last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
+                cycles = f * left
+                for i in range(N):
+                    g = group[i]
+                    share = ripple_share(w, n_h, i, ripple[g])
+                    lo = extreme[0, i] + share * ripple[g, 1]
+                    hi = extreme[2, i] + share * ripple[g, 2]
+                    row_temps[row, 0, i] = min(row_temps[row, 0, i], lo)
+                    row_temps[row, 1, i] = max(row_temps[row, 1, i], hi)
+                    if opened or lo < window[0, i]:
+                        window[0, i] = lo
+                        window[1, i] = extreme[1, i]
+                    if opened or hi > window[2, i]:
+                        window[2, i] = hi
+                        window[3, i] = extreme[3, i]
+                    rip_cycles = share * (ripple[g, 2] - ripple[g, 1]) * cycles
+                    window[4, i] = rip_cycles if opened else window[4, i] + rip_cycles
+                now[WINDOW_PHASE] = phase
+                now[WINDOW_CYCLES] += cycles
+                if now[WINDOW_CYCLES] >= 1.0:
+                    close_window(now, op, window, pair, pair_time, pair_ripple,
+                                 last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count, rip, rip_row, rip_count)
+        for i in range(N):
+            row_loss[row, i] = w[ENERGY + i]
+        if status != OK:
+            return row, status
+    return table.shape[0], OK

@@ -1,0 +1,34 @@
+"""Cycles and damage sorted by range and mean: what the cycle pictures draw."""
+
+from __future__ import annotations
+
+import numpy as np
+
+RANGE_EDGE_K = np.concatenate([[0.0, 0.5, 1.0], np.arange(2.0, 202.0, 2.0), [np.inf]])
+MEAN_EDGE_C = np.concatenate([[-np.inf], np.arange(-60.0, 252.0, 4.0), [np.inf]])
+
+
+class CycleMap:
+    """Two-way tables of cycle counts and damage; m failure modes, twelve chips.
+
+    Attributes
+    ----------
+    count : ndarray, shape (24, ranges, means)
+        Cycles of junctions (0 to 11) and case points (12 to 23).
+    damage : ndarray, shape (m, 12, ranges, means)
+    """
+
+    def __init__(self, modes):
+        self._modes = modes
+        shape = (RANGE_EDGE_K.size - 1, MEAN_EDGE_C.size - 1)
+        self.count = np.zeros((24, *shape))
+        self.damage = np.zeros((len(modes), 12, *shape))
+
+    def add(self, table) -> None:
+        """Sort one block of cycles in."""
+        if table.signal.size == 0:
+            return
+        r = np.clip(np.searchsorted(RANGE_EDGE_K, table.range_k, side="right") - 1, 0, RANGE_EDGE_K.size - 2)
+        m = np.clip(np.searchsorted(MEAN_EDGE_C, table.mean_c, side="right") - 1, 0, MEAN_EDGE_C.size - 2)
+        flat = (table.signal.astype(np.int64) * (RANGE_EDGE_K.size - 1) + r) * (MEAN_EDGE_C.size - 1) + m
+        self.count += np.bincount(flat, weights=table.count, minlength=self.count.size).reshape(self.count.shape)

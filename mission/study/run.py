@@ -1,0 +1,244 @@
+"""From a checked study to a result: one pass over the duty, block by block."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+
+from ..cycles import CycleCounter, CycleTable, RippleClasses
+from ..errors import MissionError
+from ..history import CHIP_NAMES, ElectrothermalMarch, EnvelopeBuilder, JunctionHistory, MarchSettings
+from ..lifetime import DamageLedger
+from ..losses import LossTables, build_tables
+from ..machine import operating_points
+from ..thermal import ReducedNetwork, inverter_network, reduce_to_modes
+from .cyclemap import CycleMap
+from .spec import Study
+
+BLOCK_ROWS = 65536
+#: A repeated mission starts and ends at the same temperatures within this [K].
+PERIODIC_WITHIN_K = 0.05
+MAX_PASSES = 40
+SIGNALS = CHIP_NAMES + tuple(f"case {c}" for c in CHIP_NAMES)
+
+Progress = Callable[[float, str], None]
+
+
+class Stopped(MissionError):
+    """Raised inside a run to end it early; what is done so far is kept."""
+
+
+@dataclass(frozen=True)
+class MissionResult:
+    """Everything that a run leaves.
+
+    Attributes
+    ----------
+    study : Study
+    history : JunctionHistory
+    ledger : DamageLedger
+    cycle_map : CycleMap
+        Cycles and damage by range and mean, for every failure mode.
+    network : ReducedNetwork
+    tables : LossTables
+    cycles : CycleTable or None
+        Every counted cycle, if they were kept in memory.
+    i_peak_max_a : float
+        Highest peak phase current of the duty.
+    mod_index_max, frequency_max_hz : float
+    complete : bool
+        False when the run was stopped before the mission's end.
+    passes : int
+        How often the mission was marched until it closed on itself.
+    closes_within_k : float
+        Largest temperature difference between start and end.
+    wall_s : float
+        Time the run took.
+    """
+
+    study: Study
+    history: JunctionHistory
+    ledger: DamageLedger
+    cycle_map: CycleMap
+    network: ReducedNetwork
+    tables: LossTables
+    cycles: CycleTable | None
+    i_peak_max_a: float
+    mod_index_max: float
+    frequency_max_hz: float
+    complete: bool
+    passes: int
+    closes_within_k: float
+    wall_s: float
+
+    @property
+    def ok(self) -> bool:
+        """Whether every limit and the target are met."""
+        return all(v.met for v in self.verdicts)
+
+    @property
+    def verdicts(self):
+        """Limits and target with their margins; see :mod:`mission.study.verdicts`."""
+        from .verdicts import verdicts
+
+        return verdicts(self)
+
+    def save(self, folder) -> list:
+        """Write all files of the result into ``folder``; returns their paths."""
+        from ..show import save_result
+
+        return save_result(self, folder)
+
+    def _repr_html_(self) -> str:
+        from ..show.tables import result_html
+
+        return result_html(self)
+
+
+def run(study: Study, *, progress: Progress | None = None, keep_cycles: bool = True, cycle_sink=None) -> MissionResult:
+    """March the mission, count cycles, add up damage.
+
+    Parameters
+    ----------
+    study : Study
+    progress : callable, optional
+        Called with the share done (0 to 1 in each pass) and a word; may raise
+        ``KeyboardInterrupt`` or :class:`Stopped` to end the run early.
+    keep_cycles : bool
+        Keep every cycle in memory (``result.cycles``). Switch off for very long duties.
+    cycle_sink : callable, optional
+        Receives every block of counted cycles as a ``CycleTable``.
+
+    Returns
+    -------
+    MissionResult
+
+    Raises
+    ------
+    NoStableTemperature
+        The losses run away.
+    InputError
+        An operating point that the machine or the module cannot reach.
+
+    Examples
+    --------
+    >>> import mission
+    >>> result = mission.run(mission.load_study("profiles/ferry-hour.toml"))  # doctest: +SKIP
+    >>> result.ledger.worst().life_years  # doctest: +SKIP
+    """
+    begin = time.perf_counter()
+    spec, profile = study.spec, study.profile
+    tables = build_tables(study.module, spec.inverter.modulation)
+    network = reduce_to_modes(inverter_network(study.module, spec.cooling), relative_tolerance=spec.march.network_tolerance)
+    settings = MarchSettings(f_slow_hz=spec.march.slow_below_hz, steps_per_period=spec.march.steps_per_period)
+    states = None
+    known = None
+    for passes in range(1, MAX_PASSES + 1):
+        one = _Pass(study, tables, network, settings, states, progress, passes, keep_cycles, cycle_sink)
+        one.march()
+        if not one.complete or spec.march.start == "coolant" or one.closes_within_k <= PERIODIC_WITHIN_K:
+            break
+        states = one.next_start()
+        # with losses that hardly depend on temperature the closing value falls fast; stop when it no longer does
+        if known is not None and passes > 4 and one.closes_within_k > 0.9 * known:
+            break
+        known = one.closes_within_k
+    one.close(spec.lifetime.residue)
+    return MissionResult(
+        study, one.envelope.finish(one.marched_s), one.ledger, one.cycle_map, network, tables, one.kept(),
+        one.i_peak_max, one.mod_index_max, one.frequency_max, one.complete, passes, one.closes_within_k, time.perf_counter() - begin,
+    )
+
+
+class _Pass:
+    """One march over the mission with everything that is recorded on the way."""
+
+    def __init__(self, study, tables, network, settings, states, progress, number, keep, sink):
+        self.study, self.tables, self.number = study, tables, number
+        self._progress, self._states, self._keep, self._sink = progress, states, keep, sink
+        profile = study.profile
+        self.counter = CycleCounter(24)
+        self.ripple = RippleClasses()
+        self.ledger = DamageLedger(study.modes, CHIP_NAMES, profile.phases, missions_per_year=study.spec.lifetime.missions_per_year)
+        self.cycle_map = CycleMap(study.modes)
+        self.envelope = EnvelopeBuilder(profile.duration_s, profile.phases, tables.temperature_data_c)
+        self.engine = ElectrothermalMarch(tables, network, settings, on_points=self._points, on_ripple=self._ripples)
+        self.i_peak_max = self.mod_index_max = self.frequency_max = 0.0
+        self.complete, self.marched_s, self._tables_kept = True, 0.0, []
+
+    def _points(self, p):
+        self.counter.push(p.signal, p.t_c, p.time_s, p.phase_id, p.half_period_s, p.ripple_k)
+
+    def _ripples(self, r):
+        table = CycleTable.ripple(
+            signal=np.tile(np.arange(12, dtype=np.int16), r.half_period_s.size), range_k=r.range_k.ravel(), mean_c=r.mean_c.ravel(),
+            heating_s=np.repeat(r.half_period_s, 12), start_s=np.repeat(r.start_s, 12), end_s=np.repeat(r.end_s, 12),
+            phase_id=np.repeat(r.phase_id, 12), count=r.count.ravel())
+        self._account(table)
+        self.ripple.add(table)
+
+    def _account(self, table):
+        self.ledger.add(table)
+        self.cycle_map.add(table)
+
+    def _take(self, table):
+        self._account(table)
+        if self._keep:
+            self._tables_kept.append(table)
+        if self._sink is not None:
+            self._sink(table)
+
+    def march(self):
+        spec, profile = self.study.spec, self.study.profile
+        fsw, v_study, coolant = spec.inverter.switching_frequency_hz, spec.inverter.dc_voltage_v, spec.cooling.coolant_c
+        first = True
+        try:
+            for block in profile.blocks(BLOCK_ROWS):
+                n = block.dt_s.size
+                v_dc = block.columns["dc_voltage_v"] if v_study is None else np.full(n, v_study)
+                t_cool = block.columns["coolant_c"] if coolant is None else np.full(n, coolant)
+                points = operating_points(block, spec.machine, dc_voltage_v=v_study, mod_index_max=spec.inverter.modulation.mod_index_max,
+                                          where=profile.source)
+                if first:
+                    self.engine.start(float(t_cool[0]), theta_rad=np.radians(spec.march.start_angle_deg), states=self._states)
+                    self._start_states = self.engine.states
+                    self._start_c = self.engine.junction_c
+                    first = False
+                # hand the kernel pieces of a few seconds of work at most, so that a stop is heard
+                for a in range(0, n, 8192):
+                    b = slice(a, min(a + 8192, n))
+                    part = points.rows(b)
+                    rows = self.engine.add_block(part, dt_s=block.dt_s[b], phase_id=block.phase_id[b], coolant_c=t_cool[b],
+                                                 energy_scale=self.tables.energy_scale(v_dc[b], fsw))
+                    self.envelope.add(rows)
+                    self.marched_s = float(rows.end_s[-1])
+                    self._take(self.counter.drain())
+                    if self._progress is not None:
+                        self._progress(self.marched_s / profile.duration_s, f"pass {self.number}")
+                self.i_peak_max = max(self.i_peak_max, float(points.i_peak_a.max()))
+                self.mod_index_max = max(self.mod_index_max, float(points.mod_index.max()))
+                self.frequency_max = max(self.frequency_max, float(points.frequency_hz.max()))
+        except (KeyboardInterrupt, Stopped):
+            if first or self.marched_s == 0.0:
+                raise
+            self.complete = False
+        self.engine.finish()
+        self.closes_within_k = float(np.abs(self.engine.junction_c - self._start_c).max()) if self.complete else float("nan")
+
+    def next_start(self):
+        return self.engine.periodic_start(self._start_states, self.marched_s)
+
+    def close(self, residue):
+        self._take(self.counter.drain())
+        self._take(self.counter.finish(residue if self.complete else "half", period_s=self.marched_s))
+        classes = self.ripple.to_table()
+        if self._keep:
+            self._tables_kept.append(classes)
+        if self._sink is not None:
+            self._sink(classes)
+
+    def kept(self):
+        return CycleTable.concat(self._tables_kept) if self._keep else None

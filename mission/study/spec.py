@@ -1,0 +1,205 @@
+"""The study file: one TOML that says what is to be reckoned."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from pathlib import Path
+from typing import Annotated, Literal
+
+from pydantic import Field, model_validator
+
+from ..device import PowerModule, load_module
+from ..duty import DutySpec, MissionProfile, read_profile
+from ..errors import InputError, RangeError
+from ..lifetime import FailureMode, resolve_modes
+from ..losses import Modulation
+from ..machine import MachineSpec
+from ..thermal import CoolingSpec
+from ..tomlfile import FileModel, parse_model, read_toml
+
+_Positive = Annotated[float, Field(gt=0)]
+
+
+class ModuleRef(FileModel):
+    """Which module: a shipped one by name, or a file of the user's."""
+
+    name: str | None = None
+    file: str | None = None
+
+    @model_validator(mode="after")
+    def _one(self):
+        if (self.name is None) == (self.file is None):
+            raise RangeError("module", "both name and file" if self.name else "neither name nor file",
+                             "either name (a shipped module) or file (a path that counts from the study file)")
+        return self
+
+
+class InverterSpec(FileModel):
+    """How the bridge is driven."""
+
+    switching_frequency_hz: float = Field(gt=0, le=200e3)
+    modulation: Modulation
+    dc_voltage_v: float | None = Field(default=None, gt=0, le=20e3)
+
+
+class MarchSpec(FileModel):
+    """How finely the temperatures are marched; the defaults suit most duties."""
+
+    start: Literal["repeat", "coolant"] = "repeat"
+    start_angle_deg: float = Field(default=0.0, ge=-360, le=360)
+    slow_below_hz: float = Field(default=5.0, ge=0, le=1000)
+    steps_per_period: int = Field(default=128, ge=32, le=4096)
+    network_tolerance: float = Field(default=1e-3, gt=0, le=0.05)
+
+
+class LifetimeSpec(FileModel):
+    """What the mission means per year, and what wears out."""
+
+    missions_per_year: _Positive
+    target_years: _Positive | None = None
+    residue: Literal["repeat", "half"] = "repeat"
+    failure_mode: tuple[FailureMode, ...] | None = None
+
+
+class LimitSpec(FileModel):
+    """Limits that are stricter (or laxer) than the module's ratings."""
+
+    t_vj_max_c: float | None = Field(default=None, ge=-40, le=300)
+    i_peak_max_a: _Positive | None = None
+
+
+class StudySpec(FileModel):
+    """A study file, field by field."""
+
+    format: Literal[1]
+    name: str = Field(min_length=1)
+    duty: DutySpec
+    machine: MachineSpec
+    module: ModuleRef
+    inverter: InverterSpec
+    cooling: CoolingSpec
+    lifetime: LifetimeSpec
+    limits: LimitSpec = LimitSpec()
+    march: MarchSpec = MarchSpec()
+
+
+@dataclass(frozen=True)
+class Study:
+    """A checked study: the file's content, the module and the profile it names.
+
+    Attributes
+    ----------
+    spec : StudySpec
+    module : PowerModule
+    profile : MissionProfile
+    modes : tuple of FailureMode
+        The study's own, else the module's.
+    source : str
+        File that the study was read from.
+    """
+
+    spec: StudySpec
+    module: PowerModule
+    profile: MissionProfile
+    modes: tuple
+    source: str
+    folder: Path
+
+    @property
+    def name(self) -> str:
+        return self.spec.name
+
+    def with_profile(self, profile: MissionProfile) -> "Study":
+        """The same study on another duty."""
+        changed = replace(self, profile=profile)
+        _check_together(changed)
+        return changed
+
+    def changed(self, section: str, **values) -> "Study":
+        """The same study with other values in one section of the file, checked like the file.
+
+        Examples
+        --------
+        A study at another switching frequency: ``study.changed("inverter", switching_frequency_hz=4000)``.
+        """
+        data = self.spec.model_dump(mode="python", exclude_none=True)
+        if section not in StudySpec.model_fields:
+            raise InputError("section", f"'{section}'", "one of " + ", ".join(StudySpec.model_fields))
+        data[section] = {**data[section], **values}
+        spec = parse_model(data, StudySpec, self.source)
+        return _assemble(spec, self.source, self.folder, profile=self.profile if section != "duty" else None)
+
+
+def load_study(path) -> Study:
+    """Read and check a study file with everything it names.
+
+    Parameters
+    ----------
+    path : path-like
+        A TOML file; paths in it count from its folder.
+
+    Returns
+    -------
+    Study
+
+    Raises
+    ------
+    InputError
+        First thing that the study, module, profile or a coefficient file gets wrong.
+    """
+    path = Path(path)
+    spec = parse_model(read_toml(path), StudySpec, str(path))
+    return _assemble(spec, str(path), path.parent)
+
+
+def _assemble(spec: StudySpec, source: str, folder: Path, profile=None) -> Study:
+    try:
+        module = load_module(spec.module.name) if spec.module.name else load_module(spec.module.file, folder=folder)
+    except InputError as err:
+        raise err if spec.module.file else err.at(f"{source}, field module.name") from None
+    study = Study(spec, module, profile if profile is not None else read_profile(spec.duty, folder), (), source, folder)
+    _check_together(study)
+    modes = resolve_modes(spec.lifetime.failure_mode, module, folder=folder, where=source)
+    return replace(study, modes=modes)
+
+
+def _check_together(study: Study) -> None:
+    """What only shows when the parts are put together."""
+    spec, profile, module = study.spec, study.profile, study.module
+    has = profile.quantities
+    if spec.cooling.coolant_c is None and "coolant_c" not in has:
+        raise InputError(f"{study.source}, section cooling", "no coolant temperature", "cooling.coolant_c, or a coolant column in duty.columns",
+                         "add coolant_c = ... (degC) under [cooling], or name the column")
+    if spec.cooling.coolant_c is not None and "coolant_c" in has:
+        raise InputError(f"{study.source}, field cooling.coolant_c", f"{spec.cooling.coolant_c:g} degC beside a coolant column in the profile",
+                         "one of the two", "remove coolant_c, or take the column out of duty.columns")
+    if spec.inverter.dc_voltage_v is None and "dc_voltage_v" not in has:
+        raise InputError(f"{study.source}, section inverter", "no DC-link voltage", "inverter.dc_voltage_v, or a dc_voltage column in duty.columns",
+                         "add dc_voltage_v = ... under [inverter]")
+    if spec.inverter.dc_voltage_v is not None and "dc_voltage_v" in has:
+        raise InputError(f"{study.source}, field inverter.dc_voltage_v", f"{spec.inverter.dc_voltage_v:g} V beside a dc_voltage column in the profile",
+                         "one of the two", "remove one of them")
+    top = profile.ranges["dc_voltage_v"][1] if "dc_voltage_v" in has else spec.inverter.dc_voltage_v
+    if top >= module.ratings.v_ces_v:
+        raise InputError(f"{study.source}, inverter.dc_voltage_v", f"{top:g} V", f"below the blocking voltage of {module.name}, {module.ratings.v_ces_v:g} V",
+                         "check the unit, or choose a module of a higher voltage class")
+    needs = {"synchronous": ("speed_rad_s",), "direct": ("frequency_hz", "mod_index", "phi_rad", "current_a")}[spec.machine.kind]
+    words = {"speed_rad_s": "speed", "frequency_hz": "frequency", "mod_index": "mod_index", "phi_rad": "displacement or power_factor", "current_a": "current"}
+    for quantity in needs:
+        if quantity not in has:
+            raise InputError(f"{study.source}, section duty.columns", f"no column for {words[quantity]}",
+                             f"{words[quantity]}, which machine.kind = '{spec.machine.kind}' needs", "map the column, or choose another machine.kind")
+    if spec.machine.kind == "synchronous":
+        if ("current_a" in has) == ("torque_nm" in has):
+            raise InputError(f"{study.source}, section duty.columns", "both current and torque" if "current_a" in has else "neither current nor torque",
+                             "current or torque, one of them", "map one of the two columns")
+        extra = {"frequency_hz", "mod_index", "phi_rad"} & has
+    else:
+        extra = {"speed_rad_s", "torque_nm"} & has
+    if extra:
+        raise InputError(f"{study.source}, section duty.columns", f"a column for {', '.join(sorted(extra))}",
+                         f"no such column with machine.kind = '{spec.machine.kind}', which would ignore it", "take it out of duty.columns")
+    if spec.machine.kind == "direct" and profile.ranges["mod_index"][1] > spec.inverter.modulation.mod_index_max * (1 + 1e-9):
+        raise InputError(f"{profile.source}, column for mod_index", f"{profile.ranges['mod_index'][1]:g}",
+                         f"at most {spec.inverter.modulation.mod_index_max:.5g} with modulation = '{spec.inverter.modulation.value}'",
+                         "check the definition (peak phase voltage over half the DC voltage) or choose space-vector modulation")

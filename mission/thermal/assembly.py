@@ -1,0 +1,137 @@
+"""Chips, cases and sink joined into one state-space model.
+
+The network is a graph of nodes with heat capacities and conductances, referred
+to the coolant: C dy/dt = -G y + E p with y = T - T_coolant. Points without
+capacity (the case of a data sheet) are eliminated exactly and recovered as
+outputs.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from ..errors import InputError
+from .networks import CauerLadder
+
+
+@dataclass
+class NetworkBuilder:
+    """Collects nodes and conductances; :meth:`build` gives the full network."""
+
+    _c: list[float] = field(default_factory=list)
+    _edges: list[tuple[int, int, float]] = field(default_factory=list)
+    _to_coolant: list[tuple[int, float]] = field(default_factory=list)
+
+    def node(self, c_j_per_k: float = 0.0) -> int:
+        """Add a node; returns its number. Capacity 0 marks a point without mass."""
+        self._c.append(float(c_j_per_k))
+        return len(self._c) - 1
+
+    def add_capacity(self, a: int, c_j_per_k: float) -> None:
+        """Add heat capacity at a node."""
+        self._c[a] += float(c_j_per_k)
+
+    def resistance(self, a: int, b: int, r_k_per_w: float) -> None:
+        """Join two nodes."""
+        self._edges.append((a, b, 1.0 / r_k_per_w))
+
+    def to_coolant(self, a: int, r_k_per_w: float) -> None:
+        """Join a node to the coolant."""
+        self._to_coolant.append((a, 1.0 / r_k_per_w))
+
+    def ladder(self, ladder: CauerLadder, end: int | None) -> int:
+        """Add a ladder that ends at node ``end`` (None: at the coolant); returns its heated node."""
+        nodes = [self.node(c) for c in ladder.c_j_per_k]
+        for k, r in enumerate(ladder.r_k_per_w):
+            if k + 1 < len(nodes):
+                self.resistance(nodes[k], nodes[k + 1], r)
+            elif end is None:
+                self.to_coolant(nodes[k], r)
+            else:
+                self.resistance(nodes[k], end, r)
+        return nodes[0]
+
+    def build(self, heated: list[int], watched: list[int]) -> "FullNetwork":
+        """Assemble with heat entering at ``heated`` and further outputs ``watched``."""
+        n = len(self._c)
+        c = np.array(self._c)
+        g = np.zeros((n, n))
+        for a, b, y in self._edges:
+            g[a, a] += y
+            g[b, b] += y
+            g[a, b] -= y
+            g[b, a] -= y
+        for a, y in self._to_coolant:
+            g[a, a] += y
+        mass = np.flatnonzero(c > 0.0)
+        bare = np.flatnonzero(c == 0.0)
+        if any(c[h] == 0.0 for h in heated):
+            raise InputError("thermal network", "a heated point without heat capacity", "every chip has a capacity")
+        # points without mass: y_bare = recover @ y_mass, exactly
+        recover = np.zeros((n, mass.size))
+        recover[mass, np.arange(mass.size)] = 1.0
+        g_mass = g[np.ix_(mass, mass)]
+        if bare.size:
+            part = -np.linalg.solve(g[np.ix_(bare, bare)], g[np.ix_(bare, mass)])
+            recover[bare] = part
+            g_mass = g_mass + g[np.ix_(mass, bare)] @ part
+        return FullNetwork(
+            c_j_per_k=c[mass],
+            g_w_per_k=0.5 * (g_mass + g_mass.T),
+            out_junction=recover[np.asarray(heated)],
+            out_case=recover[np.asarray(watched)],
+        )
+
+
+@dataclass(frozen=True)
+class FullNetwork:
+    """C dy/dt = -G y + E p, y = T - T_coolant, with n_s nodes and n chips.
+
+    Attributes
+    ----------
+    c_j_per_k : ndarray, shape (n_s,)
+    g_w_per_k : ndarray, shape (n_s, n_s)
+        Symmetric, includes the paths to the coolant.
+    out_junction, out_case : ndarray, shape (n, n_s)
+        Rows that pick junction and case temperatures; the heat of chip i enters
+        where row i of ``out_junction`` stands.
+    """
+
+    c_j_per_k: np.ndarray
+    g_w_per_k: np.ndarray
+    out_junction: np.ndarray
+    out_case: np.ndarray
+
+    @property
+    def n_chips(self) -> int:
+        return self.out_junction.shape[0]
+
+    def r_th_k_per_w(self) -> np.ndarray:
+        """Steady self and mutual resistances, junction over coolant, shape (n, n) [K/W]."""
+        return self.out_junction @ np.linalg.solve(self.g_w_per_k, self.out_junction.T)
+
+    def modes(self):
+        """Exact real modes.
+
+        Returns
+        -------
+        lam_per_s : ndarray, shape (n_s,)
+            Decay rates, rising.
+        junction, case : ndarray, shape (n, n_s)
+            Output of each mode; ``junction.T`` is also the heat input.
+        coolant : ndarray, shape (n_s,)
+            What a unit temperature of all nodes is in modes.
+        """
+        root = np.sqrt(self.c_j_per_k)
+        lam, vec = np.linalg.eigh(self.g_w_per_k / np.outer(root, root))
+        shape = vec / root[:, None]
+        return lam, self.out_junction @ shape, self.out_case @ shape, vec.T @ root
+
+    def step_response_k_per_w(self, time_s, chip: int) -> np.ndarray:
+        """Junction rises per watt in ``chip`` [K/W], shape (len(time_s), n)."""
+        lam, junction, _, _ = self.modes()
+        t = np.asarray(time_s, float)[:, None]
+        grow = -np.expm1(-t * lam) / lam
+        return grow @ (junction * junction[chip]).T

@@ -1,0 +1,54 @@
+"""Cooling as the user gives it: what lies between the sink surface and the coolant."""
+
+from __future__ import annotations
+
+from typing import Annotated, Literal, Union
+
+import numpy as np
+from pydantic import Field, model_validator
+
+from ..errors import InputError, RangeError
+from ..tomlfile import FileModel
+from .networks import CauerLadder, FosterNetwork, foster_to_cauer
+
+_Positive = Annotated[float, Field(gt=0)]
+
+
+class _Coolant(FileModel):
+    coolant_c: float | None = Field(default=None, ge=-60, le=150)
+
+
+class FixedCooling(_Coolant):
+    """One resistance from sink surface to coolant for the whole inverter, with an optional heat capacity of the sink."""
+
+    kind: Literal["fixed"]
+    r_th_k_per_w: _Positive
+    heat_capacity_j_per_k: _Positive | None = None
+
+
+class FosterCooling(_Coolant):
+    """Foster branches from sink surface to coolant for the whole inverter."""
+
+    kind: Literal["foster"]
+    r_k_per_w: list[_Positive] = Field(min_length=1, max_length=8)
+    tau_s: list[_Positive] = Field(min_length=1, max_length=8)
+
+    @model_validator(mode="after")
+    def _same_length(self):
+        if len(self.r_k_per_w) != len(self.tau_s):
+            raise RangeError("tau_s", f"{len(self.tau_s)} values beside {len(self.r_k_per_w)} resistances", "one time constant for every resistance")
+        return self
+
+
+CoolingSpec = Annotated[Union[FixedCooling, FosterCooling], Field(discriminator="kind")]
+
+
+def sink_ladder(spec) -> CauerLadder | float:
+    """Ladder from sink surface to coolant, or a bare resistance [K/W] where no capacity is given."""
+    if isinstance(spec, FixedCooling):
+        if spec.heat_capacity_j_per_k is None:
+            return spec.r_th_k_per_w
+        return CauerLadder(np.array([spec.r_th_k_per_w]), np.array([spec.heat_capacity_j_per_k]))
+    if isinstance(spec, FosterCooling):
+        return foster_to_cauer(FosterNetwork(np.array(spec.r_k_per_w), np.array(spec.tau_s)))
+    raise InputError("cooling.kind", f"{spec!r}", "fixed or foster")

@@ -1,0 +1,305 @@
+"""From the full network to the few modes that the march needs, with a stated error.
+
+Fast modes live in one chip; slow modes are shared by all. The reduced network
+therefore has two parts:
+
+* local modes, per chip: x' = -lam x + p_chip, seen only by that chip;
+* shared modes: x' = -lam x + b . p, seen by every chip and case point.
+
+The exact modes are grouped by decay rate. In each group the part that couples
+chips is kept as few shared directions, what remains on the diagonal goes to
+the local modes of each chip. Steady resistances stay exact on the diagonal.
+The error is stated as a bound: |dT_i| <= sum_j L1(h_ij - h'_ij) max p_j, with the
+norm of the impulse-response difference integrated over a fine time grid.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from .assembly import FullNetwork
+
+
+@dataclass(frozen=True)
+class ReducedNetwork:
+    """Modes for the march; n chips, L local modes a chip, S shared modes.
+
+    Attributes
+    ----------
+    lam_local_per_s, rho_local, rho_case_local : ndarray, shape (L, n)
+        Decay rates [1/s] and output weights [K/J] at junction and case point.
+    lam_shared_per_s : ndarray, shape (S,)
+    b_shared : ndarray, shape (S, n)
+        Heat input of the shared modes.
+    c_shared, c_case_shared : ndarray, shape (n, S)
+    g_coolant : ndarray, shape (S,)
+        A rise of the coolant by 1 K lowers shared mode s by ``g_coolant[s]``.
+    bound_k_per_w : ndarray, shape (n, n)
+        Error bound of junction i per watt in chip j.
+    relative_bound : float
+        Largest bound over the matching steady rise, all chips heated alike.
+    coolant_bound : float
+        Largest error of a junction per kelvin of a coolant step.
+    n_full : int
+        Number of modes before reduction.
+    """
+
+    lam_local_per_s: np.ndarray
+    rho_local: np.ndarray
+    rho_case_local: np.ndarray
+    lam_shared_per_s: np.ndarray
+    b_shared: np.ndarray
+    c_shared: np.ndarray
+    c_case_shared: np.ndarray
+    g_coolant: np.ndarray
+    bound_k_per_w: np.ndarray
+    relative_bound: float
+    coolant_bound: float
+    n_full: int
+
+    @property
+    def n_chips(self) -> int:
+        return self.c_shared.shape[0]
+
+    @property
+    def n_modes(self) -> int:
+        """Modes kept, local ones counted for every chip."""
+        return self.lam_local_per_s.size + self.lam_shared_per_s.size
+
+    def r_th_k_per_w(self) -> np.ndarray:
+        """Steady self and mutual resistances over the coolant, shape (n, n)."""
+        shared = self.c_shared @ (self.b_shared / self.lam_shared_per_s[:, None])
+        return shared + np.diag((self.rho_local / self.lam_local_per_s).sum(axis=0))
+
+    def r_case_k_per_w(self) -> np.ndarray:
+        """Steady rise of case point i per watt in chip j, shape (n, n)."""
+        shared = self.c_case_shared @ (self.b_shared / self.lam_shared_per_s[:, None])
+        return shared + np.diag((self.rho_case_local / self.lam_local_per_s).sum(axis=0))
+
+    def error_bound_k(self, power_max_w) -> np.ndarray:
+        """Bound of the junction error [K] for powers that never exceed ``power_max_w`` (n,) [W]."""
+        return self.bound_k_per_w @ np.broadcast_to(np.asarray(power_max_w, float), (self.n_chips,))
+
+
+def unreduced(full: FullNetwork) -> ReducedNetwork:
+    """All exact modes as shared modes; for checks and for small networks."""
+    lam, junction, case, coolant = full.modes()
+    n = full.n_chips
+    empty = np.zeros((0, n))
+    return ReducedNetwork(
+        empty, empty, empty, lam, junction.T.copy(), junction, case, coolant,
+        np.zeros((n, n)), 0.0, 0.0, lam.size,
+    )
+
+
+def reduce_to_modes(full: FullNetwork, *, relative_tolerance: float = 1e-3) -> ReducedNetwork:
+    """Reduce until the bound meets ``relative_tolerance``.
+
+    Parameters
+    ----------
+    full : FullNetwork
+    relative_tolerance : float
+        Wanted bound, as a share of the steady rise with all chips heated alike.
+
+    Returns
+    -------
+    ReducedNetwork
+        The smallest that meets the tolerance among the groupings tried; if none
+        does, the most accurate one. ``relative_bound`` says what was reached.
+    """
+    lam, junction, case, coolant = full.modes()
+    best = None
+    for gap in (1.1, 1.02):
+        n_groups = len(_groups(lam, gap))
+        for share in (0.5, 0.1):
+            # the fewest slow groups whose coupling must be kept, by bisection
+            low, high = 0, n_groups
+            while low < high:
+                middle = (low + high) // 2
+                trial = _reduce(lam, junction, case, coolant, gap, share * relative_tolerance, middle)
+                if _rank(trial, relative_tolerance)[0] == 0:
+                    high = middle
+                else:
+                    low = middle + 1
+                if best is None or _rank(trial, relative_tolerance) < _rank(best, relative_tolerance):
+                    best = trial
+    return best
+
+
+def _rank(trial, tolerance):
+    """Sort key: within the tolerance first, then fewest modes, else smallest error."""
+    worst = max(trial.relative_bound, trial.coolant_bound)
+    return (0, trial.lam_local_per_s.size + trial.lam_shared_per_s.size * trial.n_chips) if worst <= tolerance else (1, worst)
+
+
+def _groups(lam, gap):
+    """Split rising decay rates where the next is more than ``gap`` times faster."""
+    cuts = np.flatnonzero(lam[1:] > gap * lam[:-1]) + 1
+    return np.split(np.arange(lam.size), cuts)
+
+
+def _reduce(lam, junction, case, coolant, gap, tolerance, coupled):
+    n, n_full = junction.shape
+    ends = np.concatenate([junction, case])  # (2n, K): junctions, then case points
+    steady = (ends / lam) @ ends.T
+    row_scale = np.abs(steady[:n, :n]).sum(axis=1)
+    row_scale = np.concatenate([row_scale, row_scale])
+    lam_s, left, right = [], [], []
+    groups = _groups(lam, gap)[:coupled]
+    for group in groups:
+        part = ends[:, group]
+        dc = (part / lam[group]) @ part.T
+        first_moment = np.trace((part / lam[group] ** 2) @ part.T)
+        if first_moment == 0.0:
+            continue
+        # one decay rate for the group that keeps steady gain and mean delay
+        rate = np.trace(dc) / first_moment
+        u, sign = _coupling_directions(dc, n, tolerance * row_scale / len(groups))
+        for k in range(sign.size):
+            lam_s.append(rate)
+            left.append(u[:, k] * sign[k] * rate)
+            right.append(u[:n, k])
+    s = len(lam_s)
+    lam_s = np.array(lam_s)
+    left = np.array(left).T if s else np.zeros((2 * n, 0))
+    right = np.array(right) if s else np.zeros((0, n))
+
+    time = np.geomspace(1e-3 / lam[-1], 40.0 / lam[0], 300)
+    decay_full = np.exp(-np.outer(time, lam))
+    decay_s = np.exp(-np.outer(time, lam_s))
+    lam_l, rho, rho_case = _local_modes(lam, junction, case, lam_s, left, right, time, tolerance * row_scale)
+
+    # coolant: the shared modes must carry "everything at 1 K over the coolant" and let it decay
+    if s:
+        want = (decay_full @ (ends * coolant).T).T.reshape(-1)
+        rows = (left[:, None, :] * decay_s[None, :, :]).reshape(-1, s)
+        heavy = 100.0  # the start value, so that temperatures do not jump with the coolant
+        start = left * heavy
+        g = np.linalg.lstsq(np.vstack([rows, start]), np.concatenate([want, np.full(2 * n, heavy)]), rcond=1e-10)[0]
+        coolant_error = np.abs(rows @ g - want).max()
+    else:
+        g = np.zeros(0)
+        coolant_error = 1.0
+
+    bound = _bound(lam, junction, lam_l, rho, lam_s, left[:n], right)
+    relative = float((bound.sum(axis=1) / row_scale[:n]).max())
+    return ReducedNetwork(
+        lam_l, rho, rho_case, lam_s, right, left[:n].copy(), left[n:].copy(), g, bound, relative, float(coolant_error), n_full,
+    )
+
+
+def _coupling_directions(dc, n, allowed):
+    """Fewest directions u with signs so that dc - u diag(sign) u.T couples no chip with another.
+
+    Works like a principal-factor analysis: the diagonal (a chip with its own
+    case point) is free, because local modes can carry it.
+    """
+    free = np.zeros_like(dc, dtype=bool)
+    idx = np.arange(2 * n)
+    free[idx, idx] = True
+    free[idx[:n], idx[n:]] = True
+    free[idx[n:], idx[:n]] = True
+    diagonal = np.where(free, dc, 0.0)
+    for rank in range(0, n + 1):
+        own = diagonal
+        for _ in range(1 if rank == 0 else 40):
+            value, vector = np.linalg.eigh(dc - own)
+            order = np.argsort(-np.abs(value))[:rank]
+            fitted = (vector[:, order] * value[order]) @ vector[:, order].T
+            left_over = np.where(free, 0.0, np.abs(dc - fitted)).sum(axis=1)
+            if np.all(left_over <= allowed):
+                return vector[:, order] * np.sqrt(np.abs(value[order])), np.sign(value[order])
+            new = np.where(free, dc - fitted, 0.0)
+            if np.abs(new - own).max() < 0.01 * allowed.min():
+                break
+            own = new
+    return vector[:, order] * np.sqrt(np.abs(value[order])), np.sign(value[order])
+
+
+def _local_modes(lam, junction, case, lam_s, left, right, time, allowed):
+    """Few exponentials for what the shared modes leave of each chip's response to its own heat."""
+    n = junction.shape[0]
+    decay = np.exp(-np.outer(time, lam))
+    decay_s = np.exp(-np.outer(time, lam_s))
+    steady_s = left * right.T[np.r_[0:n, 0:n]] / lam_s
+    fits = []
+    for i in range(n):
+        weight = junction[i] ** 2 / lam
+        impulse = decay @ junction[i] ** 2 - decay_s @ (left[i] * right[:, i])
+        impulse_case = decay @ (case[i] * junction[i]) - decay_s @ (left[n + i] * right[:, i])
+        end = weight.sum() - steady_s[i].sum()
+        end_case = (case[i] * junction[i] / lam).sum() - steady_s[n + i].sum()
+        for count in range(1, 13):
+            rates = _cluster_rates(lam, weight, count)
+            rho, miss = _fit(time, rates, impulse, end)
+            if miss <= 0.3 * allowed[i] or rates.size < count:
+                break
+        # a slow rate that the shared modes already carry is not needed twice
+        while rates.size > 1:
+            fewer = np.delete(rates, np.argmin(np.abs(rho / rates)))
+            rho_fewer, miss_fewer = _fit(time, fewer, impulse, end)
+            if miss_fewer > max(0.3 * allowed[i], miss):
+                break
+            rates, rho = fewer, rho_fewer
+        fits.append((rates, rho, _fit(time, rates, impulse_case, end_case)[0]))
+    most = max(f[0].size for f in fits)
+    lam_l = np.ones((most, n))
+    rho_l = np.zeros((most, n))
+    rho_c = np.zeros((most, n))
+    for i, (rates, rho, rho_case) in enumerate(fits):
+        lam_l[: rates.size, i] = rates
+        rho_l[: rates.size, i] = rho
+        rho_c[: rates.size, i] = rho_case
+    return lam_l, rho_l, rho_c
+
+
+def _fit(time, rates, impulse, end):
+    """Weights of given decay rates for an impulse response whose integral is ``end``, and the L1 norm of the miss.
+
+    Fitted on t h(t), the response per decade of time; the integral (the steady
+    resistance) is a heavy row.
+    """
+    decay = np.exp(-np.outer(time, rates))
+    heavy = 1000.0 * np.sqrt(time.size)
+    rows = np.vstack([decay * time[:, None], heavy / rates]) * rates
+    rho = np.linalg.lstsq(rows, np.append(impulse * time, heavy * end), rcond=1e-10)[0] * rates
+    return rho, float(_l1(time, (impulse - decay @ rho)[:, None])[0])
+
+
+def _l1(time, response):
+    """Integral of |response| over time, columns apart, on a logarithmic grid; before the first point it is constant."""
+    size = np.abs(response)
+    return np.trapezoid(size * time[:, None], np.log(time), axis=0) + size[0] * time[0]
+
+
+def _cluster_rates(lam, weight, count):
+    """Join neighbouring modes of one chip, least loss first, until ``count`` are left."""
+    keep = weight > 1e-7 * weight.sum()
+    rate, w = lam[keep].copy(), weight[keep].copy()
+    while rate.size > count:
+        gap = np.diff(np.log(rate))
+        cost = gap**2 * (w[:-1] * w[1:]) / (w[:-1] + w[1:])
+        k = int(np.argmin(cost))
+        total = w[k] + w[k + 1]
+        # mean delay is kept: the joint time constant is the weighted mean
+        joint = total / (w[k] / rate[k] + w[k + 1] / rate[k + 1])
+        rate = np.concatenate([rate[:k], [joint], rate[k + 2:]])
+        w = np.concatenate([w[:k], [total], w[k + 2:]])
+    return rate
+
+
+def _bound(lam, junction, lam_l, rho, lam_s, c_s, b_s):
+    """L1 norms of impulse-response differences, shape (n, n), on a fine logarithmic grid."""
+    n = junction.shape[0]
+    every = np.concatenate([lam, lam_l.ravel(), lam_s])
+    time = np.geomspace(1e-3 / every.max(), 60.0 / every.min(), 500)
+    decay = np.exp(-np.outer(time, lam))
+    decay_s = np.exp(-np.outer(time, lam_s))
+    bound = np.empty((n, n))
+    for j in range(n):
+        error = decay @ (junction * junction[j]).T - decay_s @ (c_s * b_s[:, j]).T
+        error[:, j] -= np.exp(-np.outer(time, lam_l[:, j])) @ rho[:, j]
+        bound[:, j] = _l1(time, error)
+    return bound

@@ -1,0 +1,161 @@
+"""Foster branches and Cauer ladders, and the way between them.
+
+A Foster network only describes the rise at its input; a Cauer ladder also
+says which heat leaves at its far end and when. Joining a junction-to-case
+curve to a sink therefore goes through the ladder.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from fractions import Fraction
+
+import numpy as np
+
+from ..checks import require_range
+from ..errors import RangeError
+
+
+@dataclass(frozen=True)
+class FosterNetwork:
+    """Thermal impedance as a sum of branches R (1 - exp(-t/tau)).
+
+    Attributes
+    ----------
+    r_k_per_w, tau_s : ndarray, shape (n,)
+        Branch resistances [K/W] and time constants [s], all above zero.
+    """
+
+    r_k_per_w: np.ndarray
+    tau_s: np.ndarray
+
+    def __post_init__(self):
+        r = require_range("r_k_per_w", np.atleast_1d(self.r_k_per_w), low=0.0, low_open=True, unit="K/W")
+        tau = require_range("tau_s", np.atleast_1d(self.tau_s), low=0.0, low_open=True, unit="s")
+        if r.shape != tau.shape or r.ndim != 1 or r.size == 0:
+            raise RangeError("tau_s", f"{tau.size} values beside {r.size} resistances", "one time constant for every resistance")
+        object.__setattr__(self, "r_k_per_w", r)
+        object.__setattr__(self, "tau_s", tau)
+
+    @property
+    def r_total_k_per_w(self) -> float:
+        """Steady resistance [K/W]."""
+        return float(self.r_k_per_w.sum())
+
+    def z_k_per_w(self, time_s):
+        """Step response [K/W] at ``time_s`` (any shape, [s]).
+
+        Examples
+        --------
+        >>> float(FosterNetwork([0.1], [2.0]).z_k_per_w(2.0).round(6))
+        0.063212
+        """
+        t = np.asarray(time_s, float)[..., None]
+        return (self.r_k_per_w * -np.expm1(-t / self.tau_s)).sum(axis=-1)
+
+
+@dataclass(frozen=True)
+class CauerLadder:
+    """Ladder from the heated end: capacity to ground, then resistance, repeated.
+
+    Attributes
+    ----------
+    r_k_per_w, c_j_per_k : ndarray, shape (n,)
+        ``c[0]`` sits at the heated node, ``r[n-1]`` ends at the reference point.
+    """
+
+    r_k_per_w: np.ndarray
+    c_j_per_k: np.ndarray
+
+    def __post_init__(self):
+        r = require_range("r_k_per_w", np.atleast_1d(self.r_k_per_w), low=0.0, low_open=True, unit="K/W")
+        c = require_range("c_j_per_k", np.atleast_1d(self.c_j_per_k), low=0.0, low_open=True, unit="J/K")
+        if r.shape != c.shape or r.ndim != 1 or r.size == 0:
+            raise RangeError("c_j_per_k", f"{c.size} values beside {r.size} resistances", "one capacity for every resistance")
+        object.__setattr__(self, "r_k_per_w", r)
+        object.__setattr__(self, "c_j_per_k", c)
+
+
+def foster_to_cauer(foster: FosterNetwork) -> CauerLadder:
+    """Convert branches to the equivalent ladder by continued-fraction expansion.
+
+    The expansion is done in exact rational arithmetic, so that eight branches
+    over six decades lose nothing to rounding. Branches with equal time
+    constants are merged first (they are one branch).
+
+    Parameters
+    ----------
+    foster : FosterNetwork
+
+    Returns
+    -------
+    CauerLadder
+        With as many stages as there are different time constants.
+
+    Examples
+    --------
+    >>> ladder = foster_to_cauer(FosterNetwork([1.0, 1.0], [1.0, 2.0]))
+    >>> ladder.r_k_per_w.round(7).tolist(), ladder.c_j_per_k.round(7).tolist()
+    ([1.8, 0.2], [0.6666667, 8.3333333])
+    """
+    merged: dict[Fraction, Fraction] = {}
+    for r, tau in zip(foster.r_k_per_w.tolist(), foster.tau_s.tolist()):
+        merged[Fraction(tau)] = merged.get(Fraction(tau), Fraction(0)) + Fraction(r)
+    # Z(s) = num/den with den = prod(1 + s tau)
+    den = [Fraction(1)]
+    for tau in merged:
+        den = _times(den, [Fraction(1), tau])
+    num = [Fraction(0)] * len(merged)
+    for tau, r in merged.items():
+        part = [r]
+        for other in merged:
+            if other != tau:
+                part = _times(part, [Fraction(1), other])
+        num = [a + b for a, b in zip(num, part)]
+    r_out, c_out = [], []
+    n = len(merged)
+    for stage in range(n):
+        # Y = den/num = s c + (den - s c num)/num
+        c = den[-1] / num[-1]
+        rest = den[:]
+        for k, a in enumerate(num):
+            rest[k + 1] -= c * a
+        rest = rest[: len(num)]
+        # Z = num/rest = r + (num - r rest)/rest
+        r = num[-1] / rest[-1]
+        num = [a - r * b for a, b in zip(num, rest)][:-1]
+        den = rest
+        c_out.append(float(c))
+        r_out.append(float(r))
+    return CauerLadder(np.array(r_out), np.array(c_out))
+
+
+def _times(a, b):
+    out = [Fraction(0)] * (len(a) + len(b) - 1)
+    for i, x in enumerate(a):
+        for j, y in enumerate(b):
+            out[i + j] += x * y
+    return out
+
+
+def cauer_to_foster(ladder: CauerLadder) -> FosterNetwork:
+    """Convert a ladder with its far end held at zero to the branches seen at its input.
+
+    Solved as a symmetric tridiagonal eigenproblem; branches come slowest first.
+
+    Examples
+    --------
+    >>> back = cauer_to_foster(CauerLadder([0.1, 0.5, 1.2], [0.3, 0.8, 2.0]))
+    >>> back.tau_s.round(6).tolist()
+    [3.938019, 0.340503, 0.021478]
+    """
+    from scipy.linalg import eigh_tridiagonal
+
+    g = 1.0 / ladder.r_k_per_w
+    c = ladder.c_j_per_k
+    diag = g.copy()
+    diag[1:] += g[:-1]
+    root = np.sqrt(c)
+    lam, vec = eigh_tridiagonal(diag / c, -g[:-1] / (root[:-1] * root[1:]))
+    r = vec[0] ** 2 / c[0] / lam
+    return FosterNetwork(r, 1.0 / lam)

@@ -1,0 +1,1 @@
+"""Independent time-resolved simulation that judges the package."""

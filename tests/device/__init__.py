@@ -1,0 +1,1 @@
+"""Tests of mission.device; ``factories`` and ``broken_modules`` are used by later stages too."""
