@@ -52,10 +52,10 @@ def load_module(name_or_path, folder=None) -> PowerModule:
     --------
     >>> load_module("heron-300").ratings.v_ces_v
     1200.0
-    >>> load_module("heron300")
+    >>> load_module("heron300")  # doctest: +ELLIPSIS
     Traceback (most recent call last):
     ...
-    mission.errors.InputError: module 'heron300': found no such module; allowed: heron-300, kite-300, or the path of a .toml file. What to do: did you mean 'heron-300'?.
+    mission.errors.InputError: module 'heron300': found no such module; ... did you mean 'heron-300'?.
     """
     text = str(name_or_path)
     base = Path(folder) if folder is not None else Path(".")

@@ -213,7 +213,8 @@ class _Curves(FileModel):
                 "curve",
                 f"{len(self.curve)} curve{'' if len(self.curve) == 1 else 's'}",
                 "curves at two or more junction temperatures",
-                "add a [[...curve]] section; where the data sheet gives one temperature only, repeat it at a second one on purpose",
+                "add a [[...curve]] section; where the data sheet gives one temperature only, "
+                "repeat it at a second one on purpose",
             )
         for k, (a, b) in enumerate(pairwise(self.curve), 2):
             if b.t_vj_c <= a.t_vj_c:
@@ -431,7 +432,8 @@ class PowerModule(FileModel):
             if curves.v_ref_v >= self.ratings.v_ces_v:
                 raise RangeError(
                     place,
-                    f"{place}.v_ref_v = {curves.v_ref_v:g} V at a blocking voltage v_ces_v = {self.ratings.v_ces_v:g} V",
+                    f"{place}.v_ref_v = {curves.v_ref_v:g} V at a blocking voltage "
+                    f"v_ces_v = {self.ratings.v_ces_v:g} V",
                     "a reference voltage below the blocking voltage",
                     "enter the DC voltage of the energy curves",
                 )
@@ -491,7 +493,7 @@ class PowerModule(FileModel):
 
     @property
     def notes(self) -> tuple[str, ...]:
-        """What results with this module must repeat: extensions of the data, and data that look odd but may be right."""
+        """What results must repeat: where the data are extended, and data that look odd but may be right."""
         from .notes import module_notes
 
         return module_notes(self)

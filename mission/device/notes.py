@@ -39,13 +39,17 @@ def _extensions(module):
         if first > 0.0:
             yield f"{what}: below {first:g} A the line through the first two points is used, not below zero"
         if last < r.i_nominal_a:
-            yield f"{what}: data end at {last:g} A, below the nominal current of {r.i_nominal_a:g} A; extended in a straight line"
+            rating = f"nominal current of {r.i_nominal_a:g} A"
         elif last < r.i_peak_repetitive_a:
-            yield f"{what}: data end at {last:g} A, below the peak rating of {r.i_peak_repetitive_a:g} A; extended in a straight line"
+            rating = f"peak rating of {r.i_peak_repetitive_a:g} A"
+        else:
+            continue
+        yield f"{what}: data end at {last:g} A, below the {rating}; extended in a straight line"
+    how = "extended in a straight line over temperature"
     for t_c, names in _grouped(every, lambda c: c.curve[0].t_vj_c, lambda t: t > r.t_vj_op_min_c):
-        yield f"{names}: below {t_c:g} degC extended in a straight line over temperature (module rated from {r.t_vj_op_min_c:g} degC)"
+        yield f"{names}: below {t_c:g} degC {how} (module rated from {r.t_vj_op_min_c:g} degC)"
     for t_c, names in _grouped(every, lambda c: c.curve[-1].t_vj_c, lambda t: t < r.t_vj_op_max_c):
-        yield f"{names}: above {t_c:g} degC extended in a straight line over temperature (module rated to {r.t_vj_op_max_c:g} degC)"
+        yield f"{names}: above {t_c:g} degC {how} (module rated to {r.t_vj_op_max_c:g} degC)"
 
 
 def _grouped(every, temperature, concerns):
@@ -63,7 +67,8 @@ def _oddities(module):
     for place, curves in module.on_state_curves().items():
         v = np.array([float(on_state_voltage_v(curves, i, t)) for t in curves.t_vj_c])
         if (v < 0.5).any() or (v > 6.0).any():
-            yield f"{_NAMES[place]}: {v.min():.3g} to {v.max():.3g} V at nominal current is unusual; 1 to 4 V are common"
+            span = f"{v.min():.3g} to {v.max():.3g} V"
+            yield f"{_NAMES[place]}: {span} at nominal current is unusual; 1 to 4 V are common"
     for place, curves in module.energy_curves().items():
         t = curves.t_vj_c
         e = np.array([float(switching_energy_j(curves, i, x)) for x in t])
@@ -73,13 +78,18 @@ def _oddities(module):
             yield f"{_NAMES[place]}: zero at nominal current"
         ratio = curves.v_ref_v / r.v_ces_v
         if not 0.25 <= ratio <= 0.8:
-            yield f"{_NAMES[place]}: reference voltage {curves.v_ref_v:g} V is {ratio:.0%} of the blocking voltage; about half is common"
+            ref = f"reference voltage {curves.v_ref_v:g} V"
+            yield f"{_NAMES[place]}: {ref} is {ratio:.0%} of the blocking voltage; about half is common"
     for name, thermal in (("switch", module.switch.thermal), ("diode", module.diode.thermal)):
-        if thermal.r_total_k_per_w > 5.0:
-            yield f"thermal resistance of the {name}: {thermal.r_total_k_per_w:.3g} K/W is unusually high"
-        if thermal.tau_s[-1] > 30.0:
-            yield f"thermal branches of the {name}: a time constant of {thermal.tau_s[-1]:g} s is long for a module; does it hold a sink?"
-    if module.diode.thermal.r_total_k_per_w < 0.7 * module.switch.thermal.r_total_k_per_w:
+        # given as layers there are no branches to look at
+        total = sum(thermal.r_k_per_w)
+        if total > 5.0:
+            yield f"thermal resistance of the {name}: {total:.3g} K/W is unusually high"
+        if thermal.tau_s and thermal.tau_s[-1] > 30.0:
+            slowest = f"a time constant of {thermal.tau_s[-1]:g} s"
+            yield f"thermal branches of the {name}: {slowest} is long for a module; does it hold a sink?"
+    diode, switch = sum(module.diode.thermal.r_k_per_w), sum(module.switch.thermal.r_k_per_w)
+    if 0.0 < diode < 0.7 * switch:
         yield "thermal resistance: the diode is much better cooled than the switch, which is unusual"
     if not module.failure_mode:
         yield "no failure mode in the module file: temperatures can be computed, a life cannot"

@@ -31,11 +31,12 @@ X_S, A_S, W_S, HEAT = 576, 672, 768, 960  # [mode]
 B_S = 1056  # [chip, S_MAX] heat input, one chip after the other
 C_S = 2208  # [mode, chip] output
 T, FREE, P, P_MID, ENERGY, D_SELF = 3360, 3376, 3392, 3408, 3424, 3440  # [chip]
-SHARED, GAIN = 864, 880  # [chip] coolant plus shared part, and what the latest step added to it
+SHARED, GAIN, BASE, P_SUM = 864, 880, 896, 912  # [chip] coolant plus shared part, its latest change, its value then; energy since then
 HINGE = 3456  # [coefficient, 16]
 KNOT = 3584  # [corner]
 CASE_L, CASE_S, CASE = 3600, 3792, 4944  # [mode, chip], [mode, chip], [chip]
-W_SIZE = 4960
+A_S_MANY, W_S_MANY = 4960, 5056  # [mode] factors of the shared modes over several steps at once
+W_SIZE = 5152
 
 # scalars carried from row to row
 TIME, THETA, COOLANT, REGIME, SETTLE, LEVEL, WINDOW_CYCLES, WINDOW_START, H_LOADED, WINDOW_PHASE = range(10)
@@ -51,6 +52,7 @@ NODES, RIPPLE_NODES = 64, 32  # along the conducting half wave
 CHUNK = 256
 SIN, COS = np.sin(np.pi * np.arange(NODES + 1) / NODES), np.cos(np.pi * np.arange(NODES + 1) / NODES)
 SIN[NODES] = 0.0
+SHARED_WITHIN_S = 0.012  # shared modes move at least this often in even steps
 TINY_W = 1e-9  # keeps decaying states out of the denormal range, where the processor crawls
 THIRD = 2.0 * np.pi / 3.0
 ROOT3_2 = np.sqrt(3.0) / 2.0
@@ -106,14 +108,15 @@ def hinge_losses(w, n_h, source, target):
 
 
 @njit(cache=True, inline="always")
-def one_step(w, n_l, n_s, n_h, t_cool, stretch):
-    """All chips over one step, exact in every mode, loss at the predicted middle temperature.
+def local_step(w, n_l, n_h, part):
+    """Local modes of all chips over one step, exact, loss at the predicted middle temperature.
 
-    ``stretch``: this step over the one before.
+    The shared part moves on by ``part`` of what its latest step added: enough for
+    the temperature of the loss; :func:`shared_step` sets it right.
     """
     for i in range(N):
-        # the shared part goes on at the rate of the step before: good enough for the temperature of the loss
-        w[FREE + i] = w[SHARED + i] + stretch * w[GAIN + i]
+        w[SHARED + i] += part * w[GAIN + i]
+        w[FREE + i] = w[SHARED + i]
     for k in range(n_l):
         for i in range(N):
             w[X_L + k * N + i] *= w[A_L + k * N + i]
@@ -123,25 +126,36 @@ def one_step(w, n_l, n_s, n_h, t_cool, stretch):
         w[P_MID + i] = 0.5 * (w[T + i] + w[FREE + i] + w[D_SELF + i] * w[P + i])
     hinge_losses(w, n_h, P_MID, P)
     for i in range(N):
-        w[T + i] = w[FREE + i] - w[SHARED + i] - stretch * w[GAIN + i] + w[D_SELF + i] * w[P + i]
-        w[GAIN + i] = -w[SHARED + i]
-        w[SHARED + i] = t_cool
+        w[T + i] = w[FREE + i] + w[D_SELF + i] * w[P + i]
     for k in range(n_l):
         for i in range(N):
             w[X_L + k * N + i] += w[B_L + k * N + i] * w[P + i]
+
+
+@njit(cache=True, inline="always")
+def shared_step(w, n_s, source, factor, t_cool, keep, gain):
+    """Shared modes over the time since their latest step, with the mean power ``factor * w[source]``, exact.
+
+    ``keep`` and ``gain``: places of their factors.
+    """
     for s in range(n_s):
         w[HEAT + s] = 0.0
     for i in range(N):
         for s in range(n_s):
-            w[HEAT + s] += w[B_S + i * S_MAX + s] * w[P + i]
+            w[HEAT + s] += w[B_S + i * S_MAX + s] * w[source + i]
     for s in range(n_s):
-        w[X_S + s] = w[A_S + s] * w[X_S + s] + w[W_S + s] * w[HEAT + s]
+        w[X_S + s] = w[keep + s] * w[X_S + s] + w[gain + s] * factor * w[HEAT + s]
+    for i in range(N):
+        # what stands in SHARED is the extrapolation; T takes the difference, GAIN the true change
+        w[FREE + i] = w[SHARED + i]
+        w[SHARED + i] = t_cool
     for s in range(n_s):
         for i in range(N):
             w[SHARED + i] += w[C_S + s * N + i] * w[X_S + s]
     for i in range(N):
-        w[T + i] += w[SHARED + i]
-        w[GAIN + i] += w[SHARED + i]
+        w[T + i] += w[SHARED + i] - w[FREE + i]
+        w[GAIN + i] = w[SHARED + i] - w[BASE + i]
+        w[BASE + i] = w[SHARED + i]
 
 
 @njit(cache=True)
@@ -166,6 +180,8 @@ def shared_part(w, n_s, t_cool):
     for s in range(n_s):
         for i in range(N):
             w[SHARED + i] += w[C_S + s * N + i] * w[X_S + s]
+    for i in range(N):
+        w[BASE + i] = w[SHARED + i]
 
 
 @njit(cache=True)
@@ -467,6 +483,7 @@ def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, leve
     n_t, n_c, count = 0, 0, 0
     once = now[LEVEL] > 0.0
     h_before = 0.0
+    many, since, count_even, done_even, begin_even = 1, 0, 0, 0, 0.0
     while used < duration:
         left = duration - used
         level = int(now[LEVEL])
@@ -482,10 +499,21 @@ def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, leve
         else:
             if turning:
                 if h_even == 0.0:
-                    h_even = left / np.ceil(left / h_angle - 1e-9)
-                h = h_even if left > 1.5 * h_even else left
-                if abs(h - h_even) < 1e-9 * h_even:
-                    h = h_even
+                    many = min(8, max(1, int(SHARED_WITHIN_S / h_angle)))
+                    groups = np.ceil(left / (h_angle * many) - 1e-9)
+                    h_even = left / (groups * many)
+                    count_even = int(groups) * many
+                    begin_even = used
+                    for s in range(n_s):
+                        e = np.expm1(-lam_s[s] * h_even * many)
+                        w[A_S_MANY + s] = 1.0 + e
+                        w[W_S_MANY + s] = -e / lam_s[s]
+                    for i in range(N):
+                        w[P_SUM + i] = 0.0
+                    # the change that GAIN holds belongs to the step before; stretch it to the new one
+                    for i in range(N):
+                        w[GAIN + i] *= h_even * many / h_before if h_before > 0.0 else 0.0
+                h = h_even
             else:
                 h = min(left, settings[H_MAX])
             if now[H_LOADED] != h:
@@ -496,9 +524,27 @@ def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, leve
             middle = theta + omega * (used + 0.5 * h)
             for leg in range(3):
                 leg_losses(leg, wrap(middle - THIRD * leg), half_nodes, w)
-        one_step(w, n_l, n_s, n_h, t_cool, h / h_before if h_before > 0.0 else 0.0)
-        h_before = h
-        used = used + h if left - h > 1e-12 * duration else duration
+        # the shared modes are slow: in even steps they move once in several of them, with the mean power
+        if h == h_even:
+            local_step(w, n_l, n_h, 1.0 / many if h_before > 0.0 else 0.0)
+            for i in range(N):
+                w[P_SUM + i] += w[P + i]
+            since += 1
+            if since == many:
+                shared_step(w, n_s, P_SUM, 1.0 / many, t_cool, A_S_MANY, W_S_MANY)
+                for i in range(N):
+                    w[P_SUM + i] = 0.0
+                since = 0
+                h_before = h * many
+        else:
+            local_step(w, n_l, n_h, h / h_before if h_before > 0.0 else 0.0)
+            shared_step(w, n_s, P, 1.0, t_cool, A_S, W_S)
+            h_before = h
+        if h == h_even:
+            done_even += 1
+            used = begin_even + done_even * h_even if done_even < count_even else duration
+        else:
+            used = used + h if left - h > 1e-12 * duration else duration
         count += 1
         for i in range(N):
             w[ENERGY + i] += w[P + i] * h
@@ -702,7 +748,8 @@ def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, lev
                     if left > 0.0:
                         ripples(op, w, group, group_kind, group_lam, group_rho, half_nodes, knot_c, nodes, ripple)
             if want == MEAN and left > 0.0 and status == OK:
-                mean_hinges(op, w, i_step, conduction, energy_mean, order, amount, knot_c, group, ripple)
+                if changed or renew or before == ANGLE:
+                    mean_hinges(op, w, i_step, conduction, energy_mean, order, amount, knot_c, group, ripple)
                 if before == ANGLE:
                     add_ripple(-1.0, op, now[THETA], w, n_l, n_h, group, group_lam, group_rho, ripple, nodes)
                 now[REGIME] = MEAN

@@ -17,7 +17,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from ..errors import InputError, near_match
+from ..errors import InputError
 from .spec import DirectPoints, MachineSpec, SynchronousMachine
 from .synchronous import (
     dq_voltages_v,
@@ -125,6 +125,10 @@ def _column(block, name, where):
     return a
 
 
+#: What a user calls the columns under [duty.columns].
+_USER_NAMES = {"current_a": "current", "frequency_hz": "frequency", "mod_index": "mod_index", "phi_rad": "displacement"}
+
+
 def _need(block, names, where, why):
     for name in names:
         if name not in block.columns:
@@ -132,8 +136,7 @@ def _need(block, names, where, why):
                 f"{where}, columns of the duty",
                 f"no {name} among {', '.join(sorted(block.columns)) or 'none'}",
                 f"{why} needs {', '.join(names)}",
-                near_match(name, block.columns)
-                or f"map a column to {name} under [duty.columns], or choose another kind of machine",
+                f"map a column to {_USER_NAMES[name]} under [duty.columns], or choose another kind of machine",
             )
 
 
@@ -170,7 +173,7 @@ def _direct(block, v_half, mod_index_max, where, n):
             "current_a",
             current,
             (current < 0.0) & (np.cos(phi) > 1e-9),
-            "a current that is positive, or a displacement beyond 90 degrees with a negative current (both say generating)",
+            "a positive current, or a displacement beyond 90 degrees with a negative current (both say generating)",
         ),
     ):
         if bad.any():
@@ -257,7 +260,8 @@ def _synchronous(block, machine: SynchronousMachine, v_half, mod_index_max, wher
                 k = short[at]
                 raise InputError(
                     _row(block, where, k),
-                    f"{abs(current[k]):g} A rms at {w[k] / (2 * np.pi):.4g} Hz, which wants at least {v[at]:.4g} V even in full field weakening",
+                    f"{abs(current[k]):g} A rms at {w[k] / (2 * np.pi):.4g} Hz, "
+                    f"which wants at least {v[at]:.4g} V even in full field weakening",
                     _available_v(v_max[k], v_half[k]),
                     "check speed, machine data and DC voltage, or raise the current: weakening the field needs current",
                 )
@@ -270,7 +274,8 @@ def _synchronous(block, machine: SynchronousMachine, v_half, mod_index_max, wher
                 most = largest_torque_nm(machine, float(w[k]), float(v_max[k]), float(torque[k]))
                 raise InputError(
                     _row(block, where, k),
-                    f"{direction[k] * torque[k]:g} N m at {w[k] / (2 * np.pi):.4g} Hz, which wants {wanted_v[at]:.4g} V and fits with no field weakening",
+                    f"{direction[k] * torque[k]:g} N m at {w[k] / (2 * np.pi):.4g} Hz, "
+                    f"which wants {wanted_v[at]:.4g} V; weakening the field does not bring that down far enough",
                     f"{direction[k] * most:.4g} N m at this speed with {_available_v(v_max[k], v_half[k])}",
                     "check speed, torque, machine data and DC voltage",
                 )

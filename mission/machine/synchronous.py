@@ -64,7 +64,9 @@ def mtpa_from_current(machine: SynchronousMachine, i_peak_a):
 
     Examples
     --------
-    >>> m = SynchronousMachine(kind="synchronous", pole_pairs=4, r_s_ohm=0.02, l_d_h=0.4e-3, l_q_h=0.4e-3, psi_pm_wb=0.2)
+    >>> m = SynchronousMachine(
+    ...     kind="synchronous", pole_pairs=4, r_s_ohm=0.02, l_d_h=0.4e-3, l_q_h=0.4e-3, psi_pm_wb=0.2
+    ... )
     >>> [float(x) for x in mtpa_from_current(m, 100.0)]
     [0.0, 100.0]
     """

@@ -30,7 +30,17 @@ ASSISTED = SynchronousMachine(
     kind="synchronous", pole_pairs=3, r_s_ohm=0.02, l_d_h=0.6e-3, l_q_h=2.4e-3, psi_pm_wb=0.06
 )
 INVERSE = SynchronousMachine(kind="synchronous", pole_pairs=4, r_s_ohm=0.02, l_d_h=1.5e-3, l_q_h=0.9e-3, psi_pm_wb=0.3)
-MACHINES = {"winch": WINCH, "round": ROUND, "reluctance": RELUCTANCE, "assisted": ASSISTED, "inverse": INVERSE}
+LOSSY = SynchronousMachine(  # so much resistance that braking bends the voltage limit
+    kind="synchronous", pole_pairs=4, r_s_ohm=0.9, l_d_h=2.0e-3, l_q_h=2.5e-3, psi_pm_wb=0.5
+)
+MACHINES = {
+    "lossy": LOSSY,
+    "winch": WINCH,
+    "round": ROUND,
+    "reluctance": RELUCTANCE,
+    "assisted": ASSISTED,
+    "inverse": INVERSE,
+}
 M_MAX = 2.0 / np.sqrt(3.0)
 V_DC = 600.0
 V_MAX = M_MAX * V_DC / 2.0
@@ -131,7 +141,7 @@ def test_most_torque_of_nothing_is_nothing():
 
 
 @settings(max_examples=150, deadline=None)
-@given(any_machine, signed(400.0), signed(250.0))
+@given(any_machine, signed(900.0), signed(250.0))
 def test_current_duty_against_a_dense_scan(machine, current, speed):
     """Independent code: of all angles that fit the voltage and drive as wanted, the one with the most torque."""
     omega, size = machine.pole_pairs * abs(speed), np.sqrt(2.0) * abs(current)
@@ -184,7 +194,7 @@ def test_torque_duty_gives_the_torque_with_the_least_current(machine, torque, sp
     elif least < V_MAX:
         i_d = brentq(lambda x: v(x) - V_MAX, lowest.x, start, xtol=1e-11, rtol=1e-14)
     else:
-        with pytest.raises(InputError, match="row 1 .*wants .* V.*N m at this speed"):
+        with pytest.raises(InputError, match="row 1 .*(wants .* V.*N m at this speed|standstill)"):
             points(machine, torque_nm=torque, speed_rad_s=speed)
         return
     p = points(machine, torque_nm=torque, speed_rad_s=speed)

@@ -1,0 +1,211 @@
+"""Rainflow counting, streaming, after the four-point method; and the published forms for single series."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from ..errors import InputError, RangeError
+from .table import CLOSED, RESIDUE, CycleTable
+
+
+class CycleCounter:
+    """Counts the cycles of several signals that arrive in blocks.
+
+    Parameters
+    ----------
+    n_signals : int
+
+    Notes
+    -----
+    Four-point method: of four successive turning points the inner pair is a cycle
+    when its range is not above either neighbour's. What is left, the residue, is
+    closed by repeating the mission (A. Amzallag et al., Int. J. Fatigue 16 (1994)
+    287-293) or counted as half cycles (ASTM E1049-85). The result does not depend on
+    where blocks end.
+    """
+
+    def __init__(self, n_signals: int):
+        self._stack = [np.empty((64, 5)) for _ in range(n_signals)]
+        self._depth = [0] * n_signals
+        self._heading = [0] * n_signals
+        self._out: list[tuple[int, np.ndarray, int]] = []
+
+    def push(self, signal, t_c, time_s, phase_id=None, half_period_s=None, ripple_k=None) -> None:
+        """Add samples of one signal, in order of time.
+
+        Parameters
+        ----------
+        signal : int
+        t_c, time_s : array_like, shape (n,)
+            Temperature [degC] and time [s]; need not be turning points.
+        phase_id : array_like of int, optional
+            Phase of the duty at each sample.
+        half_period_s, ripple_k : array_like, optional
+            Where the sample stands for fast rotation: half an output period and the
+            ripple range there; swings no larger than the ripple take this heating time.
+
+        Raises
+        ------
+        RangeError
+            A temperature that is not finite.
+        """
+        t_c = np.asarray(t_c, float)
+        points = np.zeros((t_c.size, 5))
+        points[:, 0], points[:, 1] = t_c, time_s
+        if not np.isfinite(t_c).all():
+            bad = int(np.flatnonzero(~np.isfinite(t_c))[0])
+            raise RangeError(f"t_c[{bad}]", f"{t_c[bad]}", "a finite temperature", "correct the series; nothing is filled in")
+        for column, values in ((2, phase_id), (3, half_period_s), (4, ripple_k)):
+            if values is not None:
+                points[:, column] = values
+        self._count(signal, points, CLOSED)
+
+    def _count(self, signal, points, kind):
+        from .kernels import count
+
+        depth = self._depth[signal]
+        need = depth + points.shape[0] + 1
+        if need > self._stack[signal].shape[0]:
+            bigger = np.empty((2 * need, 5))
+            bigger[:depth] = self._stack[signal][:depth]
+            self._stack[signal] = bigger
+        out = np.empty((need // 2 + 1, 8))
+        self._depth[signal], self._heading[signal], closed = count(points, self._stack[signal], depth, self._heading[signal], out)
+        if closed:
+            self._out.append((signal, out[:closed].copy(), kind))
+
+    def drain(self) -> CycleTable:
+        """Cycles closed since the last call."""
+        tables = [_table(signal, cycles, kind, 1.0) for signal, cycles, kind in self._out]
+        self._out = []
+        return CycleTable.concat(tables)
+
+    def residue(self, signal) -> np.ndarray:
+        """What is not closed yet: temperatures of the points on the stack [degC]."""
+        return self._stack[signal][: self._depth[signal], 0].copy()
+
+    def finish(self, residue: str = "repeat", *, period_s: float) -> CycleTable:
+        """Close what is left.
+
+        Parameters
+        ----------
+        residue : {"repeat", "half"}
+            Count what closes when the mission repeats, or half cycles.
+        period_s : float
+            Length of the mission; times in the repetition stand this much later.
+        """
+        if residue not in ("repeat", "half"):
+            raise InputError("residue", f"'{residue}'", "repeat or half")
+        before = self.drain()
+        tables = [before] if len(before) else []
+        for signal in range(len(self._stack)):
+            rest = self._stack[signal][: self._depth[signal]].copy()
+            if rest.shape[0] < 2:
+                continue
+            if residue == "repeat":
+                again = rest.copy()
+                again[:, 1] += period_s
+                self._count(signal, again, RESIDUE)
+                tables.append(self.drain())
+            else:
+                tables.append(_table(signal, _half_cycles(rest), RESIDUE, 0.5))
+            self._depth[signal] = self._heading[signal] = 0
+        return CycleTable.concat(tables)
+
+
+def _half_cycles(rest):
+    """Pairs of a residue; a fall takes the heating time of the rise after it, else of the rise before it."""
+    a, b = rest[:-1], rest[1:]
+    span = b[:, 1] - a[:, 1]
+    rising = b[:, 0] > a[:, 0]
+    heating = span.copy()
+    for k in np.flatnonzero(~rising):
+        if k + 1 < rising.size:
+            size = abs(b[k + 1, 0] - a[k + 1, 0])
+            heating[k] = span[k + 1] * min(1.0, abs(b[k, 0] - a[k, 0]) / size)
+        elif k > 0:
+            heating[k] = span[k - 1]
+    peak = np.where(rising[:, None], b, a)
+    size = np.abs(b[:, 0] - a[:, 0])
+    from .kernels import RIPPLE_REACH
+
+    heating = np.where((peak[:, 3] > 0.0) & (size <= RIPPLE_REACH * peak[:, 4]), peak[:, 3], heating)
+    return np.stack([size, 0.5 * (a[:, 0] + b[:, 0]), np.minimum(a[:, 0], b[:, 0]), peak[:, 0], heating, a[:, 1], b[:, 1], peak[:, 2]], axis=1)
+
+
+def _table(signal, cycles, kind, count):
+    n = cycles.shape[0]
+    return CycleTable(np.full(n, signal, np.int16), *(cycles[:, k] for k in range(7)), cycles[:, 7].astype(np.int16),
+                      np.full(n, count), np.full(n, kind, np.uint8))
+
+
+def turning_points(series) -> np.ndarray:
+    """Ends and reversals of a series; plateaus count once.
+
+    Examples
+    --------
+    >>> turning_points([1, 2, 2, 3, 1, 1, 4]).tolist()
+    [1.0, 3.0, 1.0, 4.0]
+    """
+    x = np.asarray(series, float)
+    if x.ndim != 1:
+        raise RangeError("series", f"shape {x.shape}", "one dimension")
+    if not np.isfinite(x).all():
+        raise RangeError("series", "a value that is not finite", "finite numbers")
+    x = x[np.concatenate([[True], np.diff(x) != 0.0])] if x.size else x
+    if x.size < 3:
+        return x
+    step = np.diff(x)
+    return x[np.concatenate([[True], step[1:] * step[:-1] < 0.0, [True]])]
+
+
+def rainflow_astm(series) -> np.ndarray:
+    """Cycles and half cycles of a series by the procedure of ASTM E1049-85, 5.4.4.
+
+    Parameters
+    ----------
+    series : array_like, shape (n,)
+
+    Returns
+    -------
+    ndarray, shape (m, 3)
+        Range, mean, count (1 or 0.5), in the order in which they are counted.
+
+    Examples
+    --------
+    >>> rainflow_astm([-2, 1, -3, 5, -1, 3, -4, 4, -2])[:2].tolist()
+    [[3.0, -0.5, 0.5], [4.0, -1.0, 0.5]]
+    """
+    out: list[tuple[float, float, float]] = []
+    points: list[float] = []
+    for value in turning_points(series):
+        points.append(float(value))
+        while len(points) >= 3:
+            x, y = abs(points[-1] - points[-2]), abs(points[-2] - points[-3])
+            if x < y:
+                break
+            mean = 0.5 * (points[-2] + points[-3])
+            if len(points) == 3:
+                out.append((y, mean, 0.5))
+                points.pop(0)
+            else:
+                out.append((y, mean, 1.0))
+                del points[-3:-1]
+    out.extend((abs(b - a), 0.5 * (a + b), 0.5) for a, b in zip(points, points[1:]))
+    return np.array(out).reshape(-1, 3)
+
+
+def rainflow_four_point(series) -> tuple[np.ndarray, np.ndarray]:
+    """Closed cycles (range, mean), shape (m, 2), and residue of a series by the four-point method.
+
+    Examples
+    --------
+    >>> cycles, residue = rainflow_four_point([-2, 1, -3, 5, -1, 3, -4, 4, -2])
+    >>> cycles.tolist(), residue.tolist()
+    ([[4.0, 1.0]], [-2.0, 1.0, -3.0, 5.0, -4.0, 4.0, -2.0])
+    """
+    x = turning_points(series)
+    counter = CycleCounter(1)
+    counter.push(0, x, np.arange(x.size, dtype=float))
+    table = counter.drain()
+    return np.stack([table.range_k, table.mean_c], axis=1), counter.residue(0)
