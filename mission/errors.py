@@ -39,7 +39,7 @@ class InputError(MissionError):
         self.where, self.found, self.allowed, self.advice = where, found, allowed, advice
         text = f"{where}: found {found}; allowed: {allowed}."
         if advice:
-            text += f" What to do: {advice}."
+            text += f" What to do: {advice}" + ("" if advice[-1] in ".?!" else ".")
         super().__init__(text)
 
     def at(self, prefix: str) -> "InputError":

@@ -37,7 +37,7 @@ class SwingAndMean(FileModel):
 
 
 class MultiParameter(FileModel):
-    """N_f = k dT^beta1 exp(beta2/(T + 273)) t_on^beta3 I^beta4 V^beta5 D^beta6."""
+    """N_f = k dT^beta1 exp(beta2/T) t_on^beta3 I^beta4 V^beta5 D^beta6, T in kelvin."""
 
     k: _Positive
     beta1: _Negative
@@ -290,8 +290,7 @@ class LifetimeModel:
             log_heat = c.beta3 * math.log(1.5) - 0.3 * np.log(np.clip(heat, 0.1, 60.0) / 1.5)
         fixed = (math.log(c.k) + c.beta4 * math.log(o["current_per_foot_a"]) + c.beta5 * math.log(o["v_class"])
                  + c.beta6 * math.log(o["wire_diameter_um"]))
-        # the paper counts kelvin as degC + 273
-        return fixed + c.beta1 * np.log(q["range_k"]) + c.beta2_k / (t + 273.0) + log_heat
+        return fixed + c.beta1 * np.log(q["range_k"]) + c.beta2_k / (t + ZERO_C_K) + log_heat
 
     def _log_sintered(self, q, diode):
         c, ar = self._set.coefficients, self.options["aspect_ratio"]

@@ -12,7 +12,7 @@ and c change places in time.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -64,6 +64,10 @@ class OperatingPoints:
     i_q_a: np.ndarray
     torque_nm: np.ndarray
     v_peak_v: np.ndarray
+
+    def rows(self, which) -> OperatingPoints:
+        """Some of the rows, picked by a slice, a mask or an index array."""
+        return OperatingPoints(*(getattr(self, f.name)[which] for f in fields(self)))
 
 
 def operating_points(

@@ -24,11 +24,15 @@ class CycleMap:
         self.count = np.zeros((24, *shape))
         self.damage = np.zeros((len(modes), 12, *shape))
 
-    def add(self, table) -> None:
-        """Sort one block of cycles in."""
+    def add(self, table, damage) -> None:
+        """Sort one block of cycles in, with its damage (modes, n) from the ledger."""
         if table.signal.size == 0:
             return
         r = np.clip(np.searchsorted(RANGE_EDGE_K, table.range_k, side="right") - 1, 0, RANGE_EDGE_K.size - 2)
         m = np.clip(np.searchsorted(MEAN_EDGE_C, table.mean_c, side="right") - 1, 0, MEAN_EDGE_C.size - 2)
         flat = (table.signal.astype(np.int64) * (RANGE_EDGE_K.size - 1) + r) * (MEAN_EDGE_C.size - 1) + m
         self.count += np.bincount(flat, weights=table.count, minlength=self.count.size).reshape(self.count.shape)
+        per = self.damage[0].size if len(self._modes) else 0
+        chip = (table.signal.astype(np.int64) % 12 * (RANGE_EDGE_K.size - 1) + r) * (MEAN_EDGE_C.size - 1) + m
+        for number in range(len(self._modes)):
+            self.damage[number] += np.bincount(chip, weights=damage[number], minlength=per).reshape(self.damage[number].shape)

@@ -181,8 +181,7 @@ class _Pass:
         self.ripple.add(table)
 
     def _account(self, table):
-        self.ledger.add(table)
-        self.cycle_map.add(table)
+        self.cycle_map.add(table, self.ledger.add(table))
 
     def _take(self, table):
         self._account(table)

@@ -1,0 +1,239 @@
+"""A duty as rows in blocks: checked once, read again for every use, never held whole."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from ..errors import InputError
+from .units import QUANTITIES, conversion
+
+WHOLE_MISSION = "whole mission"
+
+
+@dataclass(frozen=True)
+class ProfileBlock:
+    """Some rows of a duty, in our units.
+
+    Attributes
+    ----------
+    time_s : ndarray, shape (n,)
+        Start of each row, from the mission's start.
+    dt_s : ndarray, shape (n,)
+        How long each row holds, above zero.
+    columns : dict of ndarray, shape (n,)
+        ``current_a`` (rms, negative generating), ``torque_nm``, ``speed_rad_s``,
+        ``frequency_hz``, ``mod_index``, ``phi_rad``, ``coolant_c``, ``dc_voltage_v``: those that are there.
+    phase_id : ndarray of int16, shape (n,)
+        Index into the profile's phases.
+    first_row : int
+        Number of rows before this block.
+    """
+
+    time_s: np.ndarray
+    dt_s: np.ndarray
+    columns: dict[str, np.ndarray]
+    phase_id: np.ndarray
+    first_row: int
+
+
+#: A source gives, anew at each call, blocks of raw columns: {quantity: array}; text for ``phase``.
+Source = Callable[[int], Iterator[dict[str, np.ndarray]]]
+
+
+@dataclass(frozen=True)
+class MissionProfile:
+    """A checked duty.
+
+    Attributes
+    ----------
+    name, source : str
+    rows : int
+        Rows that hold for a time (the closing row is not counted).
+    duration_s : float
+    phases : tuple of str
+        In order of first appearance; ``("whole mission",)`` without a phase column.
+    quantities : frozenset of str
+        Our names of the columns that are there.
+    ranges : dict
+        Name -> (lowest, highest).
+    time_by_phase_s : tuple of float
+    longest_step_s, shortest_step_s : float
+    notes : tuple of str
+        What a result must repeat.
+    """
+
+    name: str
+    source: str
+    rows: int
+    duration_s: float
+    phases: tuple[str, ...]
+    quantities: frozenset
+    ranges: dict[str, tuple[float, float]]
+    time_by_phase_s: tuple[float, ...]
+    longest_step_s: float
+    shortest_step_s: float
+    notes: tuple[str, ...]
+    _reader: "_Reader" = field(repr=False)
+
+    def blocks(self, rows: int = 65536) -> Iterator[ProfileBlock]:
+        """The rows in order, at most ``rows`` at a time; a file is read again."""
+        return self._reader.blocks(rows, self.phases)
+
+    def to_frame(self):
+        """The whole duty in our units as a DataFrame."""
+        import pandas as pd
+
+        parts = [pd.DataFrame({"time_s": b.time_s, "dt_s": b.dt_s, **b.columns, "phase": np.array(self.phases, dtype=object)[b.phase_id]})
+                 for b in self.blocks()]
+        return pd.concat(parts, ignore_index=True)
+
+
+@dataclass(frozen=True)
+class _Reader:
+    """Turns raw blocks of a source into checked blocks."""
+
+    source: Source
+    label: str
+    columns: dict  # quantity -> ColumnSpec
+    place: Callable[[int], str]  # row number (0-based) -> words for a message
+    longest_step_s: float
+    last_row_lasts_s: float | None
+
+    def blocks(self, rows: int, phases: tuple[str, ...] | None) -> Iterator[ProfileBlock]:
+        """Checked blocks; with ``phases`` None the names are gathered in ``self.found``."""
+        scales = {q: conversion(q, c.unit, f"duty.columns.{q}") for q, c in self.columns.items()}
+        names = list(phases) if phases is not None else []
+        index = {p: k for k, p in enumerate(names)}
+        held: dict[str, np.ndarray] | None = None
+        origin = None
+        before = 0
+        for raw in self.source(rows):
+            block = self._convert(raw, scales, before if held is None else before + 1)
+            if origin is None and block["time"].size:
+                origin = block["time"][0]
+            if held is not None:
+                block = {q: np.concatenate([held[q], block[q]]) for q in block}
+            n = block["time"].size
+            if n < 2:
+                held = block
+                continue
+            self._check_steps(block["time"], before)
+            yield self._block(block, n - 1, origin, before, names, index, phases is None, np.diff(block["time"]))
+            before += n - 1
+            held = {q: v[n - 1:] for q, v in block.items()}
+        if held is None or held["time"].size == 0:
+            raise InputError(self.label, "a header without rows" if before == 0 else "no rows", "at least two rows, or one with last_row_lasts_s")
+        if self.last_row_lasts_s is not None:
+            yield self._block(held, 1, origin, before, names, index, phases is None, np.array([self.last_row_lasts_s]))
+        elif before == 0:
+            raise InputError(self.label, "a single row, which lasts for no time", "at least two rows (the last one closes the mission)",
+                             "add a closing row, or give last_row_lasts_s under [duty]")
+        if phases is None:
+            object.__setattr__(self, "found", tuple(names) if "phase" in self.columns else (WHOLE_MISSION,))
+
+    def _convert(self, raw, scales, first):
+        out = {}
+        for quantity, (factor, offset) in scales.items():
+            values = raw[quantity]
+            if quantity == "phase":
+                out[quantity] = values
+                continue
+            bad = ~np.isfinite(values)
+            if bad.any():
+                self._refuse(quantity, first + int(np.flatnonzero(bad)[0]), f"value {values[np.flatnonzero(bad)[0]]:g}", "a finite number",
+                             "correct the row or cut it out; nothing is filled in")
+            limits = QUANTITIES[quantity]
+            ours = values if factor == 1.0 and offset == 0.0 else factor * (values + offset)
+            bad = (ours < limits.low) | (ours > limits.high)
+            if bad.any():
+                k = int(np.flatnonzero(bad)[0])
+                unit = self.columns[quantity].unit
+                low, high = limits.low / factor - offset, limits.high / factor - offset
+                self._refuse(quantity, first + k, f"value {values[k]:g}{' ' + unit if unit else ''}",
+                             f"{low:.6g} to {high:.6g}{' ' + unit if unit else ''}", limits.why)
+            out[quantity] = ours
+        return out
+
+    def _check_steps(self, time, before):
+        step = np.diff(time)
+        if (step <= 0.0).any():
+            k = int(np.flatnonzero(step <= 0.0)[0])
+            words = f"time {time[k + 1]:.10g} s after {time[k]:.10g} s" if step[k] < 0.0 else f"the time {time[k + 1]:.10g} s twice"
+            self._refuse("time", before + k + 1, words, "times that rise from row to row", "sort the rows, or cut the double")
+        if (step > self.longest_step_s * (1.0 + 1e-9)).any():
+            k = int(np.flatnonzero(step > self.longest_step_s * (1.0 + 1e-9))[0])
+            self._refuse("time", before + k + 1, f"a step of {step[k]:.6g} s after {time[k]:.10g} s", f"steps up to {self.longest_step_s:g} s",
+                         "fill the gap, or allow it on purpose with longest_step_s under [duty] (the row before it is then held)")
+
+    def _block(self, block, n, origin, before, names, index, gather, dt):
+        columns = {}
+        for quantity in self.columns:
+            if quantity in ("time", "phase"):
+                continue
+            if quantity == "power_factor":
+                columns["phi_rad"] = np.arccos(block[quantity][:n])
+            else:
+                columns[QUANTITIES[quantity].column] = block[quantity][:n]
+        if "phase" in block:
+            phase_id = self._phase_ids(block["phase"][:n], before, names, index, gather)
+        else:
+            phase_id = np.zeros(n, np.int16)
+        return ProfileBlock(block["time"][:n] - origin, dt, columns, phase_id, before)
+
+    def _phase_ids(self, words, before, names, index, gather):
+        import pandas as pd
+
+        codes, unique = pd.factorize(words, use_na_sentinel=False)
+        table = np.empty(len(unique), np.int64)
+        for k, word in enumerate(unique):
+            if not isinstance(word, str) or not word.strip():
+                self._refuse("phase", before + int(np.flatnonzero(codes == k)[0]), f"value {word!r}", "a word for what the drive is doing", "name the phase in every row")
+            if word not in index:
+                if not gather:
+                    raise InputError(self.label, f"a phase '{word}' that was not there when the file was checked", "a file that does not change during a run")
+                index[word] = len(names)
+                names.append(word)
+                if len(names) > 200:
+                    self._refuse("phase", before + int(np.flatnonzero(codes == k)[0]), "more than 200 different phases", "a few words for what the drive is doing",
+                                 "map another column, or none")
+            table[k] = index[word]
+        return table[codes].astype(np.int16)
+
+    def _refuse(self, quantity, row, found, allowed, advice):
+        raise InputError(f"{self.label}, {self.place(row)}, column '{self.columns[quantity].column}'", found, allowed, advice)
+
+
+def checked(reader: _Reader, name: str) -> MissionProfile:
+    """Read a duty through once, refuse it or sum it up."""
+    ranges: dict[str, tuple[float, float]] = {}
+    rows = 0
+    longest, shortest, duration = 0.0, np.inf, 0.0
+    time_by_phase = np.zeros(256)
+    for block in reader.blocks(262144, None):
+        rows += block.dt_s.size
+        longest, shortest = max(longest, float(block.dt_s.max())), min(shortest, float(block.dt_s.min()))
+        duration = float(block.time_s[-1] + block.dt_s[-1])
+        time_by_phase += np.bincount(block.phase_id, weights=block.dt_s, minlength=256)
+        for key, values in block.columns.items():
+            low, high = float(values.min()), float(values.max())
+            old = ranges.get(key, (low, high))
+            ranges[key] = (min(low, old[0]), max(high, old[1]))
+    notes = []
+    for quantity, column in reader.columns.items():
+        ours = QUANTITIES[quantity].column
+        if quantity not in ("time", "phase"):
+            notes.append(f"column '{column.column}'" + (f" in {column.unit}" if column.unit else "") + f" read as {'phi_rad' if quantity == 'power_factor' else ours}")
+    if "power_factor" in reader.columns:
+        notes.append("a power factor does not say whether the current lags or leads; it is taken as lagging")
+    if longest > 10.0 * shortest:
+        notes.append(f"uneven steps: {shortest:g} to {longest:g} s; every row is held until the next")
+    if reader.last_row_lasts_s is None:
+        notes.append("the last row closes the mission; its values are not used")
+    else:
+        notes.append(f"the last row lasts {reader.last_row_lasts_s:g} s, as told")
+    phases = reader.found
+    return MissionProfile(name, reader.label, rows, duration, phases, frozenset(ranges), ranges,
+                          tuple(time_by_phase[: len(phases)].tolist()), longest, float(shortest), tuple(notes), replace(reader))
