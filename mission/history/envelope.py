@@ -80,7 +80,7 @@ class EnvelopeBuilder:
         self._temps = np.empty((4, b, 12))
         self._temps[::2], self._temps[1::2] = np.inf, -np.inf
         self._loss, self._coolant = np.zeros((b, 12)), np.zeros(b)
-        self._phase_time = np.zeros((b, len(self.phases)), np.float32)
+        self._phase_time = np.zeros((b, len(self.phases)))
         self.peak_c, self.peak_time_s, self.peak_phase_id = np.full(12, -np.inf), np.zeros(12), np.zeros(12, np.int64)
         self.lowest_c, self.case_peak_c = np.full(12, np.inf), np.full(12, -np.inf)
         self.energy_j, self.beyond_data_s = np.zeros(12), np.zeros(12)

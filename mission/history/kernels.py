@@ -631,7 +631,7 @@ def close_window(now, op, window, pair, pair_time, pair_ripple,
 
 
 @njit(cache=True)
-def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, levels, odd,
+def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_local, levels, odd,
                group, group_kind, group_lam, group_rho,
                knot_c, i_step, conduction, energy_mean, voltage, energy, order, amount, modulation,
                settings, now, old, ripple_op, ripple, nodes, window, last, heading,
@@ -668,6 +668,9 @@ def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, lev
         if change != 0.0:
             for s in range(n_s):
                 w[X_S + s] -= g_cool[s] * change
+            for k in range(n_l):
+                for i in range(N):
+                    w[X_L + k * N + i] -= g_local[k, i] * change
             now[COOLANT] = op[T_COOLANT]
             shared_part(w, n_s, now[COOLANT])
         changed = False

@@ -127,7 +127,7 @@ class ElectrothermalMarch:
             k.step_factors(s.first_step_s * 2.0**v, lam, rho, lam_s, levels[v])
         group, group_kind, group_lam, group_rho = _ripple_groups(lam, rho, np.array([0] * 6 + [1] * 6))
         self._net = (n_l, n_s, np.ascontiguousarray(lam), np.ascontiguousarray(rho), np.ascontiguousarray(lam_s),
-                     np.ascontiguousarray(network.g_coolant), levels, np.empty(levels.shape[1]))
+                     np.ascontiguousarray(network.g_coolant), np.ascontiguousarray(network.g_coolant_local), levels, np.empty(levels.shape[1]))
         self._groups = (group, group_kind, group_lam, group_rho)
         self._tables = (tables.knot_c, float(tables.i_step_a), tables.conduction_w, tables.energy_mean_j, tables.voltage_v,
                         tables.energy_j, tables.order, tables.amount, tables.modulation.code)
@@ -144,7 +144,7 @@ class ElectrothermalMarch:
         self._coolant_start = float(coolant_c)
         if states is not None:
             x_l, x_s, coolant_then = states
-            w[k.X_L:k.X_L + n_l * k.N] = x_l
+            w[k.X_L:k.X_L + n_l * k.N] = x_l - net.g_coolant_local.ravel() * (coolant_c - coolant_then)
             # the coolant may start elsewhere than it ended: temperatures stay
             w[k.X_S:k.X_S + n_s] = x_s - net.g_coolant * (coolant_c - coolant_then)
         for s in range(n_s):
@@ -185,8 +185,9 @@ class ElectrothermalMarch:
         x_l, x_s, coolant = self.states
         keep_l, keep_s = np.exp(-lam_l * duration_s), np.exp(-lam_s * duration_s)
         # the coolant may end elsewhere than it began; the next start takes its step again
-        step = self.network.g_coolant * (self._coolant_start - coolant)
-        new_l = (x_l - keep_l * states_before[0]) / -np.expm1(-lam_l * duration_s)
+        change = self._coolant_start - coolant
+        step, step_l = self.network.g_coolant * change, self.network.g_coolant_local.ravel() * change
+        new_l = (x_l - step_l - keep_l * states_before[0]) / -np.expm1(-lam_l * duration_s)
         new_s = (x_s - step - keep_s * states_before[1]) / -np.expm1(-lam_s * duration_s)
         return new_l, new_s, self._coolant_start
 

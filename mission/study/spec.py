@@ -203,3 +203,21 @@ def _check_together(study: Study) -> None:
         raise InputError(f"{profile.source}, column for mod_index", f"{profile.ranges['mod_index'][1]:g}",
                          f"at most {spec.inverter.modulation.mod_index_max:.5g} with modulation = '{spec.inverter.modulation.value}'",
                          "check the definition (peak phase voltage over half the DC voltage) or choose space-vector modulation")
+
+
+def check_rows(study: Study) -> None:
+    """Turn every row into an operating point, so that one which the machine or the module cannot reach is found without a run."""
+    from ..losses import CURRENT_REACH
+    from ..machine import operating_points
+
+    module = study.module
+    every = [c for curves in (*module.on_state_curves().values(), *module.energy_curves().values()) for c in curves.curve]
+    reach = CURRENT_REACH * max(c.current_a[-1] for c in every)
+    inverter = study.spec.inverter
+    for block in study.profile.blocks():
+        points = operating_points(block, study.spec.machine, dc_voltage_v=inverter.dc_voltage_v,
+                                  mod_index_max=inverter.modulation.mod_index_max, where=study.profile.source)
+        if points.i_peak_a.max() > reach:
+            k = int(points.i_peak_a.argmax())
+            raise InputError(f"{study.profile.source}, row {block.first_row + k + 1}", f"a peak current of {points.i_peak_a[k]:.4g} A",
+                             f"at most {reach:.4g} A (twice the end of the curves of {module.name})", "check the unit (rms or peak), or choose a larger module")

@@ -36,6 +36,8 @@ class ReducedNetwork:
     c_shared, c_case_shared : ndarray, shape (n, S)
     g_coolant : ndarray, shape (S,)
         A rise of the coolant by 1 K lowers shared mode s by ``g_coolant[s]``.
+    g_coolant_local : ndarray, shape (L, n)
+        The same for local modes, as their share of the junction's rise over the coolant [K/K].
     bound_k_per_w : ndarray, shape (n, n)
         Error bound of junction i per watt in chip j.
     relative_bound : float
@@ -54,6 +56,7 @@ class ReducedNetwork:
     c_shared: np.ndarray
     c_case_shared: np.ndarray
     g_coolant: np.ndarray
+    g_coolant_local: np.ndarray
     bound_k_per_w: np.ndarray
     relative_bound: float
     coolant_bound: float
@@ -89,7 +92,7 @@ def unreduced(full: FullNetwork) -> ReducedNetwork:
     n = full.n_chips
     empty = np.zeros((0, n))
     return ReducedNetwork(
-        empty, empty, empty, lam, junction.T.copy(), junction, case, coolant,
+        empty, empty, empty, lam, junction.T.copy(), junction, case, coolant, empty,
         np.zeros((n, n)), 0.0, 0.0, lam.size,
     )
 
@@ -111,7 +114,9 @@ def reduce_to_modes(full: FullNetwork, *, relative_tolerance: float = 1e-3) -> R
     """
     lam, junction, case, coolant = full.modes()
     best = None
-    for gap in (1.1, 1.02):
+    for gap in (1.1, 1.02, 1.002, 1.0001):
+        if gap < 1.02 and _rank(best, relative_tolerance)[0] == 0:
+            break  # finer groups only where they are needed
         n_groups = len(_groups(lam, gap))
         for share in (0.5, 0.1):
             # the fewest slow groups whose coupling must be kept, by bisection
@@ -130,7 +135,8 @@ def reduce_to_modes(full: FullNetwork, *, relative_tolerance: float = 1e-3) -> R
 
 def _rank(trial, tolerance):
     """Sort key: within the tolerance first, then fewest modes, else smallest error."""
-    worst = max(trial.relative_bound, trial.coolant_bound)
+    # a coolant changes by kelvins in minutes, a junction by tens of kelvins in a second
+    worst = max(trial.relative_bound, 0.2 * trial.coolant_bound)
     return (0, trial.lam_local_per_s.size + trial.lam_shared_per_s.size * trial.n_chips) if worst <= tolerance else (1, worst)
 
 
@@ -171,23 +177,36 @@ def _reduce(lam, junction, case, coolant, gap, tolerance, coupled):
     decay_s = np.exp(-np.outer(time, lam_s))
     lam_l, rho, rho_case = _local_modes(lam, junction, case, lam_s, left, right, time, tolerance * row_scale)
 
-    # coolant: the shared modes must carry "everything at 1 K over the coolant" and let it decay
-    if s:
-        want = (decay_full @ (ends * coolant).T).T.reshape(-1)
-        rows = (left[:, None, :] * decay_s[None, :, :]).reshape(-1, s)
-        heavy = 100.0  # the start value, so that temperatures do not jump with the coolant
-        start = left * heavy
-        g = np.linalg.lstsq(np.vstack([rows, start]), np.concatenate([want, np.full(2 * n, heavy)]), rcond=1e-10)[0]
-        coolant_error = np.abs(rows @ g - want).max()
-    else:
-        g = np.zeros(0)
-        coolant_error = 1.0
-
+    g, g_local, coolant_error = _coolant_weights(ends, coolant, decay_full, decay_s, left, lam_l, rho, time)
     bound = _bound(lam, junction, lam_l, rho, lam_s, left[:n], right)
     relative = float((bound.sum(axis=1) / row_scale[:n]).max())
     return ReducedNetwork(
-        lam_l, rho, rho_case, lam_s, right, left[:n].copy(), left[n:].copy(), g, bound, relative, float(coolant_error), n_full,
+        lam_l, rho, rho_case, lam_s, right, left[:n].copy(), left[n:].copy(), g, g_local, bound, relative, float(coolant_error), n_full,
     )
+
+
+def _coolant_weights(ends, coolant, decay_full, decay_s, left, lam_l, rho, time):
+    """What a coolant step of 1 K takes off the shared and the local modes, and the largest junction error it leaves.
+
+    Together the modes must carry "everything at 1 K over the coolant" and let it decay.
+    """
+    n = rho.shape[1]
+    want = decay_full @ (ends * coolant).T  # (time, 2n)
+    s = left.shape[1]
+    heavy = 100.0  # the start value, so that temperatures do not jump with the coolant
+    g = np.zeros(s)
+    if s:
+        rows = (left[:, None, :] * decay_s[None, :, :]).reshape(-1, s)
+        g = np.linalg.lstsq(np.vstack([rows, left * heavy]), np.concatenate([want.T.reshape(-1), np.full(2 * n, heavy)]), rcond=1e-10)[0]
+    rest = want[:, :n] - decay_s @ (left[:n] * g).T
+    start = 1.0 - left[:n] @ g
+    g_local = np.zeros_like(lam_l)
+    for i in range(n):
+        own = rho[:, i] != 0.0
+        decay = np.exp(-np.outer(time, lam_l[own, i]))
+        g_local[own, i] = np.linalg.lstsq(np.vstack([decay, np.full(own.sum(), heavy)]), np.append(rest[:, i], heavy * start[i]), rcond=1e-8)[0]
+        rest[:, i] -= decay @ g_local[own, i]
+    return g, g_local, np.abs(rest).max()
 
 
 def _coupling_directions(dc, n, allowed):
@@ -221,29 +240,24 @@ def _coupling_directions(dc, n, allowed):
 def _local_modes(lam, junction, case, lam_s, left, right, time, allowed):
     """Few exponentials for what the shared modes leave of each chip's response to its own heat."""
     n = junction.shape[0]
-    decay = np.exp(-np.outer(time, lam))
+    # equal chips give equal modes, which the eigensolver mixes at will: only their sums mean something
+    first = np.concatenate([[0], np.flatnonzero(np.diff(lam) > 1e-7 * lam[1:]) + 1])
+    rate = lam[first]
+    decay = np.exp(-np.outer(time, rate))
     decay_s = np.exp(-np.outer(time, lam_s))
     steady_s = left * right.T[np.r_[0:n, 0:n]] / lam_s
+    known: dict[tuple, tuple] = {}
     fits = []
     for i in range(n):
-        weight = junction[i] ** 2 / lam
-        impulse = decay @ junction[i] ** 2 - decay_s @ (left[i] * right[:, i])
-        impulse_case = decay @ (case[i] * junction[i]) - decay_s @ (left[n + i] * right[:, i])
-        end = weight.sum() - steady_s[i].sum()
-        end_case = (case[i] * junction[i] / lam).sum() - steady_s[n + i].sum()
-        for count in range(1, 13):
-            rates = _cluster_rates(lam, weight, count)
-            rho, miss = _fit(time, rates, impulse, end)
-            if miss <= 0.3 * allowed[i] or rates.size < count:
-                break
-        # a slow rate that the shared modes already carry is not needed twice
-        while rates.size > 1:
-            fewer = np.delete(rates, np.argmin(np.abs(rho / rates)))
-            rho_fewer, miss_fewer = _fit(time, fewer, impulse, end)
-            if miss_fewer > max(0.3 * allowed[i], miss):
-                break
-            rates, rho = fewer, rho_fewer
-        fits.append((rates, rho, _fit(time, rates, impulse_case, end_case)[0]))
+        own = np.add.reduceat(junction[i] ** 2, first)
+        own_case = np.add.reduceat(case[i] * junction[i], first)
+        shared, shared_case = left[i] * right[:, i], left[n + i] * right[:, i]
+        key = tuple(np.concatenate([own, own_case, shared, shared_case]).round(9 - int(np.log10(own.max()))))
+        if key not in known:
+            known[key] = _one_chip(
+                rate, own / rate, decay @ own - decay_s @ shared, (own / rate).sum() - steady_s[i].sum(),
+                decay @ own_case - decay_s @ shared_case, (own_case / rate).sum() - steady_s[n + i].sum(), time, 0.3 * allowed[i])
+        fits.append(known[key])
     most = max(f[0].size for f in fits)
     lam_l = np.ones((most, n))
     rho_l = np.zeros((most, n))
@@ -253,6 +267,22 @@ def _local_modes(lam, junction, case, lam_s, left, right, time, allowed):
         rho_l[: rates.size, i] = rho
         rho_c[: rates.size, i] = rho_case
     return lam_l, rho_l, rho_c
+
+
+def _one_chip(lam, weight, impulse, end, impulse_case, end_case, time, allowed):
+    """Rates and weights of one chip: as few as meet ``allowed``."""
+    for rates in _cluster_levels(lam, weight, 12):
+        rho, miss = _fit(time, rates, impulse, end)
+        if miss <= allowed:
+            break
+    # a slow rate that the shared modes already carry is not needed twice
+    while rates.size > 1:
+        fewer = np.delete(rates, np.argmin(np.abs(rho / rates)))
+        rho_fewer, miss_fewer = _fit(time, fewer, impulse, end)
+        if miss_fewer > max(allowed, miss):
+            break
+        rates, rho = fewer, rho_fewer
+    return rates, rho, _fit(time, rates, impulse_case, end_case)[0]
 
 
 def _fit(time, rates, impulse, end):
@@ -274,20 +304,25 @@ def _l1(time, response):
     return np.trapezoid(size * time[:, None], np.log(time), axis=0) + size[0] * time[0]
 
 
-def _cluster_rates(lam, weight, count):
-    """Join neighbouring modes of one chip, least loss first, until ``count`` are left."""
+def _cluster_levels(lam, weight, most):
+    """Rates that stand for the modes of one chip: one of them, then two, up to ``most``.
+
+    Neighbouring modes are joined, least loss first; a joint time constant is the
+    weighted mean, so that the mean delay is kept.
+    """
     keep = weight > 1e-7 * weight.sum()
     rate, w = lam[keep].copy(), weight[keep].copy()
-    while rate.size > count:
-        gap = np.diff(np.log(rate))
-        cost = gap**2 * (w[:-1] * w[1:]) / (w[:-1] + w[1:])
-        k = int(np.argmin(cost))
+    levels = [rate] if rate.size <= most else []
+    while rate.size > 1:
+        gap = np.log(rate[1:] / rate[:-1])
+        k = int(np.argmin(gap**2 * (w[:-1] * w[1:]) / (w[:-1] + w[1:])))
         total = w[k] + w[k + 1]
-        # mean delay is kept: the joint time constant is the weighted mean
         joint = total / (w[k] / rate[k] + w[k + 1] / rate[k + 1])
         rate = np.concatenate([rate[:k], [joint], rate[k + 2:]])
         w = np.concatenate([w[:k], [total], w[k + 2:]])
-    return rate
+        if rate.size <= most:
+            levels.append(rate)
+    return levels[::-1]
 
 
 def _bound(lam, junction, lam_l, rho, lam_s, c_s, b_s):

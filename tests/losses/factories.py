@@ -8,7 +8,7 @@ import numpy as np
 
 from mission.device import module_from_dict
 
-from device.factories import straight_line_data
+from ..device.factories import straight_line_data
 
 
 def power_law_module(*, k_switch=1.0, k_diode=0.6, tc_switch=0.003, tc_diode=0.006, points=400, i_end_a=600.0):

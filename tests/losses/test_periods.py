@@ -10,12 +10,12 @@ from mission.device import load_module
 from mission.errors import InputError, RangeError
 from mission.losses import Modulation, conduction_integrals_w, mean_energy_j, mean_losses_w
 
-from device.factories import straight_line_module
+from ..device.factories import straight_line_module
 from .factories import averaged_losses_w, power_law_module, switched_losses_w
 
 REFERENCE = straight_line_module()
 SHIPPED = {name: load_module(name) for name in ("heron-300", "kite-300")}
-COMMON = dict(t_switch_c=125.0, t_diode_c=125.0, switching_frequency_hz=8000.0, v_dc_v=600.0)
+COMMON = {"t_switch_c": 125.0, "t_diode_c": 125.0, "switching_frequency_hz": 8000.0, "v_dc_v": 600.0}
 
 
 def losses(module, modulation, i, m, phi, **changes):
@@ -84,7 +84,7 @@ def test_cut_of_the_space_vector_series_costs_less_than_it_says(name):
     # promised: 2e-6 of the conduction loss; checked at full modulation, where the cut weighs most.
     # Independent mean over 720 000 angles (its own error is below 1e-8).
     for deg in (0, 17, 30, 61, 90, 143, 180):
-        case = dict(i_peak_a=400.0, mod_index=2 / np.sqrt(3), phi_rad=np.radians(deg), t_switch_c=110.0, t_diode_c=90.0, v_dc_v=600.0)
+        case = {"i_peak_a": 400.0, "mod_index": 2 / np.sqrt(3), "phi_rad": np.radians(deg), "t_switch_c": 110.0, "t_diode_c": 90.0, "v_dc_v": 600.0}
         found = mean_losses_w(SHIPPED[name], Modulation.SPACE_VECTOR, switching_frequency_hz=1.0, **case)
         want = averaged_losses_w(SHIPPED[name], "space-vector", f_hz=1.0, points=720_000, **case)
         for part in ("switch_conduction", "diode_conduction"):
@@ -123,10 +123,10 @@ def test_switching_loss_numbers():
 def test_against_the_mean_over_the_period(name, modulation, data):
     """Own duty-averaging code; 36 000 angles settle to about 1e-7."""
     m_max = 1.0 if modulation == "sine" else 2 / np.sqrt(3)
-    case = dict(
-        i_peak_a=data.draw(st.floats(0.5, 1100.0)), mod_index=data.draw(st.floats(0.0, m_max)), phi_rad=data.draw(st.floats(-np.pi, np.pi)),
-        t_switch_c=data.draw(st.floats(-40.0, 190.0)), t_diode_c=data.draw(st.floats(-40.0, 190.0)), v_dc_v=data.draw(st.floats(200.0, 900.0)),
-    )
+    case = {
+        "i_peak_a": data.draw(st.floats(0.5, 1100.0)), "mod_index": data.draw(st.floats(0.0, m_max)), "phi_rad": data.draw(st.floats(-np.pi, np.pi)),
+        "t_switch_c": data.draw(st.floats(-40.0, 190.0)), "t_diode_c": data.draw(st.floats(-40.0, 190.0)), "v_dc_v": data.draw(st.floats(200.0, 900.0)),
+    }
     f_hz = data.draw(st.floats(500.0, 20e3))
     found = mean_losses_w(SHIPPED[name], Modulation(modulation), switching_frequency_hz=f_hz, **case)
     want = averaged_losses_w(SHIPPED[name], modulation, f_hz=f_hz, **case)
@@ -144,10 +144,10 @@ def test_against_a_bridge_switched_by_a_triangle(name, modulation, data):
     """1511 triangles a period; the switching instants are solved for, nothing is averaged beforehand."""
     carriers = 1511
     m_max = 1.0 if modulation == "sine" else 2 / np.sqrt(3)
-    case = dict(
-        i_peak_a=data.draw(st.floats(5.0, 700.0)), mod_index=data.draw(st.floats(0.0, m_max)), phi_rad=data.draw(st.floats(-np.pi, np.pi)),
-        t_switch_c=data.draw(st.floats(-20.0, 180.0)), t_diode_c=data.draw(st.floats(-20.0, 180.0)), v_dc_v=data.draw(st.floats(300.0, 850.0)),
-    )
+    case = {
+        "i_peak_a": data.draw(st.floats(5.0, 700.0)), "mod_index": data.draw(st.floats(0.0, m_max)), "phi_rad": data.draw(st.floats(-np.pi, np.pi)),
+        "t_switch_c": data.draw(st.floats(-20.0, 180.0)), "t_diode_c": data.draw(st.floats(-20.0, 180.0)), "v_dc_v": data.draw(st.floats(300.0, 850.0)),
+    }
     found = mean_losses_w(SHIPPED[name], Modulation(modulation), switching_frequency_hz=carriers, **case)
     want = switched_losses_w(SHIPPED[name], modulation, carriers=carriers, **case)
     whole = {"switch": want["switch_conduction"], "diode": want["diode_conduction"]}
@@ -186,8 +186,8 @@ def test_one_current_at_many_modulation_indices():
 
 
 @pytest.mark.parametrize(("change", "word"), [
-    (dict(i=-1.0), "i_peak_a"), (dict(i=np.nan), "i_peak_a"), (dict(m=1.001), "mod_index"), (dict(m=-0.1), "mod_index"),
-    (dict(phi=np.inf), "phi_rad"), (dict(switching_frequency_hz=-1.0), "switching_frequency_hz"), (dict(t_switch_c=np.nan), "t_vj_c"),
+    ({"i": -1.0}, "i_peak_a"), ({"i": np.nan}, "i_peak_a"), ({"m": 1.001}, "mod_index"), ({"m": -0.1}, "mod_index"),
+    ({"phi": np.inf}, "phi_rad"), ({"switching_frequency_hz": -1.0}, "switching_frequency_hz"), ({"t_switch_c": np.nan}, "t_vj_c"),
 ])
 def test_bad_numbers_are_named(change, word):
     case = {"i": 100.0, "m": 0.9, "phi": 0.2, **change}

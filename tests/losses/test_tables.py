@@ -5,10 +5,11 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from device.factories import straight_line_data, straight_line_module
 from mission.device import load_module, module_from_dict
 from mission.errors import InputError
 from mission.losses import Modulation, build_tables, kernels, mean_losses_w, phase_reference
+
+from ..device.factories import straight_line_data, straight_line_module
 from .factories import curve_value, reference
 
 MODULES = {name: load_module(name) for name in ("heron-300", "kite-300")}
@@ -97,7 +98,7 @@ def test_mean_of_the_instants_is_the_period_mean(modulation, look_up):
 # Analytic: one phase at +I, two at -I/2, duty 0.5 (all voltage references near zero). Ratio to the mean over a turn: pi for
 # an offset alone, 4 for a slope alone, pi for a switching energy linear in current.
 @pytest.mark.parametrize(("change", "stall_w", "ratio"), [
-    ({}, 135.0, 3.51921), (dict(r_t_ohm=0.0), 0.9 * 150 / 2, np.pi), (dict(v_t0_v=1e-12), 6e-3 * 150**2 / 2, 4.0),
+    ({}, 135.0, 3.51921), ({"r_t_ohm": 0.0}, 0.9 * 150 / 2, np.pi), ({"v_t0_v": 1e-12}, 6e-3 * 150**2 / 2, 4.0),
 ])
 def test_standstill_against_rotation(change, stall_w, ratio, look_up):
     module = straight_line_module(**change)

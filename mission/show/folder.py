@@ -1,0 +1,87 @@
+"""The files of a result: each is written whole or not at all."""
+
+from __future__ import annotations
+
+import contextlib
+import os
+from pathlib import Path
+
+from ..cycles import CycleWriter
+from ..errors import InputError
+from ..history import CHIP_NAMES
+
+SIGNALS = CHIP_NAMES + tuple(f"case {c}" for c in CHIP_NAMES)
+
+
+class ResultFolder:
+    """A folder that takes result.json, ledger.csv, cycles.parquet, history.parquet, figures and report.html.
+
+    Parameters
+    ----------
+    path : path-like
+        Made if it is not there.
+
+    Raises
+    ------
+    InputError
+        The path is a file, or cannot be written.
+    """
+
+    def __init__(self, path):
+        self.path = Path(path)
+        try:
+            self.path.mkdir(parents=True, exist_ok=True)
+        except FileExistsError:
+            raise InputError("--out", f"'{path}', which is a file", "a folder") from None
+        except OSError as err:
+            raise InputError("--out", f"'{path}', which cannot be made ({err.strerror})", "a folder that can be written") from None
+        if not os.access(self.path, os.W_OK):
+            raise InputError("--out", f"'{path}', which cannot be written", "a folder that can be written")
+
+    @contextlib.contextmanager
+    def cycles(self, study):
+        """Context with a sink for counted cycles, which become cycles.parquet."""
+        with CycleWriter(self.path / "cycles.parquet", SIGNALS, study.profile.phases) as writer:
+            yield writer
+
+    def write(self, result) -> list[Path]:
+        """Write everything but the cycles; returns all paths."""
+        from .document import build_document
+        from .figures import all_figures
+        from .report import report_html
+        from .tables import ledger_frame
+
+        document = build_document(result)
+        written = [self._text("result.json", document.model_dump_json(indent=1) + "\n")]
+        written.append(self._text("ledger.csv", ledger_frame(result).to_csv(index=False, lineterminator="\n")))
+        if (self.path / "cycles.parquet").exists():
+            written.append(self.path / "cycles.parquet")
+        written.append(self._whole("history.parquet", lambda p: result.history.to_frame().to_parquet(p, index=False)))
+        figures = all_figures(result)
+        for name, figure in figures.items():
+            for ending in ("png", "svg"):
+                written.append(self._whole(f"{name}.{ending}", lambda p, f=figure, e=ending: f.savefig(p, format=e, dpi=150)))
+        written.append(self._text("report.html", report_html(result, figures, document.model_dump(mode="json"))))
+        return written
+
+    def _text(self, name, text):
+        return self._whole(name, lambda p: p.write_text(text, encoding="utf-8"))
+
+    def _whole(self, name, write):
+        path = self.path / name
+        part = path.with_name(path.name + ".part")
+        try:
+            write(part)
+            os.replace(part, path)
+        finally:
+            part.unlink(missing_ok=True)
+        return path
+
+
+def save_result(result, folder) -> list[Path]:
+    """Write a result, its cycles included if they were kept, into ``folder``; returns the paths."""
+    target = ResultFolder(folder)
+    if result.cycles is not None:
+        with target.cycles(result.study) as sink:
+            sink(result.cycles)
+    return target.write(result)

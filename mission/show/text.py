@@ -1,0 +1,76 @@
+"""Short tables for the terminal."""
+
+from __future__ import annotations
+
+
+def number(value: float, digits: int = 4) -> str:
+    """A number as people write it: no exponents where they can be avoided.
+
+    Examples
+    --------
+    >>> number(12345.678), number(0.000123), number(float("inf"))
+    ('12 350', '1.23e-04', 'without end')
+    """
+    if value != value:
+        return "not known"
+    if value in (float("inf"), float("-inf")):
+        return "without end"
+    if value == 0.0:
+        return "0"
+    size = abs(value)
+    if size < 1e-2 or size >= 1e9:
+        return f"{value:.{max(digits - 2, 0)}e}"
+    if size >= 1000.0:
+        from math import floor, log10
+
+        step = 10 ** max(floor(log10(size)) + 1 - digits, 0)
+        return f"{round(value / step) * step:,.0f}".replace(",", " ")
+    return f"{value:.{digits}g}"
+
+
+def result_text(result) -> str:
+    """Verdicts, the worst rows of the ledger and what to know about them."""
+    history, study = result.history, result.study
+    lines = [f"{study.name}", f"{study.module.name}; {study.profile.name}, {_span(history.duration_s)}; losses {number(history.energy_j.sum() / 3.6e6)} kWh a mission", ""]
+    for v in result.verdicts:
+        mark = "met   " if v.met else "MISSED"
+        lines.append(f"  {mark}  {v.what:<28} {number(v.value):>10} {v.unit:<6} limit {number(v.limit):>8}   {v.where}")
+    lines += ["", f"  {'failure mode':<28} {'worst chip':<11} {'life, years':>12} {'damage/mission':>15} {'outside range':>14}   most damage in"]
+    for mode in study.modes:
+        row = result.ledger.worst(mode.name)
+        phase, share = _most(row)
+        lines.append(f"  {mode.name:<28.28} {row.chip:<11} {number(row.life_years):>12} {row.damage_per_mission:>15.3e} {row.outside_share:>13.0%}   "
+                     + (f"{phase} ({share:.0%})" if phase else "-"))
+    if not study.modes:
+        lines.append("  no failure mode given: temperatures only")
+    warnings = result.ledger.warnings()
+    if warnings:
+        lines += ["", "  to know:"] + [f"  - {w}" for w in warnings]
+    lines += ["", "  An estimate; verify on the real device. High voltage, stored energy and hot surfaces: see the cautions in the report."]
+    return "\n".join(lines)
+
+
+def check_text(study) -> str:
+    """What was found usable."""
+    p = study.profile
+    lines = [f"{study.name}: usable",
+             f"  duty    {p.source}: {p.rows} rows, {_span(p.duration_s)}, steps {p.shortest_step_s:g} to {p.longest_step_s:g} s, {len(p.phases)} phases",
+             f"  module  {study.module.name} ({study.module.technology})"]
+    lines += [f"  life    {m.name}: {m.model.name}" for m in study.modes] or ["  life    no failure mode: temperatures only"]
+    lines += [f"  note    {n}" for n in (*study.module.notes, *p.notes)]
+    return "\n".join(lines)
+
+
+def _most(row):
+    if row.damage_per_mission <= 0.0:
+        return "", 0.0
+    phase = max(row.damage_by_phase, key=row.damage_by_phase.get)
+    return phase, row.damage_by_phase[phase] / row.damage_per_mission
+
+
+def _span(seconds: float) -> str:
+    if seconds >= 7200.0:
+        return f"{seconds / 3600.0:.4g} h"
+    if seconds >= 120.0:
+        return f"{seconds / 60.0:.4g} min"
+    return f"{seconds:.4g} s"
