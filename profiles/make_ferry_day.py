@@ -52,7 +52,7 @@ STREAM_NOISE_M_PER_S, STREAM_NOISE_TAU_S = 0.07, 15.0
 WIND_GUST_M_PER_S, WIND_GUST_TAU_S = 3.2, 25.0  # along the rope, about the slow wind of the day
 
 # --- ferry ----------------------------------------------------------------------------
-EMPTY_KG, FULL_LOAD_KG = 400e3, 110e3
+EMPTY_KG, FULL_LOAD_KG = 320e3, 90e3
 ADDED_MASS_SHARE = 0.08  # water that is accelerated with the hull
 DRAG_AREA_ALONG_M2 = 11.0  # drag coefficient times area, along the rope
 DRAG_AREA_ACROSS_M2 = 37.0
@@ -60,7 +60,7 @@ DRAG_AREA_WIND_M2 = 105.0
 DRAG_AREA_RAFT_M2 = 88.0  # drift timber caught on hull and rope
 ROPE_FRICTION_N = 2500.0  # rope bending over drum and sheaves
 GUIDE_FRICTION = 0.06  # sheave friction, of the sideways stream force
-GROUNDED_N, GROUNDED_PER_LOAD_N = 53.0e3, 12.0e3  # to break the hull off the slip: empty, and added at full load
+GROUNDED_N, GROUNDED_PER_LOAD_N = 41.0e3, 9.0e3  # to break the hull off the slip: empty, and added at full load
 GROUNDED_LENGTH_M = 0.40  # way on which the hull floats free
 
 # --- drive ----------------------------------------------------------------------------

@@ -125,7 +125,9 @@ def test_against_the_mean_over_the_period(name, modulation, data):
     m_max = 1.0 if modulation == "sine" else 2 / np.sqrt(3)
     case = {
         "i_peak_a": data.draw(st.floats(0.5, 1100.0)), "mod_index": data.draw(st.floats(0.0, m_max)), "phi_rad": data.draw(st.floats(-np.pi, np.pi)),
-        "t_switch_c": data.draw(st.floats(-40.0, 190.0)), "t_diode_c": data.draw(st.floats(-40.0, 190.0)), "v_dc_v": data.draw(st.floats(200.0, 900.0)),
+        "t_switch_c": data.draw(st.floats(-40.0, 190.0)),
+        "t_diode_c": data.draw(st.floats(-40.0, 190.0)),
+        "v_dc_v": data.draw(st.floats(200.0, 900.0)),
     }
     f_hz = data.draw(st.floats(500.0, 20e3))
     found = mean_losses_w(SHIPPED[name], Modulation(modulation), switching_frequency_hz=f_hz, **case)
@@ -146,7 +148,9 @@ def test_against_a_bridge_switched_by_a_triangle(name, modulation, data):
     m_max = 1.0 if modulation == "sine" else 2 / np.sqrt(3)
     case = {
         "i_peak_a": data.draw(st.floats(5.0, 700.0)), "mod_index": data.draw(st.floats(0.0, m_max)), "phi_rad": data.draw(st.floats(-np.pi, np.pi)),
-        "t_switch_c": data.draw(st.floats(-20.0, 180.0)), "t_diode_c": data.draw(st.floats(-20.0, 180.0)), "v_dc_v": data.draw(st.floats(300.0, 850.0)),
+        "t_switch_c": data.draw(st.floats(-20.0, 180.0)),
+        "t_diode_c": data.draw(st.floats(-20.0, 180.0)),
+        "v_dc_v": data.draw(st.floats(300.0, 850.0)),
     }
     found = mean_losses_w(SHIPPED[name], Modulation(modulation), switching_frequency_hz=carriers, **case)
     want = switched_losses_w(SHIPPED[name], modulation, carriers=carriers, **case)

@@ -150,7 +150,7 @@ def test_half_sine_power(f_hz, swing_k, max_k, min_k, reduced):
     assert [np.ptp(rise), rise.max(), rise.min()] == pytest.approx([swing_k, max_k, min_k], rel=1e-3, abs=0)
 
 
-@settings(derandomize=True, max_examples=40, deadline=None)
+@settings(derandomize=True, max_examples=25, deadline=None)
 @given(st.lists(st.tuples(st.floats(0.0, 500.0), st.floats(1e-4, 5.0)), min_size=1, max_size=6), st.floats(0.05, 0.95))
 def test_linear_and_unchanged_by_splitting_a_step(steps, share):
     full = single(foster_to_cauer(FOUR))

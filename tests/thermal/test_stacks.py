@@ -172,7 +172,8 @@ def test_own_materials_are_put_over_the_shipped_ones(tmp_path):
 
 
 def test_module_with_layers_has_the_resistances_of_its_layers():
-    layers = [{"material": "silicon-hot", "thickness_mm": 0.12, "width_mm": 17.0, "length_mm": 17.0}, {"material": "solder-snag", "thickness_mm": 0.1},
+    layers = [{"material": "silicon-hot", "thickness_mm": 0.12, "width_mm": 17.0, "length_mm": 17.0},
+              {"material": "solder-snag", "thickness_mm": 0.1},
               {"material": "copper", "thickness_mm": 3.0, "spread_deg": 45.0}]
     data = straight_line_data()
     for side in ("switch", "diode"):
