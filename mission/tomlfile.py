@@ -9,9 +9,10 @@ from __future__ import annotations
 
 import tomllib
 from pathlib import Path
-from typing import Any, TypeVar
+from typing import Any, Literal, TypeVar, get_origin
 
 from pydantic import BaseModel, ConfigDict, ValidationError
+from pydantic_core import to_json
 
 from .errors import InputError, near_match
 
@@ -34,8 +35,12 @@ def read_toml(path) -> dict[str, Any]:
         there = [p.name for p in folder.glob("*.toml")] if folder.is_dir() else []
         hint = near_match(path.name, there) or "check the name and the folder (paths in a study count from the study file)"
         raise InputError(str(path), "no such file", "a TOML file that can be read", hint) from None
-    except (IsADirectoryError, PermissionError, OSError) as err:
+    except IsADirectoryError:
+        raise InputError(str(path), "a folder", "a TOML file", "name the file in it") from None
+    except OSError as err:
         raise InputError(str(path), f"a file that cannot be read ({err.strerror})", "a TOML file that can be read") from None
+    except ValueError:  # a zero byte in the path
+        raise InputError(repr(str(path)), "a path that no file can have", "a TOML file that can be read") from None
     if not raw.strip():
         raise InputError(str(path), "an empty file", "a TOML file with at least one section", "start from a demo file in profiles/")
     try:
@@ -45,8 +50,10 @@ def read_toml(path) -> dict[str, Any]:
         raise InputError(f"{path}, line {line}", f"byte 0x{raw[err.start]:02x}, which is not UTF-8", "UTF-8 text", "save the file as UTF-8") from None
     try:
         return tomllib.loads(text)
-    except tomllib.TOMLDecodeError as err:
+    except ValueError as err:  # TOMLDecodeError, or a number with more digits than Python reads
         raise InputError(str(path), f"text that is not TOML ({err})", "valid TOML", "correct the line named; strings need quotes, decimals a point") from None
+    except RecursionError:
+        raise InputError(str(path), "brackets nested beyond measure", "valid TOML", "check the brackets") from None
 
 
 def read_model(path, model: type[M]) -> M:
@@ -57,13 +64,16 @@ def read_model(path, model: type[M]) -> M:
 def parse_model(data: dict[str, Any], model: type[M], where: str) -> M:
     """Check a plain dict against ``model``.
 
+    Numbers must be numbers: a quoted one, or true for 1, is refused.
+
     Raises
     ------
     InputError
         For the first problem; the count of further ones is added.
     """
     try:
-        return model.model_validate(data)
+        # strict by way of JSON: no number from text, yet lists for tuples and words for enums
+        return model.model_validate_json(to_json(data, inf_nan_mode="constants"), strict=True)
     except ValidationError as err:
         raise _translate(err, model, data, where) from None
 
@@ -73,7 +83,7 @@ def _translate(err: ValidationError, model, data, where: str) -> InputError:
     # An unknown key is the likeliest cause of a missing one: report it first.
     problems.sort(key=lambda p: 0 if p["type"] == "extra_forbidden" else 1)
     first = problems[0]
-    field = _field_name(first["loc"])
+    field = _field_name(first, data)
     place = f"{where}, field {field}" if field else where
     found, allowed, advice = _wording(first, model, data)
     if len(problems) > 1:
@@ -82,25 +92,39 @@ def _translate(err: ValidationError, model, data, where: str) -> InputError:
     return InputError(place, found, allowed, advice)
 
 
-def _field_name(loc) -> str:
-    out = ""
-    for part in loc:
+def _field_name(problem, data) -> str:
+    """The field as the file spells it: tags of unions, which pydantic puts in between, are no part of it."""
+    loc, ctx = problem["loc"], problem.get("ctx", {})
+    out, here = "", data
+    for number, part in enumerate(loc):
         if isinstance(part, int):
             out += f"[{part + 1}]"
-        elif "function-" in part or part.startswith("constrained-"):
-            continue
-        else:
-            out += ("." if out else "") + part
+            here = here[part] if isinstance(here, (list, tuple)) and part < len(here) else None
+        elif (isinstance(here, dict) and part in here) or (number == len(loc) - 1 and problem["type"] == "missing"):
+            out = _joined(out, part)
+            here = here.get(part) if isinstance(here, dict) else None
+    if problem["type"] in ("union_tag_invalid", "union_tag_not_found"):
+        out = _joined(out, str(ctx.get("discriminator", "")).strip("'"))
+    cause = ctx.get("error")
+    if isinstance(cause, InputError) and cause.where and (not loc or cause.where != loc[-1]):
+        out = _joined(out, cause.where)
     return out
+
+
+def _joined(path, part) -> str:
+    return f"{path}.{part}" if path and part else path or part
 
 
 def _wording(problem, model, data) -> tuple[str, str, str]:
     kind, ctx, value = problem["type"], problem.get("ctx", {}), problem.get("input")
     shown = _short(value)
     if kind == "extra_forbidden":
-        names = _known_keys(model, data, problem["loc"])
+        key = problem["loc"][-1]
+        names, elsewhere = _known_keys(model, problem["loc"])
         allowed = "one of " + ", ".join(sorted(names)) if names else "only the documented keys"
-        return f"the unknown key '{problem['loc'][-1]}'", allowed, near_match(problem["loc"][-1], names) or "remove it"
+        if key in elsewhere:
+            return f"the key '{key}', which belongs to {elsewhere[key]}", allowed, "remove it, or choose the other kind"
+        return f"the unknown key '{key}'", allowed, near_match(key, names) or "remove it"
     if kind == "missing":
         return "nothing", "this key is required", "add it"
     if kind in ("greater_than", "greater_than_equal", "less_than", "less_than_equal"):
@@ -109,6 +133,8 @@ def _wording(problem, model, data) -> tuple[str, str, str]:
         return shown, f"a number {sign} {limit:g}" if isinstance(limit, (int, float)) else f"{sign} {limit}", "correct the value or its unit"
     if kind == "finite_number":
         return shown, "a finite number", "correct the value"
+    if kind in ("int_type", "int_from_float") and isinstance(value, float):
+        return shown, "a whole number", "write it without a decimal point"
     if kind in ("float_type", "float_parsing", "int_type", "int_parsing", "int_from_float"):
         return shown, "a whole number" if kind.startswith("int") else "a number", "write it without quotes or unit; the unit is in the key's name"
     if kind in ("literal_error", "enum"):
@@ -127,6 +153,10 @@ def _wording(problem, model, data) -> tuple[str, str, str]:
         return shown, str(cause or problem["msg"]), ""
     if kind == "string_type":
         return shown, "a text in quotes", ""
+    if kind == "string_too_short":
+        return "an empty text" if value == "" else shown, f"at least {ctx.get('min_length', 1)} character", ""
+    if kind == "string_too_long":
+        return shown, f"at most {ctx.get('max_length')} character{'s' if ctx.get('max_length') != 1 else ''}", ""
     if kind in ("too_short", "too_long"):
         return shown, problem["msg"][0].lower() + problem["msg"][1:], ""
     if kind in ("model_type", "model_attributes_type", "dict_type"):
@@ -145,35 +175,42 @@ def _short(value) -> str:
     return f"value {text if len(text) <= 60 else text[:57] + '...'}"
 
 
-def _known_keys(model, data, loc) -> set[str]:
-    """Names allowed beside the unknown key, walking the model along the data."""
-    current = {model}
+def _known_keys(model, loc) -> tuple[set[str], dict[str, str]]:
+    """Names allowed beside the unknown key, and names of the other kinds of the same section.
+
+    Walks the models along the place of the problem. A tag in it, which pydantic adds where
+    a section may be of several kinds, picks the kind.
+    """
+    current, others = {model}, set()
     for part in loc[:-1]:
+        if isinstance(part, int):
+            continue
         following = set()
         for m in current:
             following |= _children(m, part)
-        current = following or current
+        if following:
+            current, others = following, set()
+        else:
+            tagged = {m for m in current if _tag(m, part)}
+            if tagged:
+                current, others = tagged, current - tagged
     names: set[str] = set()
     for m in current:
-        if isinstance(m, type) and issubclass(m, BaseModel):
-            names |= {f.alias or n for n, f in m.model_fields.items()}
-    return names
+        names |= _names(m)
+    elsewhere = {n: _tag(m) for m in others for n in _names(m) - names}
+    return names, elsewhere
+
+
+def _names(model) -> set[str]:
+    return {f.alias or n for n, f in model.model_fields.items()}
 
 
 def _children(model, part) -> set:
-    if not (isinstance(model, type) and issubclass(model, BaseModel)):
-        return set()
-    if isinstance(part, int):
-        return {model}
     out = set()
     for name, field in model.model_fields.items():
         if part in (name, field.alias):
             out |= _models_in(field.annotation)
-    if not out:
-        # a tag of a discriminated union stands in the path: stay where we are
-        return {model}
-    tagged = {m for m in out if part in _tags(m)}
-    return tagged or out
+    return out
 
 
 def _models_in(annotation) -> set:
@@ -185,6 +222,10 @@ def _models_in(annotation) -> set:
     return out
 
 
-def _tags(model) -> set[str]:
-    field = model.model_fields.get("kind")
-    return set(getattr(field.annotation, "__args__", ())) if field else set()
+def _tag(model, value=None) -> str:
+    """The field and word that tell this kind of section from others, e.g. ``kind = 'fixed'``; empty if there is none or not ``value``."""
+    for name, field in model.model_fields.items():
+        words = getattr(field.annotation, "__args__", ()) if get_origin(field.annotation) is Literal else ()
+        if words and (value in words if value is not None else isinstance(words[0], str)):
+            return f"{name} = '{value if value is not None else words[0]}'"
+    return ""

@@ -18,6 +18,7 @@ import numpy as np
 
 from ..checks import require_range
 from ..device import PowerModule, on_state_voltage_v, switching_energy_j
+from ..errors import RangeError
 from .modulation import Modulation
 
 _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(24)
@@ -39,7 +40,7 @@ def half_wave_angles(i_peak_a, knots_a):
     """
     i = np.asarray(i_peak_a, float)[:, None]
     knots = np.asarray(knots_a, float)[None, :]
-    with np.errstate(divide="ignore", invalid="ignore"):
+    with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
         ratio = np.where(i > 0.0, knots / np.where(i > 0.0, i, 1.0), 1.0)
     borders = np.arcsin(np.clip(ratio, 0.0, 1.0))
     # two more borders keep the high harmonics resolved where the curve has no kink
@@ -128,8 +129,14 @@ def mean_losses_w(module: PowerModule, modulation: Modulation, *, i_peak_a, mod_
     the march adds what the ripple of the temperature changes.
     """
     i = require_range("i_peak_a", np.atleast_1d(i_peak_a), low=0.0, unit="A")
-    m = np.broadcast_to(require_range("mod_index", mod_index, low=0.0, high=modulation.mod_index_max * (1 + 1e-9)), i.shape)
-    phi = np.broadcast_to(require_range("phi_rad", phi_rad), i.shape)
+    m = require_range("mod_index", mod_index, low=0.0, high=modulation.mod_index_max * (1 + 1e-9))
+    phi = require_range("phi_rad", phi_rad)
+    require_range("v_dc_v", v_dc_v, low=0.0, low_open=True, unit="V")
+    try:
+        i, m, phi = np.broadcast_arrays(i, m, phi)
+    except ValueError:
+        raise RangeError("i_peak_a, mod_index, phi_rad", f"shapes {np.shape(i_peak_a)}, {np.shape(mod_index)}, {np.shape(phi_rad)}",
+                         "equal lengths, or single numbers") from None
     series = modulation.harmonics()
     orders = list(series)
     turn = np.stack([m * amount * np.cos(h * phi) for h, amount in series.items()], axis=1)

@@ -105,9 +105,11 @@ def build_tables(module: PowerModule, modulation: Modulation) -> LossTables:
         for which, curves in enumerate(energies):
             energy_mean[which, :, k] = mean_energy_j(curves, current, t)
             energy[which, :, k] = switching_energy_j(curves, current, t)
-    for name, table in (("on-state voltage", voltage), ("switching energy", energy)):
+    places = (*module.on_state_curves(), *module.energy_curves())
+    for place, table in zip(places, (*voltage, *energy)):
         if (table < 0.0).any():
-            raise InputError(f"module '{module.name}'", f"a negative {name} where curves are extended in a straight line",
+            j, k = np.argwhere(table < 0.0)[0]
+            raise InputError(f"module '{module.name}', {place}", f"a value below zero at {current[j]:.4g} A and {knots[k]:g} degC, where its curves are extended in a straight line",
                              "curves whose extension stays positive", "give all curves at the same temperatures")
     return LossTables(
         knot_c=knots, i_step_a=float(current[1]), conduction_w=conduction, energy_mean_j=energy_mean,

@@ -102,7 +102,9 @@ class NetworkEntry(_Part):
     shared_modes: int
     relative_bound: float = Field(description="error bound of junction rises over the steady rise, all chips heated alike")
     error_bound_k: float = Field(description="the same bound [K] if every chip had its highest mean loss of the mission all the time")
-    coolant_bound: float = Field(description="largest error per kelvin of a coolant step")
+    coolant_bound: float = Field(description="largest junction error per kelvin of a coolant step")
+    case_bound: float = Field(description="largest steady error of a case point over its rise")
+    case_coolant_bound: float = Field(description="largest case-point error per kelvin of a coolant step")
     r_th_k_per_w: list[list[float]] = Field(description="steady self and mutual resistances, junction over coolant")
 
 
@@ -184,6 +186,9 @@ def rests_on(result) -> list[str]:
         out.append("heat: data-sheet branches turned into ladders, so that case and sink take the heat that leaves the chips, not the heat that enters")
     out.append(f"heat: one sink temperature for all chips; {net.n_full} modes reduced to {net.lam_local_per_s.shape[0]} local ones a chip and "
                f"{net.lam_shared_per_s.size} shared, error of a junction at most {net.relative_bound:.2%} of its rise")
+    if net.case_coolant_bound > 0.02 and any(m.acts_on == "case" for m in study.modes):
+        out.append(f"heat: with a sink that stores no heat, case points follow a coolant step with an error of up to {net.case_coolant_bound:.0%} of the step; "
+                   "give the sink's heat capacity if the coolant jumps")
     if study.spec.march.start == "repeat":
         out.append(f"the mission repeats: start and end temperatures agree within {result.closes_within_k:.2g} K after {result.passes} pass"
                    f"{'es' if result.passes > 1 else ''}")
@@ -240,6 +245,7 @@ def build_document(result) -> ResultDocument:
         network=NetworkEntry(
             modes_full=net.n_full, modes_kept=net.n_modes, local_modes_per_chip=net.lam_local_per_s.shape[0], shared_modes=net.lam_shared_per_s.size,
             relative_bound=net.relative_bound, error_bound_k=float(net.error_bound_k(peak_loss).max()), coolant_bound=net.coolant_bound,
+            case_bound=net.case_bound, case_coolant_bound=net.case_coolant_bound,
             r_th_k_per_w=net.r_th_k_per_w().tolist()),
         gate_power_per_switch_w=float(gate_drive_power_w(gate.charge_c, gate.v_on_v, gate.v_off_v, fsw)),
         gate_peak_current_a=float(gate_peak_current_a(gate.v_on_v, gate.v_off_v, gate.r_internal_ohm, min(gate.r_on_ohm, gate.r_off_ohm))),

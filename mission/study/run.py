@@ -132,7 +132,7 @@ def run(study: Study, *, progress: Progress | None = None, keep_cycles: bool = T
     begin = time.perf_counter()
     spec, profile = study.spec, study.profile
     tables = build_tables(study.module, spec.inverter.modulation)
-    network = reduce_to_modes(inverter_network(study.module, spec.cooling), relative_tolerance=spec.march.network_tolerance)
+    network = reduce_to_modes(inverter_network(study.module, spec.cooling, materials=study.materials()), relative_tolerance=spec.march.network_tolerance)
     settings = MarchSettings(f_slow_hz=spec.march.slow_below_hz, steps_per_period=spec.march.steps_per_period)
     states = None
     known = None

@@ -14,17 +14,18 @@ from ..errors import InputError, RangeError
 from ..lifetime import FailureMode, resolve_modes
 from ..losses import Modulation
 from ..machine import MachineSpec
-from ..thermal import CoolingSpec
+from ..thermal import CoolingSpec, load_materials
 from ..tomlfile import FileModel, parse_model, read_toml
 
 _Positive = Annotated[float, Field(gt=0)]
 
 
 class ModuleRef(FileModel):
-    """Which module: a shipped one by name, or a file of the user's."""
+    """Which module: a shipped one by name, or a file of the user's; ``materials``: a file of further layer materials."""
 
     name: str | None = None
     file: str | None = None
+    materials: str | None = None
 
     @model_validator(mode="after")
     def _one(self):
@@ -107,7 +108,13 @@ class Study:
 
     @property
     def name(self) -> str:
+        """Name of the study."""
         return self.spec.name
+
+    def materials(self) -> dict:
+        """Materials for layer stacks: the shipped ones, and the study's own over them."""
+        own = self.spec.module.materials
+        return load_materials(None if own is None else self.folder / own)
 
     def with_profile(self, profile: MissionProfile) -> "Study":
         """The same study on another duty."""
@@ -159,6 +166,8 @@ def _assemble(spec: StudySpec, source: str, folder: Path, profile=None) -> Study
         raise err if spec.module.file else err.at(f"{source}, field module.name") from None
     study = Study(spec, module, profile if profile is not None else read_profile(spec.duty, folder), (), source, folder)
     _check_together(study)
+    if spec.module.materials is not None:
+        load_materials(folder / spec.module.materials)
     modes = resolve_modes(spec.lifetime.failure_mode, module, folder=folder, where=source)
     return replace(study, modes=modes)
 

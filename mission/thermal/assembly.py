@@ -12,6 +12,7 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
+from ..checks import require_range
 from ..errors import InputError
 from .networks import CauerLadder
 
@@ -35,10 +36,12 @@ class NetworkBuilder:
 
     def resistance(self, a: int, b: int, r_k_per_w: float) -> None:
         """Join two nodes."""
+        require_range("r_k_per_w", r_k_per_w, low=0.0, low_open=True, unit="K/W")
         self._edges.append((a, b, 1.0 / r_k_per_w))
 
     def to_coolant(self, a: int, r_k_per_w: float) -> None:
         """Join a node to the coolant."""
+        require_range("r_k_per_w", r_k_per_w, low=0.0, low_open=True, unit="K/W")
         self._to_coolant.append((a, 1.0 / r_k_per_w))
 
     def ladder(self, ladder: CauerLadder, end: int | None) -> int:
@@ -52,6 +55,20 @@ class NetworkBuilder:
             else:
                 self.resistance(nodes[k], end, r)
         return nodes[0]
+
+    def _reaches_coolant(self) -> bool:
+        reached = {a for a, _ in self._to_coolant}
+        waiting = list(reached)
+        beside: dict[int, list[int]] = {}
+        for a, b, _ in self._edges:
+            beside.setdefault(a, []).append(b)
+            beside.setdefault(b, []).append(a)
+        while waiting:
+            for other in beside.get(waiting.pop(), []):
+                if other not in reached:
+                    reached.add(other)
+                    waiting.append(other)
+        return len(reached) == len(self._c)
 
     def build(self, heated: list[int], watched: list[int]) -> "FullNetwork":
         """Assemble with heat entering at ``heated`` and further outputs ``watched``."""
@@ -69,6 +86,8 @@ class NetworkBuilder:
         bare = np.flatnonzero(c == 0.0)
         if any(c[h] == 0.0 for h in heated):
             raise InputError("thermal network", "a heated point without heat capacity", "every chip has a capacity")
+        if not self._reaches_coolant():
+            raise InputError("thermal network", "a node without a way to the coolant", "a path of resistances from every node to the coolant", "join it")
         # points without mass: y_bare = recover @ y_mass, exactly
         recover = np.zeros((n, mass.size))
         recover[mass, np.arange(mass.size)] = 1.0

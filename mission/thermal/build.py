@@ -8,14 +8,15 @@ from ..device import PowerModule
 from .assembly import FullNetwork, NetworkBuilder
 from .cooling import sink_ladder
 from .layers import StackLadder, stack_ladder
-from .networks import CauerLadder, FosterNetwork, foster_to_cauer
+from .networks import CauerLadder, FosterNetwork, foster_to_cauer, merge_close_branches
 
 
 def chip_ladder(thermal, materials, where: str) -> StackLadder:
     """Ladder from one switch or diode to its reference point, from data-sheet branches or from layers."""
     if thermal.layer:
         return stack_ladder(thermal.layer, materials, cells=thermal.cells_per_layer, where=f"{where}.layer")
-    ladder = foster_to_cauer(FosterNetwork(np.array(thermal.r_k_per_w), np.array(thermal.tau_s)))
+    branches = FosterNetwork(np.array(thermal.r_k_per_w), np.array(thermal.tau_s))
+    ladder = foster_to_cauer(merge_close_branches(branches))
     return StackLadder(ladder, 0.0, ())
 
 

@@ -9,13 +9,14 @@ from pydantic import Field, model_validator
 
 from ..errors import InputError, RangeError
 from ..tomlfile import FileModel
-from .networks import CauerLadder, FosterNetwork, foster_to_cauer
+from .networks import CauerLadder, FosterNetwork, foster_to_cauer, merge_close_branches
 
-_Positive = Annotated[float, Field(gt=0)]
+# A number in quotes or a true/false is a slip, not a number.
+_Positive = Annotated[float, Field(strict=True, gt=0)]
 
 
 class _Coolant(FileModel):
-    coolant_c: float | None = Field(default=None, ge=-60, le=150)
+    coolant_c: Annotated[float, Field(strict=True, ge=-60, le=150)] | None = None
 
 
 class FixedCooling(_Coolant):
@@ -50,5 +51,5 @@ def sink_ladder(spec) -> CauerLadder | float:
             return spec.r_th_k_per_w
         return CauerLadder(np.array([spec.r_th_k_per_w]), np.array([spec.heat_capacity_j_per_k]))
     if isinstance(spec, FosterCooling):
-        return foster_to_cauer(FosterNetwork(np.array(spec.r_k_per_w), np.array(spec.tau_s)))
+        return foster_to_cauer(merge_close_branches(FosterNetwork(np.array(spec.r_k_per_w), np.array(spec.tau_s))))
     raise InputError("cooling.kind", f"{spec!r}", "fixed or foster")

@@ -18,6 +18,8 @@ from ..errors import InputError, near_match
 from ..tomlfile import FileModel, read_model
 from .networks import CauerLadder
 
+_NODES, _WEIGHTS = np.polynomial.legendre.leggauss(16)
+
 
 class Material(FileModel):
     """Thermal data of one material."""
@@ -71,11 +73,9 @@ def stack_ladder(layers, materials: dict[str, Material], *, cells: int = 6, wher
     Parameters
     ----------
     layers : sequence
-        Objects with ``material``, ``thickness_mm``, ``spread_deg`` and, on the first
-        one at least, ``width_mm`` and ``length_mm`` (the heated face). A later layer
-        without a footprint starts with the width that the heat has reached; one with
-        a footprint starts there again, but never narrower than what is reached
-        unless its own size limits it.
+        Objects with ``material``, ``thickness_mm``, ``spread_deg``, and ``width_mm`` and
+        ``length_mm``: on the first one the heated face, on a later one the size of that layer,
+        which the widening heat cannot pass. A later layer without a size has room enough.
     materials : dict of Material
     cells : int
         Cells per layer. Six keep the error of a transient below about one percent
@@ -105,39 +105,55 @@ def stack_ladder(layers, materials: dict[str, Material], *, cells: int = 6, wher
         if material is None:
             raise InputError(f"{where}[{number}].material", f"'{layer.material}'", "one of " + ", ".join(sorted(materials)),
                              near_match(layer.material, materials))
+        limit = (np.inf, np.inf)
         if layer.width_mm is not None:
-            width, length = layer.width_mm * 1e-3, layer.length_mm * 1e-3
+            own = (layer.width_mm * 1e-3, layer.length_mm * 1e-3)
+            if width is None:
+                width, length = own
+            else:
+                limit = own
+                width, length = min(width, own[0]), min(length, own[1])
         if width is None:
             raise InputError(f"{where}[{number}]", "no footprint", "width_mm and length_mm on the first layer (the heated face)")
         thick = layer.thickness_mm * 1e-3
         widen = 2.0 * np.tan(np.radians(layer.spread_deg))
         edges = np.linspace(0.0, thick, cells + 1)
-        w, h = width + widen * edges, length + widen * edges
-        r_cell = _slab_resistance(w, h, edges, material.k_w_per_m_k)
-        # Simpson's rule is exact: the area is a parabola of depth
-        middle = (w[1:] + w[:-1]) * (h[1:] + h[:-1]) / 4.0
-        volume = np.diff(edges) * (w[1:] * h[1:] + 4.0 * middle + w[:-1] * h[:-1]) / 6.0
-        c_cell = volume * material.rho_kg_per_m3 * material.c_j_per_kg_k
-        for r, c in zip(r_cell.tolist(), c_cell.tolist()):
+        shape = _Spread(width, length, widen, *limit)
+        for top, bottom in zip(edges[:-1].tolist(), edges[1:].tolist()):
+            r, volume = shape.cell(top, bottom)
+            c = volume * material.rho_kg_per_m3 * material.c_j_per_kg_k
             c_border[-1] += 0.5 * c
-            r_out.append(r)
+            r_out.append(r / material.k_w_per_m_k)
             c_border.append(0.5 * c)
-        shares.append(float(r_cell.sum()))
-        width, length = w[-1], h[-1]
+        shares.append(sum(r_out[-cells:]))
+        width, length = shape.at(thick)
     return StackLadder(CauerLadder(np.array(r_out), np.array(c_border[:-1])), c_border[-1], tuple(shares))
 
 
-def _slab_resistance(w, h, z, k):
-    """Integral of dz/(k w h) with w and h straight lines of depth, per cell."""
-    dz = np.diff(z)
-    w0, w1, h0, h1 = w[:-1], w[1:], h[:-1], h[1:]
-    widen = (w1 - w0) / dz
-    # w h1 - w1 h0 changes sign with the aspect ratio; a square has its own limit
-    cross = w1 * h0 - w0 * h1
-    scale = np.maximum(w0 * h0, 1e-300)
-    straight = np.abs(widen) * dz < 1e-9 * w0
-    square = np.abs(cross) < 1e-9 * scale
-    with np.errstate(divide="ignore", invalid="ignore"):
-        oblong = dz * np.log((w1 * h0) / (w0 * h1)) / cross
-    exact_square = dz / (w0 * w1) * (w0 / h0)
-    return np.where(straight, dz / (w0 * h0), np.where(square, exact_square, oblong)) / k
+@dataclass(frozen=True)
+class _Spread:
+    """Cross-section that heat takes up in a layer: widening from the upper face, no wider than the layer."""
+
+    width: float
+    length: float
+    widen: float
+    width_limit: float
+    length_limit: float
+
+    def at(self, z):
+        """Width and length at depth ``z`` (float or array) [m]."""
+        return np.minimum(self.width + self.widen * z, self.width_limit), np.minimum(self.length + self.widen * z, self.length_limit)
+
+    def cell(self, top: float, bottom: float) -> tuple[float, float]:
+        """Integral of dz/(width length) [1/m] and volume [m3] between two depths."""
+        borders = [top, bottom]
+        if self.widen > 0.0:
+            # where a side reaches the layer's edge the integrand has a kink
+            borders += [z for z in ((self.width_limit - self.width) / self.widen, (self.length_limit - self.length) / self.widen) if top < z < bottom]
+        borders.sort()
+        r = volume = 0.0
+        for a, b in zip(borders[:-1], borders[1:]):
+            w, h = self.at(0.5 * (a + b) + 0.5 * (b - a) * _NODES)
+            r += 0.5 * (b - a) * float((_WEIGHTS / (w * h)).sum())
+            volume += 0.5 * (b - a) * float((_WEIGHTS * w * h).sum())
+        return r, volume

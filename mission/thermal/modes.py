@@ -19,6 +19,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from ..errors import InputError
 from .assembly import FullNetwork
 
 
@@ -44,6 +45,11 @@ class ReducedNetwork:
         Largest bound over the matching steady rise, all chips heated alike.
     coolant_bound : float
         Largest error of a junction per kelvin of a coolant step.
+    case_bound : float
+        Largest steady error of a case point over its rise, all chips heated alike.
+    case_coolant_bound : float
+        Largest error of a case point per kelvin of a coolant step; it is largest where a sink
+        without heat capacity lets the coolant through at once.
     n_full : int
         Number of modes before reduction.
     """
@@ -60,6 +66,8 @@ class ReducedNetwork:
     bound_k_per_w: np.ndarray
     relative_bound: float
     coolant_bound: float
+    case_bound: float
+    case_coolant_bound: float
     n_full: int
 
     @property
@@ -93,7 +101,7 @@ def unreduced(full: FullNetwork) -> ReducedNetwork:
     empty = np.zeros((0, n))
     return ReducedNetwork(
         empty, empty, empty, lam, junction.T.copy(), junction, case, coolant, empty,
-        np.zeros((n, n)), 0.0, 0.0, lam.size,
+        np.zeros((n, n)), 0.0, 0.0, 0.0, 0.0, lam.size,
     )
 
 
@@ -104,7 +112,8 @@ def reduce_to_modes(full: FullNetwork, *, relative_tolerance: float = 1e-3) -> R
     ----------
     full : FullNetwork
     relative_tolerance : float
-        Wanted bound, as a share of the steady rise with all chips heated alike.
+        Wanted bound, as a share of the steady rise with all chips heated alike. Per kelvin
+        of a coolant step five times as much is allowed, because a coolant changes slowly.
 
     Returns
     -------
@@ -113,6 +122,9 @@ def reduce_to_modes(full: FullNetwork, *, relative_tolerance: float = 1e-3) -> R
         does, the most accurate one. ``relative_bound`` says what was reached.
     """
     lam, junction, case, coolant = full.modes()
+    if lam[0] <= 1e-12 * lam[-1]:
+        raise InputError("thermal network", f"a mode that never settles ({lam[0]:.3g} 1/s beside {lam[-1]:.3g} 1/s)",
+                         "time constants within twelve decades", "check resistances and heat capacities for wrong units")
     best = None
     for gap in (1.1, 1.02, 1.002, 1.0001):
         if gap < 1.02 and _rank(best, relative_tolerance)[0] == 0:
@@ -177,16 +189,18 @@ def _reduce(lam, junction, case, coolant, gap, tolerance, coupled):
     decay_s = np.exp(-np.outer(time, lam_s))
     lam_l, rho, rho_case = _local_modes(lam, junction, case, lam_s, left, right, time, tolerance * row_scale)
 
-    g, g_local, coolant_error = _coolant_weights(ends, coolant, decay_full, decay_s, left, lam_l, rho, time)
+    g, g_local, coolant_error, case_coolant_error = _coolant_weights(ends, coolant, decay_full, decay_s, left, lam_l, rho, rho_case, time)
+    case_error = _case_steady_error(lam, junction, case, lam_l, rho_case, lam_s, left[n:], right)
     bound = _bound(lam, junction, lam_l, rho, lam_s, left[:n], right)
     relative = float((bound.sum(axis=1) / row_scale[:n]).max())
     return ReducedNetwork(
-        lam_l, rho, rho_case, lam_s, right, left[:n].copy(), left[n:].copy(), g, g_local, bound, relative, float(coolant_error), n_full,
+        lam_l, rho, rho_case, lam_s, right, left[:n].copy(), left[n:].copy(), g, g_local, bound, relative, float(coolant_error),
+        float(case_error), float(case_coolant_error), n_full,
     )
 
 
-def _coolant_weights(ends, coolant, decay_full, decay_s, left, lam_l, rho, time):
-    """What a coolant step of 1 K takes off the shared and the local modes, and the largest junction error it leaves.
+def _coolant_weights(ends, coolant, decay_full, decay_s, left, lam_l, rho, rho_case, time):
+    """What a coolant step of 1 K takes off the shared and the local modes, and the largest junction and case errors it leaves.
 
     Together the modes must carry "everything at 1 K over the coolant" and let it decay.
     """
@@ -206,7 +220,18 @@ def _coolant_weights(ends, coolant, decay_full, decay_s, left, lam_l, rho, time)
         decay = np.exp(-np.outer(time, lam_l[own, i]))
         g_local[own, i] = np.linalg.lstsq(np.vstack([decay, np.full(own.sum(), heavy)]), np.append(rest[:, i], heavy * start[i]), rcond=1e-8)[0]
         rest[:, i] -= decay @ g_local[own, i]
-    return g, g_local, np.abs(rest).max()
+    case_rest = want[:, n:] - decay_s @ (left[n:] * g).T
+    for i in range(n):
+        own = rho[:, i] != 0.0
+        case_rest[:, i] -= np.exp(-np.outer(time, lam_l[own, i])) @ (g_local[own, i] * rho_case[own, i] / rho[own, i])
+    return g, g_local, np.abs(rest).max(), np.abs(case_rest).max()
+
+
+def _case_steady_error(lam, junction, case, lam_l, rho_case, lam_s, c_s, b_s):
+    """Largest steady error of a case point over its rise, all chips heated alike."""
+    steady = (case / lam) @ junction.T
+    reduced = (c_s / lam_s) @ b_s + np.diag((rho_case / lam_l).sum(axis=0))
+    return (np.abs(reduced - steady).sum(axis=1) / steady.sum(axis=1)).max()
 
 
 def _coupling_directions(dc, n, allowed):

@@ -76,6 +76,20 @@ class CauerLadder:
         object.__setattr__(self, "c_j_per_k", c)
 
 
+def merge_close_branches(foster: FosterNetwork, ratio: float = 1.02) -> FosterNetwork:
+    """Join branches whose time constants differ by less than ``ratio``.
+
+    Such branches are one branch in all but name: no measurement tells them apart, while
+    the ladder that tells them apart has stages of absurd size. Resistances add up; the
+    joint time constant is their weighted mean.
+    """
+    order = np.argsort(foster.tau_s)
+    r, tau = foster.r_k_per_w[order], foster.tau_s[order]
+    groups = np.split(np.arange(tau.size), np.flatnonzero(tau[1:] > ratio * tau[:-1]) + 1)
+    r_out = np.array([r[g].sum() for g in groups])
+    return FosterNetwork(r_out, np.array([(r[g] * tau[g]).sum() for g in groups]) / r_out)
+
+
 def foster_to_cauer(foster: FosterNetwork) -> CauerLadder:
     """Convert branches to the equivalent ladder by continued-fraction expansion.
 
