@@ -74,10 +74,11 @@ def _parser():
 
 def _check(args) -> int:
     from .show.text import check_text
-    from .study import check_rows, load_study
+    from .study import check_parts, check_rows, load_study
 
     study = load_study(args.study)
     check_rows(study)
+    check_parts(study)
     print(check_text(study))
     return FINE
 
@@ -93,9 +94,10 @@ def _schema(args) -> int:
 
 def _run(args) -> int:
     from .show import ResultFolder
-    from .study import load_study, run
+    from .study import check_rows, load_study, run
 
     study = load_study(args.study)
+    check_rows(study)  # before the march, not an hour into it
     folder = ResultFolder(args.out)
     with _Bar(quiet=args.quiet) as bar, folder.cycles(study) as sink:
         result = run(study, progress=bar, keep_cycles=False, cycle_sink=sink)

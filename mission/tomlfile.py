@@ -73,9 +73,14 @@ def parse_model(data: dict[str, Any], model: type[M], where: str) -> M:
     """
     try:
         # strict by way of JSON: no number from text, yet lists for tuples and words for enums
-        return model.model_validate_json(to_json(data, inf_nan_mode="constants"), strict=True)
+        return model.model_validate_json(to_json(data, inf_nan_mode="constants", fallback=_plain), strict=True)
     except ValidationError as err:
         raise _translate(err, model, data, where) from None
+
+
+def _plain(value):
+    """What a dict from Python may hold beyond TOML: NumPy numbers and arrays; anything else as its text."""
+    return value.tolist() if hasattr(value, "tolist") else str(value)
 
 
 def _translate(err: ValidationError, model, data, where: str) -> InputError:

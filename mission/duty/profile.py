@@ -7,7 +7,7 @@ from dataclasses import dataclass, field, replace
 
 import numpy as np
 
-from ..errors import InputError
+from ..errors import InputError, RangeError
 from .units import QUANTITIES, conversion
 
 WHOLE_MISSION = "whole mission"
@@ -79,8 +79,22 @@ class MissionProfile:
     _reader: "_Reader" = field(repr=False)
 
     def blocks(self, rows: int = 65536) -> Iterator[ProfileBlock]:
-        """The rows in order, at most ``rows`` at a time; a file is read again."""
-        return self._reader.blocks(rows, self.phases)
+        """The rows in order, at most ``rows`` at a time; a file is read again.
+
+        Raises
+        ------
+        RangeError
+            ``rows`` is not a whole number above zero.
+        InputError
+            The file is no longer what it was when it was checked.
+        """
+        if isinstance(rows, bool) or not isinstance(rows, (int, np.integer)) or rows < 1:
+            raise RangeError("rows", f"{rows!r}", "a whole number of at least 1")
+        return self._reader.blocks(int(rows), self.phases)
+
+    def place(self, row: int) -> str:
+        """Where row ``row`` (0 is the first) stands in the source: its line in a CSV file, else its number from 1."""
+        return self._reader.place(int(row))
 
     def to_frame(self):
         """The whole duty in our units as a DataFrame."""
@@ -111,8 +125,10 @@ class _Reader:
         origin = None
         before = 0
         for raw in self.source(rows):
+            if raw["time"].size == 0:  # e.g. an empty row group
+                continue
             block = self._convert(raw, scales, before if held is None else before + 1)
-            if origin is None and block["time"].size:
+            if origin is None:
                 origin = block["time"][0]
             if held is not None:
                 block = {q: np.concatenate([held[q], block[q]]) for q in block}
@@ -124,8 +140,8 @@ class _Reader:
             yield self._block(block, n - 1, origin, before, names, index, phases is None, np.diff(block["time"]))
             before += n - 1
             held = {q: v[n - 1:] for q, v in block.items()}
-        if held is None or held["time"].size == 0:
-            raise InputError(self.label, "a header without rows" if before == 0 else "no rows", "at least two rows, or one with last_row_lasts_s")
+        if held is None:
+            raise InputError(self.label, "a header without rows", "at least two rows, or one with last_row_lasts_s", "check the export of the table")
         if self.last_row_lasts_s is not None:
             yield self._block(held, 1, origin, before, names, index, phases is None, np.array([self.last_row_lasts_s]))
         elif before == 0:
@@ -152,7 +168,7 @@ class _Reader:
                 k = int(np.flatnonzero(bad)[0])
                 unit = self.columns[quantity].unit
                 low, high = limits.low / factor - offset, limits.high / factor - offset
-                self._refuse(quantity, first + k, f"value {values[k]:g}{' ' + unit if unit else ''}",
+                self._refuse(quantity, first + k, f"value {values[k]:.10g}{' ' + unit if unit else ''}",
                              f"{low:.6g} to {high:.6g}{' ' + unit if unit else ''}", limits.why)
             out[quantity] = ours
         return out
@@ -161,12 +177,20 @@ class _Reader:
         step = np.diff(time)
         if (step <= 0.0).any():
             k = int(np.flatnonzero(step <= 0.0)[0])
-            words = f"time {time[k + 1]:.10g} s after {time[k]:.10g} s" if step[k] < 0.0 else f"the time {time[k + 1]:.10g} s twice"
+            words = f"time {self._instant(time[k + 1])} after {self._instant(time[k])}" if step[k] < 0.0 else f"the time {self._instant(time[k + 1])} twice"
             self._refuse("time", before + k + 1, words, "times that rise from row to row", "sort the rows, or cut the double")
         if (step > self.longest_step_s * (1.0 + 1e-9)).any():
             k = int(np.flatnonzero(step > self.longest_step_s * (1.0 + 1e-9))[0])
-            self._refuse("time", before + k + 1, f"a step of {step[k]:.6g} s after {time[k]:.10g} s", f"steps up to {self.longest_step_s:g} s",
-                         "fill the gap, or allow it on purpose with longest_step_s under [duty] (the row before it is then held)")
+            self._refuse("time", before + k + 1, f"a step of {step[k]:.6g} s after {self._instant(time[k])}", f"steps up to {self.longest_step_s:g} s",
+                         "fill the gap, or allow it on purpose with longest_step_s under [duty] (the row before it is then held); or check the unit of time")
+
+    def _instant(self, time_s):
+        """A time as the user's file has it."""
+        unit = self.columns["time"].unit
+        if unit == "datetime":
+            stamp = np.datetime64(0, "us") + np.timedelta64(round(float(time_s) * 1e6), "us")
+            return str(stamp).removesuffix("000").removesuffix(".000") + " (UTC)"
+        return f"{time_s / QUANTITIES['time'].units[unit][0]:.10g} {unit}"
 
     def _block(self, block, n, origin, before, names, index, gather, dt):
         columns = {}

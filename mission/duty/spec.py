@@ -10,6 +10,7 @@ from ..errors import RangeError
 from ..tomlfile import FileModel
 from .units import QUANTITIES
 
+DELIMITERS = (",", ";", "\t", "|", " ")
 _Positive = Annotated[float, Field(gt=0)]
 
 
@@ -59,14 +60,18 @@ class DutySpec(FileModel):
     file: str = Field(min_length=1)
     columns: ColumnMap
     name: str | None = None
-    delimiter: str = Field(default=",", min_length=1, max_length=1)
-    decimal: str = Field(default=".", pattern=r"^[.,]$")
+    delimiter: str = ","
+    decimal: str = "."
     encoding: str = "utf-8"
     longest_step_s: _Positive = 60.0
     last_row_lasts_s: _Positive | None = None
 
     @model_validator(mode="after")
     def _signs(self):
+        if self.delimiter not in DELIMITERS:
+            raise RangeError("delimiter", f"{self.delimiter!r}", "one of " + " ".join(repr(d) for d in DELIMITERS), "use the sign between the columns of the file")
+        if self.decimal not in (".", ","):
+            raise RangeError("decimal", f"{self.decimal!r}", "a point \".\" or a comma \",\"")
         if self.delimiter == self.decimal:
             raise RangeError("decimal", f"'{self.decimal}' for both delimiter and decimal", "two different signs")
         return self

@@ -45,7 +45,7 @@ class MarchSettings:
     first_step_s: float = 2.0**-11
     longest_step_s: float = 16.0
     settle_periods: float = 2.0
-    settle_above_k: float = 1.5
+    settle_above_k: float = 0.3
     t_stop_c: float = 500.0
 
 

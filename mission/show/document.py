@@ -180,7 +180,9 @@ def rests_on(result) -> list[str]:
         out.append(f"{history.chips[worst]} is under load for {history.beyond_data_s[worst]:.4g} s ({history.beyond_data_s[worst] / history.duration_s:.1%} of the mission) "
                    f"outside {low:g} to {high:g} degC, the temperatures of the data-sheet curves; losses are extended in a straight line there")
     out.append(f"losses: {study.spec.inverter.modulation.value} modulation, linear range; dead time and current ripple are neglected; curves are linear between their points")
-    if study.module.switch.thermal.layer or study.module.diode.thermal.layer:
+    if study.spec.cooling.sink_sees == "chip-losses":
+        out.append("heat: the sink is driven by the chips' losses at once (cooling.sink_sees = chip-losses), not by the heat that leaves the module")
+    elif study.module.switch.thermal.layer or study.module.diode.thermal.layer:
         out.append("heat: layers under each chip with spreading at fixed angles (a shortcut of the trade); the sink takes the heat that leaves them")
     else:
         out.append("heat: data-sheet branches turned into ladders, so that case and sink take the heat that leaves the chips, not the heat that enters")

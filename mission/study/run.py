@@ -14,13 +14,13 @@ from ..history import CHIP_NAMES, ElectrothermalMarch, EnvelopeBuilder, Junction
 from ..lifetime import DamageLedger
 from ..losses import LossTables, build_tables
 from ..machine import operating_points
-from ..thermal import ReducedNetwork, inverter_network, reduce_to_modes
+from ..thermal import ReducedNetwork, inverter_modes
 from .cyclemap import CycleMap
 from .spec import Study
 
 BLOCK_ROWS = 65536
-#: A repeated mission starts and ends at the same temperatures within this [K].
-PERIODIC_WITHIN_K = 0.05
+#: A repeated mission starts and ends at the same temperatures within this [K], or this share of its largest swing.
+PERIODIC_WITHIN_K, PERIODIC_WITHIN_SHARE = 0.02, 0.002
 MAX_PASSES = 40
 SIGNALS = CHIP_NAMES + tuple(f"case {c}" for c in CHIP_NAMES)
 
@@ -132,14 +132,15 @@ def run(study: Study, *, progress: Progress | None = None, keep_cycles: bool = T
     begin = time.perf_counter()
     spec, profile = study.spec, study.profile
     tables = build_tables(study.module, spec.inverter.modulation)
-    network = reduce_to_modes(inverter_network(study.module, spec.cooling, materials=study.materials()), relative_tolerance=spec.march.network_tolerance)
+    network = inverter_modes(study.module, spec.cooling, materials=study.materials(), relative_tolerance=spec.march.network_tolerance)
     settings = MarchSettings(f_slow_hz=spec.march.slow_below_hz, steps_per_period=spec.march.steps_per_period)
     states = None
     known = None
     for passes in range(1, MAX_PASSES + 1):
         one = _Pass(study, tables, network, settings, states, progress, passes, keep_cycles, cycle_sink)
         one.march()
-        if not one.complete or spec.march.start == "coolant" or one.closes_within_k <= PERIODIC_WITHIN_K:
+        swing = float((one.envelope.peak_c - one.envelope.lowest_c).max())
+        if not one.complete or spec.march.start == "coolant" or one.closes_within_k <= max(PERIODIC_WITHIN_K, PERIODIC_WITHIN_SHARE * swing):
             break
         states = one.next_start()
         # with losses that hardly depend on temperature the closing value falls fast; stop when it no longer does

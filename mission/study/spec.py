@@ -2,21 +2,26 @@
 
 from __future__ import annotations
 
+import re
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Annotated, Literal
 
+import numpy as np
 from pydantic import Field, model_validator
 
-from ..device import PowerModule, load_module
+from .. import device
+from ..device import PowerModule, load_module, shipped_modules
 from ..duty import DutySpec, MissionProfile, read_profile
-from ..errors import InputError, RangeError
+from ..errors import InputError, RangeError, near_match
 from ..lifetime import FailureMode, resolve_modes
 from ..losses import Modulation
 from ..machine import MachineSpec
 from ..thermal import CoolingSpec, load_materials
 from ..tomlfile import FileModel, parse_model, read_toml
 
+#: A study finds shipped modules by name whatever the current folder holds.
+_SHIPPED = Path(device.__file__).parent / "modules"
 _Positive = Annotated[float, Field(gt=0)]
 
 
@@ -30,7 +35,7 @@ class ModuleRef(FileModel):
     @model_validator(mode="after")
     def _one(self):
         if (self.name is None) == (self.file is None):
-            raise RangeError("module", "both name and file" if self.name else "neither name nor file",
+            raise RangeError("module", "neither name nor file" if self.name is None else "both name and file",
                              "either name (a shipped module) or file (a path that counts from the study file)")
         return self
 
@@ -132,6 +137,8 @@ class Study:
         data = self.spec.model_dump(mode="python", exclude_none=True)
         if section not in StudySpec.model_fields:
             raise InputError("section", f"'{section}'", "one of " + ", ".join(StudySpec.model_fields))
+        if not isinstance(data[section], dict):
+            raise InputError("section", f"'{section}', which is a single value", "one of " + ", ".join(k for k, v in data.items() if isinstance(v, dict)))
         data[section] = {**data[section], **values}
         spec = parse_model(data, StudySpec, self.source)
         return _assemble(spec, self.source, self.folder, profile=self.profile if section != "duty" else None)
@@ -160,10 +167,13 @@ def load_study(path) -> Study:
 
 
 def _assemble(spec: StudySpec, source: str, folder: Path, profile=None) -> Study:
-    try:
-        module = load_module(spec.module.name) if spec.module.name else load_module(spec.module.file, folder=folder)
-    except InputError as err:
-        raise err if spec.module.file else err.at(f"{source}, field module.name") from None
+    if spec.module.name is None:
+        module = load_module(folder / spec.module.file)
+    elif spec.module.name in shipped_modules():
+        module = load_module(_SHIPPED / f"{spec.module.name}.toml")
+    else:
+        raise InputError(f"{source}, field module.name", f"'{spec.module.name}'", "a shipped module: " + ", ".join(shipped_modules()),
+                         near_match(spec.module.name, shipped_modules()) or "give file = \"...\" for a module file of your own")
     study = Study(spec, module, profile if profile is not None else read_profile(spec.duty, folder), (), source, folder)
     _check_together(study)
     if spec.module.materials is not None:
@@ -188,9 +198,11 @@ def _check_together(study: Study) -> None:
     if spec.inverter.dc_voltage_v is not None and "dc_voltage_v" in has:
         raise InputError(f"{study.source}, field inverter.dc_voltage_v", f"{spec.inverter.dc_voltage_v:g} V beside a dc_voltage column in the profile",
                          "one of the two", "remove one of them")
-    top = profile.ranges["dc_voltage_v"][1] if "dc_voltage_v" in has else spec.inverter.dc_voltage_v
+    from_duty = "dc_voltage_v" in has
+    top = profile.ranges["dc_voltage_v"][1] if from_duty else spec.inverter.dc_voltage_v
     if top >= module.ratings.v_ces_v:
-        raise InputError(f"{study.source}, inverter.dc_voltage_v", f"{top:g} V", f"below the blocking voltage of {module.name}, {module.ratings.v_ces_v:g} V",
+        where = f"{profile.source}, column '{spec.duty.columns.dc_voltage.column}'" if from_duty and spec.duty.columns.dc_voltage else f"{study.source}, field inverter.dc_voltage_v"
+        raise InputError(where, f"{top:g} V", f"below the blocking voltage of {module.name}, {module.ratings.v_ces_v:g} V",
                          "check the unit, or choose a module of a higher voltage class")
     needs = {"synchronous": ("speed_rad_s",), "direct": ("frequency_hz", "mod_index", "phi_rad", "current_a")}[spec.machine.kind]
     words = {"speed_rad_s": "speed", "frequency_hz": "frequency", "mod_index": "mod_index", "phi_rad": "displacement or power_factor", "current_a": "current"}
@@ -209,7 +221,7 @@ def _check_together(study: Study) -> None:
         raise InputError(f"{study.source}, section duty.columns", f"a column for {', '.join(sorted(extra))}",
                          f"no such column with machine.kind = '{spec.machine.kind}', which would ignore it", "take it out of duty.columns")
     if spec.machine.kind == "direct" and profile.ranges["mod_index"][1] > spec.inverter.modulation.mod_index_max * (1 + 1e-9):
-        raise InputError(f"{profile.source}, column for mod_index", f"{profile.ranges['mod_index'][1]:g}",
+        raise InputError(f"{profile.source}, column for mod_index", f"{profile.ranges['mod_index'][1]:.6g}",
                          f"at most {spec.inverter.modulation.mod_index_max:.5g} with modulation = '{spec.inverter.modulation.value}'",
                          "check the definition (peak phase voltage over half the DC voltage) or choose space-vector modulation")
 
@@ -219,14 +231,34 @@ def check_rows(study: Study) -> None:
     from ..losses import CURRENT_REACH
     from ..machine import operating_points
 
-    module = study.module
+    module, source = study.module, study.profile.source
     every = [c for curves in (*module.on_state_curves().values(), *module.energy_curves().values()) for c in curves.curve]
     reach = CURRENT_REACH * max(c.current_a[-1] for c in every)
     inverter = study.spec.inverter
     for block in study.profile.blocks():
-        points = operating_points(block, study.spec.machine, dc_voltage_v=inverter.dc_voltage_v,
-                                  mod_index_max=inverter.modulation.mod_index_max, where=study.profile.source)
+        try:
+            points = operating_points(block, study.spec.machine, dc_voltage_v=inverter.dc_voltage_v,
+                                      mod_index_max=inverter.modulation.mod_index_max, where=source)
+        except InputError as err:
+            row = re.match(r", row (\d+)", err.where.removeprefix(source))
+            if row is None:
+                raise
+            # the machine counts rows; the reader of a CSV file counts lines
+            where = f"{source}, {study.profile.place(int(row[1]) - 1)}{err.where.removeprefix(source)[row.end():]}"
+            raise InputError(where, err.found, err.allowed, err.advice) from None
         if points.i_peak_a.max() > reach:
-            k = int(points.i_peak_a.argmax())
-            raise InputError(f"{study.profile.source}, row {block.first_row + k + 1}", f"a peak current of {points.i_peak_a[k]:.4g} A",
+            k = int(np.argmax(points.i_peak_a > reach))
+            raise InputError(f"{source}, {study.profile.place(block.first_row + k)} (t = {block.time_s[k]:g} s)", f"a peak current of {points.i_peak_a[k]:.4g} A",
                              f"at most {reach:.4g} A (twice the end of the curves of {module.name})", "check the unit (rms or peak), or choose a larger module")
+
+
+def check_parts(study: Study) -> None:
+    """Build the loss tables and the thermal network once, so that parts which do not go together are found without a run."""
+    from ..losses import build_tables
+    from ..thermal import inverter_modes
+
+    try:
+        build_tables(study.module, study.spec.inverter.modulation)
+        inverter_modes(study.module, study.spec.cooling, materials=study.materials(), relative_tolerance=study.spec.march.network_tolerance)
+    except InputError as err:
+        raise err.at(study.source) from None

@@ -1,7 +1,7 @@
 """Heat: layers, data-sheet curves and cooling -> a network reduced to modes."""
 
 from .assembly import FullNetwork, NetworkBuilder
-from .build import chip_ladder, inverter_network
+from .build import chip_ladder, inverter_modes, inverter_network
 from .cooling import CoolingSpec, FixedCooling, FosterCooling, sink_ladder
 from .layers import Material, StackLadder, load_materials, shipped_materials, stack_ladder
 from .modes import ReducedNetwork, reduce_to_modes, unreduced
@@ -10,6 +10,6 @@ from .networks import CauerLadder, FosterNetwork, cauer_to_foster, foster_to_cau
 __all__ = [
     "CauerLadder", "CoolingSpec", "FixedCooling", "FosterCooling", "FosterNetwork", "FullNetwork", "Material", "NetworkBuilder",
     "ReducedNetwork", "StackLadder", "cauer_to_foster", "chip_ladder", "foster_to_cauer",
-    "inverter_network", "load_materials", "merge_close_branches", "reduce_to_modes", "shipped_materials",
+    "inverter_modes", "inverter_network", "load_materials", "merge_close_branches", "reduce_to_modes", "shipped_materials",
     "sink_ladder", "stack_ladder", "unreduced",
 ]

@@ -5,10 +5,12 @@ from __future__ import annotations
 import numpy as np
 
 from ..device import PowerModule
+from ..errors import InputError
 from .assembly import FullNetwork, NetworkBuilder
 from .cooling import sink_ladder
 from .layers import StackLadder, stack_ladder
-from .networks import CauerLadder, FosterNetwork, foster_to_cauer, merge_close_branches
+from .modes import ReducedNetwork, reduce_to_modes
+from .networks import CauerLadder, FosterNetwork, cauer_to_foster, foster_to_cauer, merge_close_branches
 
 
 def chip_ladder(thermal, materials, where: str) -> StackLadder:
@@ -18,6 +20,58 @@ def chip_ladder(thermal, materials, where: str) -> StackLadder:
     branches = FosterNetwork(np.array(thermal.r_k_per_w), np.array(thermal.tau_s))
     ladder = foster_to_cauer(merge_close_branches(branches))
     return StackLadder(ladder, 0.0, ())
+
+
+def inverter_modes(module: PowerModule, cooling, *, materials=None, relative_tolerance: float = 1e-3) -> ReducedNetwork:
+    """The modes that the march needs: the joined network reduced, or the lumped form where ``cooling.sink_sees`` asks for it.
+
+    Parameters
+    ----------
+    module, cooling, materials
+        As for :func:`inverter_network`.
+    relative_tolerance : float
+        Of the reduction, see :func:`reduce_to_modes`.
+    """
+    if cooling.sink_sees == "heat-leaving":
+        return reduce_to_modes(inverter_network(module, cooling, materials=materials), relative_tolerance=relative_tolerance)
+    return _lumped_modes(module, cooling)
+
+
+#: Stands for "at once" where a resistance without capacity meets the losses directly.
+_AT_ONCE_S = 1e-3
+
+
+def _lumped_modes(module: PowerModule, cooling) -> ReducedNetwork:
+    """Data-sheet branches and sink branches side by side, each driven by the losses at once."""
+    for name, thermal in (("switch", module.switch.thermal), ("diode", module.diode.thermal)):
+        if thermal.layer:
+            raise InputError("cooling.sink_sees", "'chip-losses' with layers", "'heat-leaving' with layers", f"{name}.thermal has layers; their heat arrives later")
+    branches = [FosterNetwork(np.array(t.r_k_per_w), np.array(t.tau_s)) for t in (module.switch.thermal, module.diode.thermal)]
+    most = max(b.tau_s.size for b in branches)
+    lam, rho, rho_case = np.ones((most, 12)), np.zeros((most, 12)), np.zeros((most, 12))
+    for chip in range(12):
+        b = branches[0] if chip < 6 else branches[1]
+        lam[: b.tau_s.size, chip] = 1.0 / b.tau_s
+        rho[: b.tau_s.size, chip] = b.r_k_per_w / b.tau_s
+    sink = sink_ladder(cooling)
+    if isinstance(sink, CauerLadder):
+        found = cauer_to_foster(sink)
+        r_s, tau_s = found.r_k_per_w, found.tau_s
+    else:
+        r_s, tau_s = np.array([sink]), np.array([_AT_ONCE_S])
+    rows = [(np.ones(12), np.full(12, r / tau), np.full(12, r / tau), 1.0 / tau) for r, tau in zip(r_s, tau_s)]
+    legs = (np.arange(12) % 6) // 2
+    if module.case_to_sink is not None and module.case_to_sink.per == "module":
+        groups = [np.ones(12)] if module.arrangement == "six-pack" else [(legs == k).astype(float) for k in range(3)]
+        rows += [(g, g * module.case_to_sink.r_th_k_per_w / _AT_ONCE_S, g * module.case_to_sink.r_th_k_per_w / _AT_ONCE_S, 1.0 / _AT_ONCE_S) for g in groups]
+    elif module.case_to_sink is not None:
+        own = np.array([module.case_to_sink.r_th_switch_k_per_w] * 6 + [module.case_to_sink.r_th_diode_k_per_w] * 6) / _AT_ONCE_S
+        lam, rho, rho_case = (np.vstack([a, b[None]]) for a, b in ((lam, np.full(12, 1.0 / _AT_ONCE_S)), (rho, own), (rho_case, own)))
+    zero = np.zeros((12, 12))
+    return ReducedNetwork(
+        lam, rho, rho_case, np.array([r[3] for r in rows]), np.array([r[0] for r in rows]), np.array([r[1] for r in rows]).T.copy(),
+        np.array([r[2] for r in rows]).T.copy(), np.zeros(len(rows)), np.zeros_like(lam), zero, 0.0, 0.0, 0.0, 0.0,
+        sum(b.tau_s.size * 6 for b in branches) + len(rows))
 
 
 def inverter_network(module: PowerModule, cooling, *, materials=None) -> FullNetwork:

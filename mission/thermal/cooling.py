@@ -16,6 +16,14 @@ _Positive = Annotated[float, Field(strict=True, gt=0)]
 
 
 class _Coolant(FileModel):
+    """What every kind of cooling has.
+
+    ``sink_sees``: ``heat-leaving`` (default, correct: the sink takes the heat that comes out of
+    the module, later than it enters the chips) or ``chip-losses`` (the sink takes the losses at
+    once; for data that were made so, and for comparing with hand calculations).
+    """
+
+    sink_sees: Literal["heat-leaving", "chip-losses"] = "heat-leaving"
     coolant_c: Annotated[float, Field(strict=True, ge=-60, le=150)] | None = None
 
 
