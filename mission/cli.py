@@ -32,6 +32,10 @@ def main(argv=None) -> int:
         return FINE
     from .errors import InputError, MissionError, NoStableTemperature
 
+    for stream in (sys.stdout, sys.stderr):
+        # a terminal that cannot show a letter of a name is no reason to fail
+        if hasattr(stream, "reconfigure"):
+            stream.reconfigure(errors="backslashreplace")
     try:
         return args.action(args)
     except InputError as err:

@@ -42,7 +42,7 @@ class InputError(MissionError):
             text += f" What to do: {advice}" + ("" if advice[-1] in ".?!" else ".")
         super().__init__(text)
 
-    def at(self, prefix: str) -> "InputError":
+    def at(self, prefix: str) -> InputError:
         """The same error with a file or section named in front of its place."""
         return type(self)(f"{prefix}: {self.where}", self.found, self.allowed, self.advice)
 

@@ -231,6 +231,7 @@ def _tag(model, value=None) -> str:
     """The field and word that tell this kind of section from others, e.g. ``kind = 'fixed'``; empty if there is none or not ``value``."""
     for name, field in model.model_fields.items():
         words = getattr(field.annotation, "__args__", ()) if get_origin(field.annotation) is Literal else ()
-        if words and (value in words if value is not None else isinstance(words[0], str)):
-            return f"{name} = '{value if value is not None else words[0]}'"
+        # a field that every section of the kind fills with the one word
+        if field.is_required() and len(words) == 1 and value in (None, words[0]):
+            return f"{name} = '{words[0]}'"
     return ""

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import numpy as np
 from numba import njit
 
 # columns of a point

@@ -48,25 +48,25 @@ class CycleTable:
         return self.signal.size
 
     @staticmethod
-    def empty() -> "CycleTable":
+    def empty() -> CycleTable:
         """No cycles."""
         z = np.zeros(0)
         return CycleTable(z.astype(np.int16), z, z, z, z, z, z, z, z.astype(np.int16), z, z.astype(np.uint8))
 
     @staticmethod
-    def concat(tables) -> "CycleTable":
+    def concat(tables) -> CycleTable:
         """Tables one after the other."""
         tables = [t for t in tables if len(t)]
         if not tables:
             return CycleTable.empty()
         return CycleTable(*(np.concatenate([getattr(t, f.name) for t in tables]) for f in fields(CycleTable)))
 
-    def select(self, keep) -> "CycleTable":
+    def select(self, keep) -> CycleTable:
         """The entries that a mask or an index array picks."""
         return CycleTable(*(getattr(self, f.name)[keep] for f in fields(CycleTable)))
 
     @staticmethod
-    def ripple(*, signal, range_k, mean_c, heating_s, start_s, end_s, phase_id, count) -> "CycleTable":
+    def ripple(*, signal, range_k, mean_c, heating_s, start_s, end_s, phase_id, count) -> CycleTable:
         """Ripple cycles; entries without count or range are left out (they are none)."""
         keep = (count > 0.0) & (range_k > 0.0)
         r, m = range_k[keep], mean_c[keep]

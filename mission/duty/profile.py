@@ -76,7 +76,7 @@ class MissionProfile:
     longest_step_s: float
     shortest_step_s: float
     notes: tuple[str, ...]
-    _reader: "_Reader" = field(repr=False)
+    _reader: _Reader = field(repr=False)
 
     def blocks(self, rows: int = 65536) -> Iterator[ProfileBlock]:
         """The rows in order, at most ``rows`` at a time; a file is read again.
@@ -236,7 +236,7 @@ def checked(reader: _Reader, name: str) -> MissionProfile:
     rows = 0
     longest, shortest, duration = 0.0, np.inf, 0.0
     time_by_phase = np.zeros(256)
-    for block in reader.blocks(262144, None):
+    for block in reader.blocks(65536, None):
         rows += block.dt_s.size
         longest, shortest = max(longest, float(block.dt_s.max())), min(shortest, float(block.dt_s.min()))
         duration = float(block.time_s[-1] + block.dt_s[-1])

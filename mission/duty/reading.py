@@ -12,11 +12,11 @@ from pathlib import Path
 import numpy as np
 
 from ..checks import require_range
-from ..errors import InputError, near_match
+from ..errors import InputError
 from ..tomlfile import parse_model
 from .profile import MissionProfile, _Reader, checked
 from .spec import ColumnMap, DutySpec
-from .units import conversion
+from .units import conversion, near_name
 
 _LONGEST_LINE = 1 << 20
 _ISO_DATE = re.compile(r"\d{4}-\d\d-\d\d", re.ASCII)
@@ -52,7 +52,7 @@ def read_profile(spec: DutySpec, folder=".") -> MissionProfile:
         raise InputError(label, "a folder", "a CSV or Parquet file", "name the file in it")
     if not is_there:
         there = [p.name for p in path.parent.iterdir() if p.suffix.lower() in _CSV_ENDINGS + _PARQUET_ENDINGS] if path.parent.is_dir() else []
-        raise InputError(label, "no such file", "a CSV or Parquet file", near_match(path.name, there) or "paths count from the study file")
+        raise InputError(label, "no such file", "a CSV or Parquet file", near_name(path.name, there) or "paths count from the study file")
     ending = path.suffix.lower()
     if ending not in _CSV_ENDINGS + _PARQUET_ENDINGS:
         raise InputError(label, f"the ending '{path.suffix}'", ", ".join(_CSV_ENDINGS + _PARQUET_ENDINGS), "name the file by what it holds")
@@ -176,7 +176,7 @@ def _need_columns(label, columns, there, field="duty.columns"):
     for quantity, column in columns.items():
         if column.column not in there:
             names = ", ".join(f"'{c}'" for c in there[:40]) + (f" and {len(there) - 40} more" if len(there) > 40 else "")
-            hint = near_match(column.column, there) or "copy the name from the file's header"
+            hint = near_name(column.column, there) or "copy the name from the file's header"
             if there and sum(_is_number(c, ".") for c in there) > len(there) // 2:
                 hint = "line 1 looks like values: put a header line with the names of the columns on top"
             raise InputError(f"{label}, field {field}.{quantity}.column", f"no column '{column.column}'", f"one of {names}", hint)
@@ -226,7 +226,8 @@ def _parquet_source(path, label, columns):
 
 
 def _first_line(err) -> str:
-    return (str(err).splitlines() or [type(err).__name__])[0][:160]
+    text = (str(err).splitlines() or [type(err).__name__])[0][:160]
+    return "".join(c if c.isprintable() else "?" for c in text)
 
 
 def _arrow_values(column, quantity, spec, label, first, place):
@@ -256,7 +257,7 @@ def _csv_source(path, label, columns, spec):
     if len(header) == 1:
         other = [d for d in ";\t,|" if d != spec.delimiter and d in header[0]]
         sign = {"\t": "\\t"}.get(other[0], other[0]) if other else ""
-        raise InputError(f"{label}, line 1", f"a single column '{header[0][:60]}'", f"columns divided by {spec.delimiter!r}",
+        raise InputError(f"{label}, line 1", f"a single column {_short(header[0])}", f"columns divided by {spec.delimiter!r}",
                          f'set delimiter = "{sign}" under [duty]' if other else "check the file")
     if any(header) and all(_is_number(h, spec.decimal) for h in header if h):
         raise InputError(f"{label}, line 1", f"numbers ({', '.join(header[:4])} ...)", "a header line with the names of the columns", "put a header line on top")
@@ -264,6 +265,7 @@ def _csv_source(path, label, columns, spec):
     if doubled:
         raise InputError(f"{label}, line 1", f"the column name '{doubled[0]}' {header.count(doubled[0])} times", "every name once", "rename one of the columns")
     _need_columns(label, columns, header)
+    _refuse_open_quotes(path, label, spec)
     place = _LinePlace(path, spec)
 
     def source(rows):
@@ -278,7 +280,7 @@ def _csv_source(path, label, columns, spec):
         waiting = 0
         try:
             with pc.open_csv(
-                path, read_options=pc.ReadOptions(block_size=4 << 20, encoding="utf8" if encoding in ("utf-8", "utf-8-sig") else encoding),
+                path, read_options=pc.ReadOptions(block_size=1 << 20, encoding="utf8" if encoding in ("utf-8", "utf-8-sig") else encoding),
                 parse_options=pc.ParseOptions(delimiter=spec.delimiter, newlines_in_values=False, ignore_empty_lines=True),
                 convert_options=pc.ConvertOptions(column_types=types, include_columns=wanted, null_values=[], strings_can_be_null=False,
                                                   quoted_strings_can_be_null=False)) as reader:
@@ -353,6 +355,34 @@ def _refuse_bytes(label, number, line, spec):
     if bad is not None:
         raise InputError(f"{label}, line {number}", f"byte 0x{ord(bad) - 0xdc00:02x}, which is not {spec.encoding}", f"text in {spec.encoding}",
                          "name the file's encoding under [duty], e.g. encoding = \"cp1252\"")
+
+
+def _refuse_open_quotes(path, label, spec):
+    """A quote without its partner would swallow the rows up to the next one, in a column that nobody looks at too."""
+    if not _encoding(spec).startswith(("utf-16", "utf-32")) and not _open_quotes(path):
+        return
+    try:
+        for number, line in _lines(path, spec):
+            if line.count('"') % 2:
+                raise InputError(f"{label}, line {number}", "a quote that is not closed in its line", "quotes in pairs, one row a line", "close the quote, or take it out")
+    except UnicodeError as err:
+        raise InputError(label, f"bytes that are not {spec.encoding} ({err})", f"text in {spec.encoding}", "name the file's encoding under [duty]") from None
+
+
+def _open_quotes(path) -> bool:
+    """Whether a line ends inside quotes, found by counting bytes: the one at a line's end must be even."""
+    count = 0
+    with open(path, "rb") as file:
+        for piece in iter(lambda: file.read(1 << 20), b""):
+            if count % 2 == 0 and b'"' not in piece:
+                continue
+            signs = np.frombuffer(piece, np.uint8)
+            signs = signs[(signs == 34) | (signs == 10) | (signs == 13)]
+            so_far = count + np.cumsum(signs == 34)
+            if (so_far[signs != 34] % 2).any():
+                return True
+            count = int(so_far[-1]) if so_far.size else count
+    return count % 2 == 1
 
 
 class _LinePlace:

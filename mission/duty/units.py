@@ -55,6 +55,19 @@ QUANTITIES: dict[str, Quantity] = {
 }
 
 
+def near_name(word: str, choices) -> str:
+    """Offer the closest name; capitals and blanks do not count.
+
+    Examples
+    --------
+    >>> near_name("A RMS", ["A rms", "A peak"])
+    "did you mean 'A rms'?"
+    """
+    plain = {"".join(str(c).split()).casefold(): c for c in choices}
+    hit = plain.get("".join(word.split()).casefold())
+    return f"did you mean '{hit}'?" if hit is not None else near_match(word, choices)
+
+
 def conversion(quantity: str, unit: str | None, where: str) -> tuple[float, float]:
     """Factor and offset from a user's unit to ours.
 
@@ -76,5 +89,5 @@ def conversion(quantity: str, unit: str | None, where: str) -> tuple[float, floa
     if unit is None:
         raise InputError(where, "no unit", "unit = one of " + ", ".join(units), "add the unit; none is taken for granted")
     if unit not in units:
-        raise InputError(f"{where}.unit", f"'{unit}'", "one of " + ", ".join(units), near_match(unit, units))
+        raise InputError(f"{where}.unit", f"'{unit}'", "one of " + ", ".join(units), near_name(unit, units) or ("say whether rms or peak" if quantity == "current" else "copy one of these"))
     return units[unit]

@@ -28,6 +28,15 @@ def norris_landzberg_factor(test_k, use_k, test_per_day, use_per_day, test_max_c
         ``NORRIS_LANDZBERG_SNPB`` (default) or ``NORRIS_LANDZBERG_SAC`` (from memory of Pan et al. 2005;
         other authors differ a lot).
 
+    Returns
+    -------
+    float
+
+    Raises
+    ------
+    RangeError
+        A swing or frequency not above zero, a temperature below absolute zero.
+
     References
     ----------
     K. C. Norris, A. H. Landzberg, "Reliability of controlled collapse interconnections",
@@ -40,29 +49,51 @@ def norris_landzberg_factor(test_k, use_k, test_per_day, use_per_day, test_max_c
     """
     for name, value in (("test_k", test_k), ("use_k", use_k), ("test_per_day", test_per_day), ("use_per_day", use_per_day)):
         require_range(name, value, low=0.0, low_open=True)
+    for name, value in (("test_max_c", test_max_c), ("use_max_c", use_max_c)):
+        require_range(name, value, low=-273.15, low_open=True, unit="degC")
     n, m, e = constants
     return float((test_k / use_k) ** n * (use_per_day / test_per_day) ** m * math.exp(e * (1.0 / (use_max_c + 273.15) - 1.0 / (test_max_c + 273.15))))
 
 
-def board_solder_term(cycles_per_hour_times_12, heating_h, swing_k, max_c) -> float:
+def board_solder_term(cycles, phase_h, heating_h, swing_k, max_c) -> float:
     """Thermo-mechanical term of a reliability handbook for solder on boards.
 
     (12 N/t) (min(theta, 2)/2)^(1/3) (dT/20)^1.9 exp(1414 (1/313 - 1/(T_max + 273))), after the FIDES guide.
 
     Parameters
     ----------
-    cycles_per_hour_times_12 : float
-        12 N/t with N cycles in t hours.
+    cycles, phase_h : float
+        N cycles in a phase of t hours.
     heating_h : float
-        Duration theta of a cycle [h].
-    swing_k, max_c : float
+        Duration theta of a cycle [h]; beyond 2 h it does no more harm.
+    swing_k : float
+        [K]
+    max_c : float
+        Highest temperature [degC].
+
+    Returns
+    -------
+    float
+        Factor on the failure rate of the joint.
+
+    Raises
+    ------
+    RangeError
+        A negative number, a phase of no length, a temperature below absolute zero.
+
+    References
+    ----------
+    FIDES guide 2009, thermal cycling of solder joints (formula as transcribed in secondary literature).
+    The guide rounds 0 degC to 273 K.
 
     Examples
     --------
-    >>> round(board_solder_term(1.0, 4.0, 40.0, 60.0), 6)
+    >>> round(board_solder_term(2, 24.0, 4.0, 40.0, 60.0), 6)
     4.895445
     """
-    require_range("heating_h", heating_h, low=0.0)
-    require_range("swing_k", swing_k, low=0.0)
-    return float(cycles_per_hour_times_12 * (min(heating_h, 2.0) / 2.0) ** (1.0 / 3.0) * (swing_k / 20.0) ** 1.9
+    for name, value in (("cycles", cycles), ("heating_h", heating_h), ("swing_k", swing_k)):
+        require_range(name, value, low=0.0)
+    require_range("phase_h", phase_h, low=0.0, low_open=True, unit="h")
+    require_range("max_c", max_c, low=-273.0, low_open=True, unit="degC")
+    return float(12.0 * cycles / phase_h * (min(heating_h, 2.0) / 2.0) ** (1.0 / 3.0) * (swing_k / 20.0) ** 1.9
                  * math.exp(1414.0 * (1.0 / 313.0 - 1.0 / (max_c + 273.0))))

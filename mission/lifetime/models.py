@@ -9,11 +9,12 @@ from __future__ import annotations
 import math
 from functools import lru_cache
 from pathlib import Path
-from typing import Annotated, Any, Literal, Union
+from typing import Annotated, Any, Literal
 
 import numpy as np
 from pydantic import Field, model_validator
 
+from ..checks import require_range
 from ..errors import InputError, RangeError, near_match
 from ..tomlfile import FileModel, parse_model, read_toml
 
@@ -22,6 +23,11 @@ ELECTRONVOLT_J = 1.602176634e-19
 ZERO_C_K = 273.15
 _FOLDER = Path(__file__).with_name("coefficients")
 _CYCLE_QUANTITIES = ("range_k", "mean_c", "min_c", "max_c", "heating_s")
+_UNITS = {"range_k": "K", "mean_c": "degC", "min_c": "degC", "max_c": "degC", "heating_s": "s"}
+#: The heating time of a swing caught as a step [s]; no form is asked for a shorter one.
+_SHORTEST_S = 1e-6
+#: Reference and reach [s] of the quoted extension N(t)/N(1.5 s) = (t/1.5)^-0.3.
+_EXTENSION_S, _EXTENSION_FROM_S, _EXTENSION_TO_S = 1.5, 0.1, 60.0
 
 _Number = Annotated[float, Field(strict=True)]
 _Positive = Annotated[float, Field(strict=True, gt=0)]
@@ -79,7 +85,7 @@ class _SetBase(FileModel):
 
     @model_validator(mode="after")
     def _ranges(self):
-        known = _CYCLE_QUANTITIES + _ALLOWED_OPTIONS[self.kind]
+        known = _CYCLE_QUANTITIES + _TESTED_OPTIONS.get(self.kind, ())
         for name, (low, high) in self.tested_range.items():
             if name not in known:
                 raise RangeError("tested_range", f"a range for '{name}'", "ranges for " + ", ".join(known), near_match(name, known))
@@ -118,18 +124,29 @@ class PowerLawSet(_SetBase):
 
 _ALLOWED_OPTIONS = {
     "swing-and-mean": (),
-    "multi-parameter": ("temperature", "heating_outside", "current_per_foot_a", "v_class", "wire_diameter_um"),
+    "multi-parameter": ("temperature", "heating_outside", "current_per_foot_a", "diode_current_per_foot_a", "v_class", "wire_diameter_um"),
     "sintered": ("aspect_ratio",),
     "power-law": ("a", "n", "tested_range_k"),
 }
+#: Options that are numbers and may have a tested range of their own.
+_TESTED_OPTIONS = {"multi-parameter": ("current_per_foot_a", "v_class", "wire_diameter_um"), "sintered": ("aspect_ratio",)}
+_CHOICES = {"temperature": ("minimum", "maximum"), "heating_outside": ("clamp", "extrapolate", "power-0.3")}
 #: What a user may leave out, with what is then taken.
 _DEFAULT_OPTIONS = {"multi-parameter": {"temperature": "minimum", "heating_outside": "clamp"}}
+
+
+#: What each rule does, as a result must say it.
+_HEATING_WORDS = {
+    "clamp": "heating time outside {low:g} to {high:g} s: held at the nearer end",
+    "extrapolate": "heating time outside {low:g} to {high:g} s: the fitted exponent is used on",
+    "power-0.3": "heating time: N(t)/N(1.5 s) = (t/1.5 s)^-0.3 from 0.1 to 60 s, also inside {low:g} to {high:g} s (often quoted; from memory)",
+}
 
 
 class CoefficientFile(FileModel):
     """Any coefficient file."""
 
-    content: Annotated[Union[SwingAndMeanSet, MultiParameterSet, SinteredSet, PowerLawSet], Field(discriminator="kind")]
+    content: Annotated[SwingAndMeanSet | MultiParameterSet | SinteredSet | PowerLawSet, Field(discriminator="kind")]
 
 
 @lru_cache
@@ -148,14 +165,21 @@ def load_set(name_or_path, folder=None):
     """Read a coefficient set: a shipped name, or a TOML file of the user's (a relative path counts from ``folder``)."""
     text = str(name_or_path)
     if text in shipped_sets():
-        path = _FOLDER / f"{text}.toml"
-        label = path.name
-    elif text.endswith(".toml"):
+        return _shipped_set(text)
+    if text.endswith(".toml"):
         path = Path(text) if Path(text).is_absolute() or folder is None else Path(folder) / text
-        label = str(path)
-    else:
-        names = shipped_sets()
-        raise InputError("lifetime model", f"'{text}'", "one of " + ", ".join(names) + ", or the path of a .toml file", near_match(text, names))
+        return _read_set(path, str(path))
+    names = shipped_sets()
+    raise InputError("lifetime model", f"'{text}'", "one of " + ", ".join(names) + ", or the path of a .toml file",
+                     near_match(text, names) or "choose one of them")
+
+
+@lru_cache
+def _shipped_set(name):
+    return _read_set(_FOLDER / f"{name}.toml", f"{name}.toml")
+
+
+def _read_set(path, label):
     try:
         return parse_model({"content": read_toml(path)}, CoefficientFile, label).content
     except InputError as err:
@@ -181,19 +205,24 @@ class LifetimeModel:
         self._set = content
         self.name, self.source, self.life_means, self.kind = content.name, content.source, content.life_means, content.kind
         self.tested_range = dict(content.tested_range)
-        self.outside_range = options.get("outside_range", "use")
-        if self.outside_range not in ("use", "refuse"):
-            raise InputError(f"{where}, option outside_range", f"'{self.outside_range}'", "use or refuse")
         allowed = _ALLOWED_OPTIONS[self.kind] + ("outside_range",)
         for key in options:
             if key not in allowed:
                 raise InputError(f"{where}, option {key}", f"the unknown option '{key}'", "one of " + ", ".join(allowed) + f" for {self.name}",
-                                 near_match(key, allowed))
+                                 near_match(key, allowed) or "remove it")
+        self.outside_range = options.get("outside_range", "use")
+        if self.outside_range not in ("use", "refuse"):
+            raise InputError(f"{where}, option outside_range", f"value {self.outside_range!r}", "one of use, refuse",
+                             near_match(str(self.outside_range), ("use", "refuse")))
         self.options = {**_DEFAULT_OPTIONS.get(self.kind, {}), **options}
         getattr(self, "_check_" + self.kind.replace("-", "_"))(where)
-        self.fixed_outside = tuple(
-            f"{key} = {self.options[key]:g} outside {low:g} to {high:g}" for key, (low, high) in self.tested_range.items()
-            if key in self.options and not low <= self.options[key] <= high)
+        self.fixed_outside, self._option_outside = (), {}
+        for key, (low, high) in self.tested_range.items():
+            if key in self.options:
+                for_switch, for_diode = self.options[key], self.options.get(f"diode_{key}", self.options[key])
+                self._option_outside[key] = (not low <= for_switch <= high, not low <= for_diode <= high)
+                shown = {key: for_switch} if for_diode == for_switch else {key: for_switch, f"diode_{key}": for_diode}
+                self.fixed_outside += tuple(f"{k} = {v:g} outside {low:g} to {high:g}" for k, v in shown.items() if not low <= v <= high)
 
     # what each form needs -------------------------------------------------
     def _number(self, where, key, *, low=0.0):
@@ -210,7 +239,9 @@ class LifetimeModel:
     def _check_multi_parameter(self, where):
         for key in ("current_per_foot_a", "v_class", "wire_diameter_um"):
             self._number(where, key)
-        for key, words in (("temperature", ("minimum", "maximum")), ("heating_outside", ("clamp", "extrapolate", "power-0.3"))):
+        if "diode_current_per_foot_a" in self.options:
+            self._number(where, "diode_current_per_foot_a")
+        for key, words in _CHOICES.items():
             if self.options[key] not in words:
                 raise InputError(f"{where}, option {key}", f"value {self.options[key]!r}", "one of " + ", ".join(words), near_match(str(self.options[key]), words))
 
@@ -220,13 +251,13 @@ class LifetimeModel:
     def _check_power_law(self, where):
         c = self._set.coefficients
         for key, value in (("a", c.a), ("n", c.n)):
-            if value is None:
-                self._number(where, key)
-            elif key not in self.options:
-                self.options[key] = value
+            if value is not None:
+                self.options.setdefault(key, value)
+            self._number(where, key)
         span = self.options.get("tested_range_k")
         if span is not None:
-            if not isinstance(span, (list, tuple)) or len(span) != 2 or not all(isinstance(v, (int, float)) for v in span) or not span[0] < span[1]:
+            plain = isinstance(span, (list, tuple)) and all(isinstance(v, (int, float)) and not isinstance(v, bool) and math.isfinite(v) for v in span)
+            if not plain or len(span) != 2 or not span[0] < span[1]:
                 raise InputError(f"{where}, option tested_range_k", f"value {span!r}", "two numbers, the lower first")
             self.tested_range["range_k"] = (float(span[0]), float(span[1]))
 
@@ -244,30 +275,60 @@ class LifetimeModel:
         Returns
         -------
         n_f : ndarray, shape (n,)
-            Infinite for a swing of zero.
+            Infinite for a swing of zero; NaN where an input is NaN.
         outside : ndarray of bool, shape (n,)
-            Where one of the quantities, or one of the fixed options, leaves the tested range.
+            Where one of the quantities, or one of the fixed options, leaves the tested range (its ends belong to it).
 
         Raises
         ------
         RangeError
-            With ``outside_range = "refuse"``, for the first cycle outside.
+            A negative swing or time, a temperature below absolute zero; with
+            ``outside_range = "refuse"``, the first cycle outside the tested range.
         """
-        q = dict(zip(_CYCLE_QUANTITIES, (np.asarray(v, float) for v in (range_k, mean_c, min_c, max_c, heating_s))))
-        q = dict(zip(q, np.broadcast_arrays(*q.values())))
-        outside = np.full(q["range_k"].shape, bool(self.fixed_outside))
-        for name, (low, high) in self.tested_range.items():
-            if name in q:
-                outside |= (q[name] < low) | (q[name] > high)
+        q, diode = self._quantities(range_k, mean_c, min_c, max_c, heating_s, diode)
+        outside = np.zeros(q["range_k"].shape, bool)
+        for mask in self._outside_by(q, diode).values():
+            outside |= mask
         if self.outside_range == "refuse" and outside.any():
             k = int(np.flatnonzero(outside)[0])
             text = ", ".join(f"{n} {q[n].flat[k]:.4g}" for n in self.tested_range if n in q)
             raise RangeError(f"lifetime model {self.name}", self.fixed_outside[0] if self.fixed_outside else f"a cycle with {text}",
                              "only cycles inside " + self.tested_text(), "choose outside_range = \"use\" to extrapolate, or another model")
-        with np.errstate(divide="ignore", over="ignore"):
-            log_n = getattr(self, "_log_" + self.kind.replace("-", "_"))(q, np.asarray(diode))
-            n_f = np.where(q["range_k"] > 0.0, np.exp(log_n), np.inf)
+        with np.errstate(divide="ignore", over="ignore", invalid="ignore"):  # a swing of zero: log 0, then exp(inf)
+            log_n = getattr(self, "_log_" + self.kind.replace("-", "_"))(q, diode)
+            n_f = np.where(q["range_k"] == 0.0, np.inf, np.exp(log_n))
         return n_f, outside
+
+    def outside_by(self, range_k, mean_c, min_c, max_c, heating_s, *, diode=False) -> dict[str, np.ndarray]:
+        """Which cycles leave the tested range, apart for every quantity that has one.
+
+        Parameters as in :meth:`cycles_to_failure`.
+
+        Returns
+        -------
+        dict of str to ndarray of bool, shape (n,)
+            In the order of ``tested_range``; options of the mode included.
+        """
+        return self._outside_by(*self._quantities(range_k, mean_c, min_c, max_c, heating_s, diode))
+
+    @staticmethod
+    def _quantities(range_k, mean_c, min_c, max_c, heating_s, diode):
+        """The inputs, checked, as arrays of one shape."""
+        low = {"range_k": 0.0, "heating_s": 0.0}
+        given = dict(zip(_CYCLE_QUANTITIES, (range_k, mean_c, min_c, max_c, heating_s)))
+        checked = [require_range(n, v, low=low.get(n, -ZERO_C_K), low_open=n not in low, unit=_UNITS[n], nan_ok=True) for n, v in given.items()]
+        *arrays, diode = np.broadcast_arrays(*checked, np.asarray(diode, bool))
+        return dict(zip(_CYCLE_QUANTITIES, arrays)), diode
+
+    def _outside_by(self, q, diode):
+        out = {}
+        for name, (low, high) in self.tested_range.items():
+            if name in q:
+                out[name] = (q[name] < low) | (q[name] > high)
+            else:
+                for_switch, for_diode = self._option_outside[name]
+                out[name] = np.where(diode, for_diode, for_switch)
+        return out
 
     def tested_text(self) -> str:
         """The tested range in words."""
@@ -277,24 +338,27 @@ class LifetimeModel:
         c = self._set.coefficients
         return math.log(c.a) + c.exponent * np.log(q["range_k"]) + c.activation_j / BOLTZMANN_J_PER_K / (q["mean_c"] + ZERO_C_K)
 
+    def _heating_range(self):
+        return self.tested_range.get("heating_s", (1.0, 15.0))
+
     def _log_multi_parameter(self, q, diode):
         c, o = self._set.coefficients, self.options
         t = q["min_c"] if o["temperature"] == "minimum" else q["max_c"]
         heat = q["heating_s"]
         if o["heating_outside"] == "clamp":
-            low, high = self.tested_range.get("heating_s", (1.0, 15.0))
-            log_heat = c.beta3 * np.log(np.clip(heat, low, high))
+            log_heat = c.beta3 * np.log(np.clip(heat, *self._heating_range()))
         elif o["heating_outside"] == "extrapolate":
-            log_heat = c.beta3 * np.log(np.maximum(heat, 1e-6))
+            log_heat = c.beta3 * np.log(np.maximum(heat, _SHORTEST_S))
         else:
-            log_heat = c.beta3 * math.log(1.5) - 0.3 * np.log(np.clip(heat, 0.1, 60.0) / 1.5)
-        fixed = (math.log(c.k) + c.beta4 * math.log(o["current_per_foot_a"]) + c.beta5 * math.log(o["v_class"])
+            log_heat = c.beta3 * math.log(_EXTENSION_S) - 0.3 * np.log(np.clip(heat, _EXTENSION_FROM_S, _EXTENSION_TO_S) / _EXTENSION_S)
+        current = np.where(diode, o.get("diode_current_per_foot_a", o["current_per_foot_a"]), o["current_per_foot_a"])
+        fixed = (math.log(c.k) + c.beta4 * np.log(current) + c.beta5 * math.log(o["v_class"])
                  + c.beta6 * math.log(o["wire_diameter_um"]))
         return fixed + c.beta1 * np.log(q["range_k"]) + c.beta2_k / (t + ZERO_C_K) + log_heat
 
     def _log_sintered(self, q, diode):
         c, ar = self._set.coefficients, self.options["aspect_ratio"]
-        heat = np.maximum(q["heating_s"], 1e-6)
+        heat = np.maximum(q["heating_s"], _SHORTEST_S)
         return (math.log(c.a) + c.alpha * np.log(q["range_k"]) + (c.beta1_per_k * q["range_k"] + c.beta0) * math.log(ar)
                 + np.log((c.c + heat**c.gamma) / (c.c + 1.0)) + c.activation_ev * ELECTRONVOLT_J / BOLTZMANN_J_PER_K / (q["mean_c"] + ZERO_C_K)
                 + np.where(diode, math.log(c.diode_factor), 0.0))
@@ -308,18 +372,30 @@ class LifetimeModel:
         out = list(self.fixed_outside)
         if self.kind == "multi-parameter":
             out.append(f"temperature term taken at the {self.options['temperature']} of the cycle (the literature has both; the maximum gives a shorter life)")
-            out.append(f"heating time outside the tested range: {self.options['heating_outside']}")
+            low, high = self._heating_range()
+            out.append(_HEATING_WORDS[self.options["heating_outside"]].format(low=low, high=high))
+        if self.kind == "sintered" and "heating_s" in self.tested_range:
+            out.append(f"heating times below {self.tested_range['heating_s'][0]:g} s follow the fitted formula on, which lengthens the life "
+                       "of fast ripple beyond what was tested")
         return tuple(out)
 
-    def alternatives(self) -> dict[str, "LifetimeModel"]:
-        """The same model with each explicit choice made otherwise, by a phrase that names the choice."""
-        if self.kind != "multi-parameter":
-            return {}
-        other = {}
-        for key, words in (("temperature", ("minimum", "maximum")), ("heating_outside", ("clamp", "extrapolate", "power-0.3"))):
-            for word in words:
-                if word != self.options[key]:
-                    other[f"{key} = {word}"] = LifetimeModel(self._set, {**self.options, key: word})
+    def alternatives(self) -> dict[str, LifetimeModel]:
+        """The same model with each explicit choice made otherwise, by a phrase that names the choice.
+
+        Choices are the options that the literature leaves open and, for a shipped set, the other
+        shipped sets of the same form. Alternatives never refuse a cycle.
+        """
+        other, options = {}, {**self.options, "outside_range": "use"}
+        if self.kind == "multi-parameter":
+            for key, words in _CHOICES.items():
+                for word in words:
+                    if word != self.options[key]:
+                        other[f"{key} = {word}"] = LifetimeModel(self._set, {**options, key: word})
+        shipped = [load_set(name) for name in shipped_sets()]
+        if self._set in shipped:
+            for content in shipped:
+                if content.kind == self.kind and content.name != self.name:
+                    other[f"set = {content.name}"] = LifetimeModel(content, options)
         return other
 
 

@@ -35,11 +35,11 @@ YELLOW, LIGHT_YELLOW = "#997700", "#eecc66"
 #: Pale to dark: share of damage.
 RAMP = ("#f3e6c8", "#e8c98a", "#d79f5c", "#b8704a", "#8c4543", "#5c2038")
 #: Colour, pale colour, hatch of the failure modes, in the order of the study.
-_MODE_LOOKS = ((BLUE, LIGHT_BLUE, "////"), (RED, LIGHT_RED, "...."), (YELLOW, LIGHT_YELLOW, "xxxx"), (INK, GREY, "----"))
+_MODE_LOOKS = ((BLUE, LIGHT_BLUE, "////"), (RED, LIGHT_RED, "\\\\\\\\"), (YELLOW, LIGHT_YELLOW, "xxxx"), (INK, GREY, "----"))
 
 #: A life is called extrapolated where more than this share of its damage lies outside the tested range.
 MOSTLY = 0.5
-_COLUMNS = 900
+_COLUMNS = 720
 _LANES = 16
 
 
@@ -298,7 +298,7 @@ def hot_stretch_figure(result) -> Figure:
     n = history.coolant_c.size
     first = int(np.clip(np.searchsorted(history.edge_s, begin, side="right") - 1, 0, n - 1))
     last = int(np.clip(np.searchsorted(history.edge_s, begin + width, side="left"), first + 1, n))
-    starts, edges = _columns(history, first, last, most=300)
+    starts, edges = _columns(history, first, last, most=160)
     unit, s = time_unit(width)
     figure = Figure(figsize=(9.6, 4.9), layout="constrained")
     axes = figure.subplots(2, 6, sharex=True, sharey=True)
@@ -307,9 +307,8 @@ def hot_stretch_figure(result) -> Figure:
     lowest = np.repeat(_low(history.t_min_c, starts, last), 2, axis=0)
     for chip, ax in enumerate(axes.flat):
         dark, pale = (BLUE, LIGHT_BLUE) if chip < 6 else (RED, LIGHT_RED)
-        for other in range(0 if chip < 6 else 6, 6 if chip < 6 else 12):
-            if other != chip:
-                ax.plot(x, highest[:, other], color=GREY, alpha=0.55, lw=0.6, zorder=1)
+        kind = slice(0, 6) if chip < 6 else slice(6, 12)
+        ax.plot(x, highest[:, kind].max(axis=1), color=GREY, lw=0.6, zorder=1)
         ax.fill_between(x, lowest[:, chip], highest[:, chip], color=pale, linewidth=0, zorder=2)
         ax.plot(x, highest[:, chip], color=dark, lw=1.0, zorder=3)
         ax.axvline(0.0, color=GREY, lw=0.7, ls=(0, (2, 2)), zorder=1)
@@ -429,11 +428,12 @@ def _tested_outline(ax, tested):
     ax.set_xlim(x0, x1)
     ax.set_ylim(y0, y1)
     ax.add_patch(Polygon(corners, closed=True, fill=False, ec=BLUE, lw=1.4, ls=(0, (6, 2)), zorder=4))
-    y = max(y0, min(c[1] for c in corners))
+    if a >= x1:
+        return False
     more = " (heating time apart)" if "heating_s" in tested else ""
-    ax.annotate(f"tested range{more}", (max(a, x0), max(y, y0)), xytext=(4, 4), textcoords="offset points", color=BLUE, fontsize=8, zorder=5,
-                annotation_clip=False, bbox={"boxstyle": "square,pad=0.1", "fc": PAPER, "ec": "none", "alpha": 0.8})
-    return a < x1
+    ax.annotate(f"tested range{more}", (max(a, x0), min(max(c[1] for c in corners), y1)), xytext=(3, 3), textcoords="offset points", color=BLUE,
+                fontsize=8, zorder=5, annotation_clip=False)
+    return True
 
 
 # --- 4: damage by phase -------------------------------------------------------------
@@ -497,8 +497,8 @@ def half_damage_k(edges, damage) -> float | None:
 
     Examples
     --------
-    >>> half_damage_k([0.0, 10.0, 20.0], [0.25, 0.75])
-    13.333333333333334
+    >>> round(half_damage_k([0.0, 10.0, 20.0], [0.25, 0.75]), 6)
+    13.333333
     """
     if not np.any(damage):
         return None
@@ -548,8 +548,8 @@ def _swing_panels(up, low, edges, damage, count, dark, pale, hatch):
     up.plot(x, grown, color=dark, lw=1.6)
     up.plot([half], [50.0], marker="o", ms=5, color=dark, mec=PAPER)
     right = half < 0.6 * end
-    up.annotate(f"half of the damage\nabove {half:.3g} K", (half, 50.0), xytext=(9 if right else -9, -6), textcoords="offset points", va="center",
-                ha="left" if right else "right", fontsize=8, bbox={"boxstyle": "square,pad=0.15", "fc": PAPER, "ec": "none"})
+    up.annotate(f"half of the damage\nabove {half:.3g} K", (half, 50.0), xytext=(9 if right else -9, -5), textcoords="offset points", va="top",
+                ha="left" if right else "right", fontsize=8)
     at = float(np.interp(22.0, grown, x))
     up.annotate("damage", (at, 22.0), xytext=(-7, 3), textcoords="offset points", ha="right", color=dark, weight="bold", fontsize=8)
 
@@ -642,8 +642,8 @@ def loss_figure(result) -> Figure:
     figure = Figure(figsize=(8.6, 3.2), layout="constrained")
     ax = figure.subplots()
     x = np.arange(6)
-    for offset, chips, dark, pale, hatch, word in ((-0.2, slice(0, 6), BLUE, LIGHT_BLUE, "", "switch"), (0.2, slice(6, 12), RED, LIGHT_RED, "////", "diode")):
-        ax.bar(x + offset, mean[chips], width=0.36, facecolor=pale, edgecolor=dark, hatch=hatch, linewidth=0.8)
+    for offset, chips, dark, pale, hatch, word in ((-0.24, slice(0, 6), BLUE, LIGHT_BLUE, "", "switch"), (0.24, slice(6, 12), RED, LIGHT_RED, "////", "diode")):
+        ax.bar(x + offset, mean[chips], width=0.34, facecolor=pale, edgecolor=dark, hatch=hatch, linewidth=0.8)
         for k, (w, e) in enumerate(zip(mean[chips], history.energy_j[chips] / joule, strict=True)):
             words = f"{_three(w)} W\n{_three(e)} {unit}"
             ax.annotate(f"{word}\n{words}" if k == 0 else words, (k + offset, w), xytext=(0, 2), textcoords="offset points", ha="center", va="bottom",
@@ -698,7 +698,7 @@ def captions(result) -> dict[str, str]:
                         f"the limit is {limit_c(result):g} °C. The lanes below say which phase of the duty runs when."
                         + ("" if np.unique(history.phase_id).size == len(history.phases) else " Phases too short for the width of the picture have no lane."),
         "hot-stretch": "The stretch around the highest temperature, every chip in its own panel, switches above and diodes below; "
-                       "the band runs from the lowest to the highest temperature, the faint lines are the other chips of the same kind.",
+                       "the band runs from the lowest to the highest temperature, the thin grey line follows the hottest chip of the same kind.",
         "losses": f"Mean loss of each chip. Together they turn {number(history.energy_j.sum() / 3.6e6)} kWh into heat in a mission.",
     }
     ranked = rows_by_mode(result)
@@ -710,7 +710,7 @@ def captions(result) -> dict[str, str]:
     target = result.study.spec.lifetime.target_years
     out["life"] = (f"Life of every chip under every failure mode: {life}. "
                    + ("" if target is None else f"The broken line is the target of {target:g} years. ")
-                   + "Open marks rest mostly on cycles that nobody tested.")
+                   + "Open circles rest mostly on cycles outside the tested range; for diamonds no such range is stated.")
     out["damage-by-phase"] = ("Where the time goes and where the life goes: share of each phase in the mission's time and in the damage of the worst chip "
                               "of each failure mode." + (f" Only the {len(_MODE_LOOKS) - 1} failure modes with the shortest lives are drawn."
                                                          if len(ranked) >= len(_MODE_LOOKS) else ""))

@@ -59,6 +59,9 @@ class ResultFolder:
         written.append(self._whole("history.parquet", lambda p: result.history.to_frame().to_parquet(p, index=False)))
         figures = all_figures(result)
         for name, figure in figures.items():
+            # lay out once, not anew for each of the three times that a figure is drawn
+            figure.draw_without_rendering()
+            figure.set_layout_engine(None)
             for ending in ("png", "svg"):
                 written.append(self._whole(f"{name}.{ending}", lambda p, f=figure, e=ending: f.savefig(p, format=e, dpi=150)))
         written.append(self._text("report.html", report_html(result, figures, document.model_dump(mode="json"))))

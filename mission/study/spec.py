@@ -11,14 +11,14 @@ import numpy as np
 from pydantic import Field, model_validator
 
 from .. import device
-from ..device import PowerModule, load_module, shipped_modules
+from ..device import PowerModule, shipped_modules
 from ..duty import DutySpec, MissionProfile, read_profile
 from ..errors import InputError, RangeError, near_match
 from ..lifetime import FailureMode, resolve_modes
 from ..losses import Modulation
 from ..machine import MachineSpec
 from ..thermal import CoolingSpec, load_materials
-from ..tomlfile import FileModel, parse_model, read_toml
+from ..tomlfile import FileModel, parse_model, read_model, read_toml
 
 #: A study finds shipped modules by name whatever the current folder holds.
 _SHIPPED = Path(device.__file__).parent / "modules"
@@ -121,13 +121,13 @@ class Study:
         own = self.spec.module.materials
         return load_materials(None if own is None else self.folder / own)
 
-    def with_profile(self, profile: MissionProfile) -> "Study":
+    def with_profile(self, profile: MissionProfile) -> Study:
         """The same study on another duty."""
         changed = replace(self, profile=profile)
         _check_together(changed)
         return changed
 
-    def changed(self, section: str, **values) -> "Study":
+    def changed(self, section: str, **values) -> Study:
         """The same study with other values in one section of the file, checked like the file.
 
         Examples
@@ -168,13 +168,20 @@ def load_study(path) -> Study:
 
 def _assemble(spec: StudySpec, source: str, folder: Path, profile=None) -> Study:
     if spec.module.name is None:
-        module = load_module(folder / spec.module.file)
+        module = read_model(folder / spec.module.file, PowerModule)
     elif spec.module.name in shipped_modules():
-        module = load_module(_SHIPPED / f"{spec.module.name}.toml")
+        module = read_model(_SHIPPED / f"{spec.module.name}.toml", PowerModule)
     else:
         raise InputError(f"{source}, field module.name", f"'{spec.module.name}'", "a shipped module: " + ", ".join(shipped_modules()),
                          near_match(spec.module.name, shipped_modules()) or "give file = \"...\" for a module file of your own")
-    study = Study(spec, module, profile if profile is not None else read_profile(spec.duty, folder), (), source, folder)
+    if profile is None:
+        try:
+            profile = read_profile(spec.duty, folder)
+        except InputError as err:
+            if not err.where.startswith("field "):
+                raise
+            raise InputError(f"{source}, {err.where}", err.found, err.allowed, err.advice) from None
+    study = Study(spec, module, profile, (), source, folder)
     _check_together(study)
     if spec.module.materials is not None:
         load_materials(folder / spec.module.materials)

@@ -70,7 +70,7 @@ class NetworkBuilder:
                     waiting.append(other)
         return len(reached) == len(self._c)
 
-    def build(self, heated: list[int], watched: list[int]) -> "FullNetwork":
+    def build(self, heated: list[int], watched: list[int]) -> FullNetwork:
         """Assemble with heat entering at ``heated`` and further outputs ``watched``."""
         n = len(self._c)
         c = np.array(self._c)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Literal, Union
+from typing import Annotated, Literal
 
 import numpy as np
 from pydantic import Field, model_validator
@@ -49,7 +49,7 @@ class FosterCooling(_Coolant):
         return self
 
 
-CoolingSpec = Annotated[Union[FixedCooling, FosterCooling], Field(discriminator="kind")]
+CoolingSpec = Annotated[FixedCooling | FosterCooling, Field(discriminator="kind")]
 
 
 def sink_ladder(spec) -> CauerLadder | float:

@@ -1,0 +1,75 @@
+"""The README is followed literally: its commands exist, its study reads, its Python runs."""
+
+from __future__ import annotations
+
+import os
+import re
+import subprocess
+import sys
+from pathlib import Path
+
+import pytest
+
+ROOT = Path(__file__).parents[1]
+README = (ROOT / "README.md").read_text(encoding="utf-8")
+
+
+def block(name: str) -> str:
+    return re.search(rf"<!-- {name}:begin -->\n```sh\n(.*?)```\n<!-- {name}:end -->", README, re.S).group(1).strip()
+
+
+def code(language: str) -> list[str]:
+    return re.findall(rf"```{language}\n(.*?)```", README, re.S)
+
+
+def test_two_commands_each_one_line():
+    for name in ("run", "tests"):
+        assert "\n" not in block(name)
+        assert block(name).startswith("python3 -m venv .venv && .venv/bin/pip install ")
+
+
+def test_ci_runs_the_readme_command():
+    script = (ROOT / ".ci" / "run").read_text(encoding="utf-8")
+    assert "README.md" in script and "tests:begin" in script
+
+
+def test_demo_command_runs(tmp_path):
+    """The last part of the first command, in this environment."""
+    words = block("run").split("&&")[-1].split()
+    assert words[0] == ".venv/bin/mission" and words[1] == "run"
+    done = subprocess.run([sys.executable, "-m", "mission", "run", str(ROOT / words[2]), "--out", str(tmp_path / "out")],
+                          capture_output=True, text=True, cwd=tmp_path, env={**os.environ, "PYTHONPATH": str(ROOT)})
+    assert done.returncode == 0, done.stderr
+    assert (tmp_path / "out" / "report.html").stat().st_size > 100_000
+    assert "met" in done.stdout and "MISSED" not in done.stdout
+
+
+def test_study_of_the_readme_reads_an_own_csv(tmp_path):
+    """The study that the README shows, beside a log of the form it describes."""
+    study = next(c for c in code("toml") if "[duty.columns]" in c)
+    (tmp_path / "study.toml").write_text(study, encoding="utf-8")
+    lines = ["t;I_mot;n;T_in;what", "0;80,5;120;30;up", "10;0;0;30;stop", "20;-40,25;-120;31;down", "30;0;0;30;stop"]
+    (tmp_path / "log.csv").write_text("\n".join(lines) + "\n", encoding="utf-8")
+    from mission.cli import main
+
+    assert main(["check", str(tmp_path / "study.toml")]) == 0
+
+
+def test_layers_of_the_readme_make_a_module(tmp_path):
+    from mission.device import load_module, to_toml
+
+    layers = next(c for c in code("toml") if "thermal.layer" in c)
+    text = to_toml(load_module("heron-300"))
+    before, rest = text.split("[switch.thermal]", 1)
+    rest = rest[re.search(r"^\[", rest, re.M).start():]
+    (tmp_path / "own.toml").write_text(before + layers + "\n" + rest, encoding="utf-8")
+    assert load_module("own.toml", folder=tmp_path).switch.thermal.layer[0].material == "silicon"
+
+
+@pytest.mark.slow
+def test_python_of_the_readme_runs(tmp_path):
+    (tmp_path / "profiles").symlink_to(ROOT / "profiles")
+    done = subprocess.run([sys.executable, "-W", "error::DeprecationWarning", "-c", code("python")[0]], capture_output=True, text=True, cwd=tmp_path,
+                          env={**os.environ, "PYTHONPATH": str(ROOT)})
+    assert done.returncode == 0, done.stderr
+    assert (tmp_path / "out-hour" / "report.html").exists()
