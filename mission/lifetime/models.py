@@ -422,5 +422,5 @@ def load_model(name_or_path, options: dict[str, Any] | None = None, *, folder=No
     try:
         content = load_set(name_or_path, folder)
     except InputError as err:
-        raise err.at(where) if err.where == "lifetime model" else err
+        raise (err.at(where) if err.where == "lifetime model" else err) from None
     return LifetimeModel(content, dict(options or {}), where)

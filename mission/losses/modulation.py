@@ -13,7 +13,7 @@ import numpy as np
 MOD_INDEX_INJECTED_MAX = 2.0 / np.sqrt(3.0)
 
 
-class Modulation(str, enum.Enum):
+class Modulation(enum.StrEnum):
     """How the phase references are formed.
 
     ``SINE``: plain sine; ``THIRD_HARMONIC``: a sixth of third harmonic added;

@@ -130,7 +130,7 @@ def run(study: Study, *, progress: Progress | None = None, keep_cycles: bool = T
     >>> result.ledger.worst().life_years  # doctest: +SKIP
     """
     begin = time.perf_counter()
-    spec, profile = study.spec, study.profile
+    spec = study.spec
     tables = build_tables(study.module, spec.inverter.modulation)
     network = inverter_modes(study.module, spec.cooling, materials=study.materials(), relative_tolerance=spec.march.network_tolerance)
     settings = MarchSettings(f_slow_hz=spec.march.slow_below_hz, steps_per_period=spec.march.steps_per_period)

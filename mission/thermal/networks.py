@@ -127,8 +127,7 @@ def foster_to_cauer(foster: FosterNetwork) -> CauerLadder:
                 part = _times(part, [Fraction(1), other])
         num = [a + b for a, b in zip(num, part)]
     r_out, c_out = [], []
-    n = len(merged)
-    for stage in range(n):
+    for _ in merged:
         # Y = den/num = s c + (den - s c num)/num
         c = den[-1] / num[-1]
         rest = den[:]

@@ -76,7 +76,7 @@ def test_run_refuses_and_leaves_no_result(name, tmp_path, capsys):
 def command(*args, encoding=None):
     """The command as a process of its own."""
     env = {**os.environ, **({"PYTHONIOENCODING": encoding} if encoding else {})}
-    return subprocess.run([sys.executable, "-m", "mission", *map(str, args)], capture_output=True, text=True, timeout=120, env=env,
+    return subprocess.run([sys.executable, "-m", "mission", *map(str, args)], capture_output=True, text=True, timeout=120, env=env, check=False,
                           cwd=Path(mission.__file__).parent.parent)
 
 
