@@ -31,7 +31,7 @@ X_S, A_S, W_S, HEAT = 576, 672, 768, 960  # [mode]
 B_S = 1056  # [chip, S_MAX] heat input, one chip after the other
 C_S = 2208  # [mode, chip] output
 T, FREE, P, P_MID, ENERGY, D_SELF = 3360, 3376, 3392, 3408, 3424, 3440  # [chip]
-SHARED, GAIN, BASE, P_SUM = 864, 880, 896, 912  # [chip] coolant plus shared part, its latest change, its value then; energy since then
+SHARED, GAIN, BASE, P_SUM = 864, 880, 896, 912  # [chip] coolant plus shared part, its latest change, its value then; sum of losses since then
 HINGE = 3456  # [coefficient, 16]
 KNOT = 3584  # [corner]
 CASE_L, CASE_S, CASE = 3600, 3792, 4944  # [mode, chip], [mode, chip], [chip]
@@ -133,8 +133,8 @@ def local_step(w, n_l, n_h, part):
 
 
 @njit(cache=True, inline="always")
-def shared_step(w, n_s, source, factor, t_cool, keep, gain):
-    """Shared modes over the time since their latest step, with the mean power ``factor * w[source]``, exact.
+def shared_step(w, n_s, factor, t_cool, keep, gain):
+    """Shared modes over the time since their latest step, with the mean power ``factor * w[P_SUM]``, exact.
 
     ``keep`` and ``gain``: places of their factors.
     """
@@ -142,13 +142,14 @@ def shared_step(w, n_s, source, factor, t_cool, keep, gain):
         w[HEAT + s] = 0.0
     for i in range(N):
         for s in range(n_s):
-            w[HEAT + s] += w[B_S + i * S_MAX + s] * w[source + i]
+            w[HEAT + s] += w[B_S + i * S_MAX + s] * w[P_SUM + i]
     for s in range(n_s):
         w[X_S + s] = w[keep + s] * w[X_S + s] + w[gain + s] * factor * w[HEAT + s]
     for i in range(N):
         # what stands in SHARED is the extrapolation; T takes the difference, GAIN the true change
         w[FREE + i] = w[SHARED + i]
         w[SHARED + i] = t_cool
+        w[P_SUM + i] = 0.0
     for s in range(n_s):
         for i in range(N):
             w[SHARED + i] += w[C_S + s * N + i] * w[X_S + s]
@@ -355,8 +356,10 @@ def ripple_of(kind, t_mean, op, half_nodes, knot_c, lam, rho, nodes, result):
                 total += nodes[j, k]
             tau[j] = total
     result[0] = mean_p / mean_before - 1.0 if mean_before > 0.0 else 0.0
-    result[1] = tau.min()
-    result[2] = tau.max()
+    result[1], result[2] = tau[0], tau[0]
+    for j in range(n + 1):
+        result[1] = min(result[1], tau[j])
+        result[2] = max(result[2], tau[j])
     result[3] = mean_before
     result[4] = t_mean
 
@@ -508,8 +511,6 @@ def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, leve
                         e = np.expm1(-lam_s[s] * h_even * many)
                         w[A_S_MANY + s] = 1.0 + e
                         w[W_S_MANY + s] = -e / lam_s[s]
-                    for i in range(N):
-                        w[P_SUM + i] = 0.0
                     # the change that GAIN holds belongs to the step before; stretch it to the new one
                     for i in range(N):
                         w[GAIN + i] *= h_even * many / h_before if h_before > 0.0 else 0.0
@@ -525,22 +526,19 @@ def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, leve
             for leg in range(3):
                 leg_losses(leg, wrap(middle - THIRD * leg), half_nodes, w)
         # the shared modes are slow: in even steps they move once in several of them, with the mean power
-        if h == h_even:
-            local_step(w, n_l, n_h, 1.0 / many if h_before > 0.0 else 0.0)
-            for i in range(N):
-                w[P_SUM + i] += w[P + i]
-            since += 1
-            if since == many:
-                shared_step(w, n_s, P_SUM, 1.0 / many, t_cool, A_S_MANY, W_S_MANY)
-                for i in range(N):
-                    w[P_SUM + i] = 0.0
-                since = 0
-                h_before = h * many
-        else:
-            local_step(w, n_l, n_h, h / h_before if h_before > 0.0 else 0.0)
-            shared_step(w, n_s, P, 1.0, t_cool, A_S, W_S)
-            h_before = h
-        if h == h_even:
+        even = h == h_even
+        part = 0.0
+        if h_before > 0.0:
+            part = 1.0 / many if even else h / h_before
+        local_step(w, n_l, n_h, part)
+        for i in range(N):
+            w[P_SUM + i] += w[P + i]
+        since += 1
+        if since == many or not even:
+            shared_step(w, n_s, 1.0 / since, t_cool, A_S_MANY if even else A_S, W_S_MANY if even else W_S)
+            h_before = h * since
+            since = 0
+        if even:
             done_even += 1
             used = begin_even + done_even * h_even if done_even < count_even else duration
         else:
@@ -648,8 +646,8 @@ def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_l
     no_ripple = np.zeros(N)
     extreme = np.empty((4, N))
     pair, pair_time, pair_ripple = np.empty((2, N)), np.empty(2), np.empty(N)
-    fresh = np.zeros_like(ripple)
-    fresh_nodes = np.zeros_like(nodes)
+    fresh = np.zeros(ripple.shape)
+    fresh_nodes = np.zeros(nodes.shape)
     half_nodes = np.zeros((NODES + 1, 2, max(knot_c.size, 2)))
     fine = False  # whether every node stands for the latest operating point
     for row in range(begin, table.shape[0]):
@@ -657,11 +655,14 @@ def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_l
         f = op[FREQ]
         left = op[DT]
         if row > begin:
+            fullest = 0
             # angle steps, or doubling steps and the settling periods
             most = 64 + int(left / settings[H_MAX]) + int(settings[STEPS] * (settings[SETTLE_PERIODS] + 2.0))
             if op[I_PEAK] > 0.0 and 0.0 < f < settings[F_SLOW]:
                 most += int(left * max(f * settings[STEPS], 50.0))
-            if p_count.max() + most > cap or rip_count[0] + 3 > rip.shape[0]:
+            for signal in range(2 * N):
+                fullest = max(fullest, p_count[signal])
+            if fullest + most > cap or rip_count[0] + 3 > rip.shape[0]:
                 return row, OK
         phase = float(phases[row])
         change = op[T_COOLANT] - now[COOLANT]
@@ -705,64 +706,73 @@ def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_l
             ripples(op, w, group, group_kind, group_lam, group_rho, half_nodes, knot_c, fresh_nodes, fresh)
             if changed and before != ANGLE:
                 # a jump is first marched by angle, from the temperatures that really stand there
-                jump = 0.0
+                jump, largest = 0.0, 0.0
                 for g in range(fresh.shape[0]):
                     then = ripple[g, 2] - ripple[g, 1] if before == MEAN else 0.0
+                    largest = max(largest, then)
                     jump = max(jump, abs(fresh[g, 2] - fresh[g, 1] - then))
-                if jump > max(settings[SETTLE_K], 0.15 * (ripple[:, 2] - ripple[:, 1]).max() if before == MEAN else 0.0):
+                if jump > max(settings[SETTLE_K], 0.15 * largest):
                     if before == MEAN:
                         close_window(now, old, window, pair, pair_time, pair_ripple,
                                      last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count, rip, rip_row, rip_count)
                         add_ripple(1.0, old, now[THETA], w, n_l, n_h, group, group_lam, group_rho, ripple, nodes)
                     before = ANGLE
                     now[SETTLE] = settings[SETTLE_PERIODS] / f
-            ripple[:] = fresh
-            nodes[:] = fresh_nodes
-            ripple_op[:] = op
-        old[:] = op
+            for g in range(fresh.shape[0]):
+                for k in range(5):
+                    ripple[g, k] = fresh[g, k]
+                for j in range(RIPPLE_NODES + 1):
+                    for k in range(n_l):
+                        nodes[g, j, k] = fresh_nodes[g, j, k]
+            for k in range(N_ROW):
+                ripple_op[k] = op[k]
+        for k in range(N_ROW):
+            old[k] = op[k]
         for i in range(N):
             w[ENERGY + i] = 0.0
         status = OK
-        if want == IDLE:
-            for j in range(16 * K_MAX):
-                w[HINGE + j] = 0.0
-            status = cross(row, left, IDLE, phase, op, w, n_l, n_s, lam_l, rho, lam_s, levels, odd, half_nodes,
+        by_angle = left if want == ANGLE else min(left, now[SETTLE])
+        # first what is idle or goes by angle, then what goes by the mean; one of the two is often empty
+        for part in range(2):
+            if part == 0:
+                if want == IDLE:
+                    regime, length = IDLE, left
+                    for j in range(16 * K_MAX):
+                        w[HINGE + j] = 0.0
+                else:
+                    regime, length = ANGLE, by_angle
+                    if length > 0.0 and (changed or not fine):
+                        half_wave(op, 1, i_step, voltage, energy, modulation, knot_c, half_nodes)
+                        fine = True
+            else:
+                regime, length = MEAN, left
+                if want != MEAN:
+                    length = 0.0
+                if length > 0.0:
+                    if by_angle > 0.0:
+                        ripples(op, w, group, group_kind, group_lam, group_rho, half_nodes, knot_c, nodes, ripple)
+                    if changed or renew or before == ANGLE:
+                        mean_hinges(op, w, i_step, conduction, energy_mean, order, amount, knot_c, group, ripple)
+                    if before == ANGLE:
+                        add_ripple(-1.0, op, now[THETA], w, n_l, n_h, group, group_lam, group_rho, ripple, nodes)
+            if length <= 0.0 or status != OK:
+                continue
+            opened = now[WINDOW_CYCLES] == 0.0
+            if regime == MEAN and opened:
+                now[WINDOW_START] = now[TIME]
+            now[REGIME] = regime
+            status = cross(row, length, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, levels, odd, half_nodes,
                            knot_c, settings, now, t_buffer, t_time, c_buffer, c_time, no_ripple, extreme, row_temps[row],
                            last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
-            now[REGIME] = IDLE
-        else:
-            by_angle = left if want == ANGLE else min(left, now[SETTLE])
-            if by_angle > 0.0:
-                if changed or not fine:
-                    half_wave(op, 1, i_step, voltage, energy, modulation, knot_c, half_nodes)
-                    fine = True
-                status = cross(row, by_angle, ANGLE, phase, op, w, n_l, n_s, lam_l, rho, lam_s, levels, odd, half_nodes,
-                               knot_c, settings, now, t_buffer, t_time, c_buffer, c_time, no_ripple, extreme, row_temps[row],
-                               last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
-                left -= by_angle
+            if regime == ANGLE:
                 before = ANGLE
-                now[REGIME] = ANGLE
+                left -= length
+                if left <= 1e-9 * op[DT]:
+                    left = 0.0
                 if want == MEAN:
-                    now[SETTLE] -= by_angle
-                    if now[SETTLE] < 1e-9 / f:
-                        now[SETTLE] = 0.0
-                    if left <= 1e-9 * op[DT]:
-                        left = 0.0
-                    if left > 0.0:
-                        ripples(op, w, group, group_kind, group_lam, group_rho, half_nodes, knot_c, nodes, ripple)
-            if want == MEAN and left > 0.0 and status == OK:
-                if changed or renew or before == ANGLE:
-                    mean_hinges(op, w, i_step, conduction, energy_mean, order, amount, knot_c, group, ripple)
-                if before == ANGLE:
-                    add_ripple(-1.0, op, now[THETA], w, n_l, n_h, group, group_lam, group_rho, ripple, nodes)
-                now[REGIME] = MEAN
-                opened = now[WINDOW_CYCLES] == 0.0
-                if opened:
-                    now[WINDOW_START] = now[TIME]
-                status = cross(row, left, MEAN, phase, op, w, n_l, n_s, lam_l, rho, lam_s, levels, odd, half_nodes,
-                               knot_c, settings, now, t_buffer, t_time, c_buffer, c_time, no_ripple, extreme, row_temps[row],
-                               last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
-                cycles = f * left
+                    now[SETTLE] = now[SETTLE] - length if now[SETTLE] - length >= 1e-9 / f else 0.0
+            elif regime == MEAN:
+                cycles = f * length
                 for i in range(N):
                     g = group[i]
                     share = ripple_share(w, n_h, i, ripple[g])

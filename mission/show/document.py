@@ -191,7 +191,9 @@ def rests_on(result) -> list[str]:
     if net.case_coolant_bound > 0.02 and any(m.acts_on == "case" for m in study.modes):
         out.append(f"heat: with a sink that stores no heat, case points follow a coolant step with an error of up to {net.case_coolant_bound:.0%} of the step; "
                    "give the sink's heat capacity if the coolant jumps")
-    if study.spec.march.start == "repeat":
+    if not result.complete:
+        out.append("the run did not reach the mission's end, so it could not close on its start; the residue is counted as half cycles")
+    elif study.spec.march.start == "repeat":
         out.append(f"the mission repeats: start and end temperatures agree within {result.closes_within_k:.2g} K after {result.passes} pass"
                    f"{'es' if result.passes > 1 else ''}")
     else:

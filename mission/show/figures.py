@@ -24,6 +24,7 @@ from matplotlib.lines import Line2D
 from matplotlib.patches import Polygon
 from matplotlib.ticker import FixedLocator, FuncFormatter, LogLocator, MaxNLocator, NullFormatter, NullLocator
 
+from .tables import BEYOND_YEARS, life_words
 from .text import number
 
 STYLE_FILE = Path(__file__).with_name("kelvin.mplstyle")
@@ -267,9 +268,10 @@ def _draw_lanes(ax, history, starts, edges, lanes, here, n_lanes, peak_phase):
     last = history.phase_id.size
     names = _phase_words(history.phases)
     if lanes is None:
-        # too many phases for lanes of their own: the longest ones keep theirs
+        # too many phases for lanes of their own: the one of the peak and the longest ones keep theirs
         time = np.bincount(history.phase_id, weights=np.diff(history.edge_s), minlength=len(history.phases))
-        kept = np.sort(np.argsort(-time)[: n_lanes - 1])
+        time[peak_phase] = np.inf
+        kept = np.sort(np.argsort(-time, kind="stable")[: n_lanes - 1])
         groups = [([p], names[p]) for p in kept] + [([p for p in here if p not in set(kept)], f"{here.size - kept.size} other phases")]
     else:
         groups = [([p], names[p]) for p in lanes]
@@ -337,7 +339,7 @@ def _class_shares(result, which, mode, row):
     chip = result.history.chips.index(row.chip)
     count = result.cycle_map.count[chip + (0 if mode.acts_on == "junction" else 12)]
     damage = result.cycle_map.damage[which, chip]
-    total = damage.sum()
+    total = damage.sum() if row.life_years <= BEYOND_YEARS else 0.0
     return count, damage / total if total > 0.0 else np.zeros_like(damage)
 
 
@@ -401,7 +403,7 @@ def _damage_circles(ax, r, m, share, levels):
     percent = 100.0 * share
     drawn = percent >= levels[0]
     if not drawn.any():
-        ax.text(0.015, 0.93, "no damage", transform=ax.transAxes, va="top", fontsize=8)
+        ax.text(0.015, 0.93, "no damage worth naming", transform=ax.transAxes, va="top", fontsize=8)
         return None
     order = np.argsort(percent[drawn])[::-1]
     percent = percent[drawn][order]
@@ -445,7 +447,8 @@ def damage_phase_figure(result) -> Figure:
     ranked = [(k, mode, rows[0]) for k, mode, rows in rows_by_mode(result)][: len(_MODE_LOOKS) - 1]
     phases = result.study.profile.phases
     names = _phase_words(phases)
-    shares = [np.array([row.damage_by_phase[p] for p in phases]) / (row.damage_per_mission or 1.0) for _, _, row in ranked]
+    shares = [np.array([row.damage_by_phase[p] for p in phases]) / (row.damage_per_mission if row.life_years <= BEYOND_YEARS else math.inf)
+              for _, _, row in ranked]
     weight = sum(shares) if shares else time / max(time.sum(), 1e-300)
     order = np.lexsort((-time, -weight))
     columns = [time / max(time.sum(), 1e-300), *shares]
@@ -459,7 +462,7 @@ def damage_phase_figure(result) -> Figure:
     figure = Figure(figsize=(9.6, 1.3 + 0.27 * len(words)), layout="constrained")
     axes = np.atleast_1d(figure.subplots(1, len(columns), sharey=True))
     looks = [(GREY, RULE, "")] + [_MODE_LOOKS[k % len(_MODE_LOOKS)] for k, _, _ in ranked]
-    titles = ["time"] + [f"{plain(mode.name, 30, f'failure mode {k + 1}')}\n{row.chip}, {_three(row.life_years)} years" for k, mode, row in ranked]
+    titles = ["time"] + [f"{plain(mode.name, 30, f'failure mode {k + 1}')}\n{row.chip}, {life_words(row.life_years)} years" for k, mode, row in ranked]
     for ax, values, (dark, pale, hatch), title in zip(axes, columns, looks, titles, strict=True):
         ax.barh(range(len(words)), 100.0 * values, height=0.64, facecolor=pale, edgecolor=dark, linewidth=0.7, hatch=hatch)
         for y, value in enumerate(values):
@@ -471,7 +474,7 @@ def damage_phase_figure(result) -> Figure:
         ax.grid(axis="y", visible=False)
         ax.tick_params(axis="y", length=0)
         if ax is not axes[0] and not values.any():
-            ax.text(0.5, 0.5, "no damage", transform=ax.transAxes, ha="center", va="center")
+            ax.text(0.5, 0.5, "no damage worth naming", transform=ax.transAxes, ha="center", va="center")
     axes[0].set_yticks(range(len(words)), words)
     axes[0].set_ylim(len(words) - 0.5, -0.5)
     axes[0].set_ylabel(labels[1])
@@ -542,7 +545,7 @@ def _swing_panels(up, low, edges, damage, count, dark, pale, hatch):
     low.set_xlim(0.0, end)
     half = half_damage_k(edges, damage)
     if half is None:
-        low.text(0.5, 0.5, "no damage", transform=low.transAxes, ha="center", va="center")
+        low.text(0.5, 0.5, "no damage worth naming", transform=low.transAxes, ha="center", va="center")
         low.set_ylim(0.0, 1.0)
         return
     up.plot(x, grown, color=dark, lw=1.6)
@@ -591,7 +594,7 @@ def life_figure(result) -> Figure:
     known = np.append(finite, [] if target is None else target)
     low = 0.6 * known.min()
     # lives beyond this are drawn at the edge: their exact size says nothing
-    cap = min(2.0 * known.max(), 1e4 * known.min())
+    cap = min(2.0 * known.max(), max(1e4 * known.min(), 0.0 if target is None else 2.0 * target))
     n_cols = min(len(modes), 3)
     n_rows = math.ceil(len(modes) / n_cols)
     figure = Figure(figsize=(9.6, 0.7 + 3.3 * n_rows), layout="constrained")
@@ -605,12 +608,12 @@ def life_figure(result) -> Figure:
             y, beyond = chips.index(row.chip), row.life_years > cap
             ax.plot([min(row.life_years, cap)], [y], ls="", marker=">" if beyond else "D" if kind == "unstated" else "o", ms=5.5, mew=1.2, mec=dark,
                     mfc=dark if kind == "tested" else PAPER, clip_on=False, zorder=3)
-            ax.annotate("no damage" if math.isinf(row.life_years) else _three(row.life_years), (min(row.life_years, cap), y),
+            ax.annotate("no damage" if math.isinf(row.life_years) else life_words(row.life_years), (min(row.life_years, cap), y),
                         xytext=(7, 0), textcoords="offset points", va="center", fontsize=7.5, zorder=4,
                         bbox={"boxstyle": "square,pad=0.05", "fc": PAPER, "ec": "none"})
         if target is not None:
             ax.axvline(target, color=INK, lw=1.3, ls=(0, (7, 3)), zorder=2)
-            ax.annotate(f"target {target:g} years", (target, 1.0), xycoords=("data", "axes fraction"), xytext=(-3, 1), textcoords="offset points",
+            ax.annotate(f"target {number(target)} years", (target, 1.0), xycoords=("data", "axes fraction"), xytext=(-3, 1), textcoords="offset points",
                         ha="right", va="bottom", fontsize=7.5)
         ax.set_title(plain(mode.name, 34, f"failure mode {which + 1}"), pad=14)
         ax.set_xscale("log")
@@ -706,10 +709,10 @@ def captions(result) -> dict[str, str]:
         return out
     _, mode, rows = ranked[0]
     worst = rows[0]
-    life = "no damage is done" if worst.damage_per_mission == 0.0 else f"the shortest is {number(worst.life_years, 3)} years ({worst.chip}, {mode.name})"
+    life = "no damage is done" if worst.damage_per_mission == 0.0 else f"the shortest is {life_words(worst.life_years)} years ({worst.chip}, {mode.name})"
     target = result.study.spec.lifetime.target_years
     out["life"] = (f"Life of every chip under every failure mode: {life}. "
-                   + ("" if target is None else f"The broken line is the target of {target:g} years. ")
+                   + ("" if target is None else f"The broken line is the target of {number(target)} years. ")
                    + "Open circles rest mostly on cycles outside the tested range; for diamonds no such range is stated.")
     out["damage-by-phase"] = ("Where the time goes and where the life goes: share of each phase in the mission's time and in the damage of the worst chip "
                               "of each failure mode." + (f" Only the {len(_MODE_LOOKS) - 1} failure modes with the shortest lives are drawn."
@@ -717,7 +720,7 @@ def captions(result) -> dict[str, str]:
     out["damage-by-swing"] = ("Damage by the swing of the cycles, in classes below and added up above, for the worst chip of "
                               + ("the failure mode." if len(ranked) == 1 else "the two failure modes with the shortest lives.") + _halves(result, ranked[:2]))
     out["cycle-map"] = ("Cycles by swing and mean temperature, for the same chips. Grey squares: how many a mission. "
-                        "Circles: their share of the damage, larger and darker for more. The broken outline holds the cycles that were tested.")
+                        "Circles: their share of the damage, larger for more, in the shades of the scale. The broken outline holds the cycles that were tested.")
     return out
 
 

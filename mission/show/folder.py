@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import contextlib
 import os
+from datetime import date
 from pathlib import Path
 
 from ..cycles import CycleWriter
@@ -64,7 +65,7 @@ class ResultFolder:
             figure.set_layout_engine(None)
             for ending in ("png", "svg"):
                 written.append(self._whole(f"{name}.{ending}", lambda p, f=figure, e=ending: f.savefig(p, format=e, dpi=150)))
-        written.append(self._text("report.html", report_html(result, figures, document.model_dump(mode="json"))))
+        written.append(self._text("report.html", report_html(result, figures, document.model_dump(mode="json"), date=date.today().isoformat())))
         return written
 
     def _text(self, name, text):

@@ -7,7 +7,7 @@ import re
 from pathlib import Path
 
 from . import figures as _figures
-from .tables import outside_words, unit_words
+from .tables import BEYOND_YEARS, life_words, outside_words, unit_words
 from .text import number
 
 TEMPLATE = Path(__file__).with_name("report.html")
@@ -55,7 +55,7 @@ def report_html(result, figures, document: dict, *, date: str | None = None) -> 
     from jinja2 import Environment, StrictUndefined
 
     environment = Environment(autoescape=True, trim_blocks=True, lstrip_blocks=True, undefined=StrictUndefined)
-    environment.filters |= {"number": _number, "unit": unit_words, "span": span_words, "percent": _percent, "clock": clock_words}
+    environment.filters |= {"number": _number, "unit": unit_words, "span": span_words, "percent": _percent, "clock": clock_words, "life": life_words}
     captions = _figures.captions(result)
     drawn: dict[str, list] = {"heat": [], "ledger": [], "damage": []}
     for name, figure in figures.items():
@@ -126,10 +126,15 @@ def _percent(share) -> str:
     return f"{text}\N{NO-BREAK SPACE}%"
 
 
+def _counts(row) -> bool:
+    """Whether the damage is more than rounding."""
+    return row["life_years"] is not None and row["life_years"] <= BEYOND_YEARS
+
+
 def _ledger_row(row, stated):
-    phase = max(row["damage_by_phase"], key=row["damage_by_phase"].get) if row["damage_per_mission"] > 0.0 else None
+    phase = max(row["damage_by_phase"], key=row["damage_by_phase"].get) if _counts(row) else None
     return row | {
-        "stated": stated, "outside": outside_words(row["outside_share"], stated) if row["damage_per_mission"] > 0.0 else "–",
+        "stated": stated, "counts": _counts(row), "outside": outside_words(row["outside_share"], stated) if _counts(row) else "–",
         "main_phase": phase, "main_share": row["damage_by_phase"][phase] / row["damage_per_mission"] if phase is not None else 0.0,
     }
 
@@ -153,7 +158,7 @@ def _verdict(document, worst, hot):
     for e in document["limits"]:
         unit = unit_words(e["unit"])
         if e["what"] == "life":
-            value = "without end" if e["value"] is None else f"{_number(e['value'], 3)} years"
+            value = "without end" if e["value"] is None else f"{life_words(e['value'])} years"
             parts.append(f"The shortest life is {value} ({e['where']}) against a target of {_number(e['limit'])} years.")
         elif e["what"] == "highest junction temperature":
             side = "below" if e["met"] else "above"
@@ -166,12 +171,12 @@ def _verdict(document, worst, hot):
         parts.append("No failure mode is given, so nothing is said about life.")
     elif not has_target and worst:
         first = worst[0]
-        life = "without end, for no damage is done" if first["life_years"] is None else f"{_number(first['life_years'], 3)} years"
+        life = "without end, for no damage is done" if first["life_years"] is None else f"{life_words(first['life_years'])} years"
         parts.append(f"No target for life is set; the shortest is {life}" + (f" ({first['chip']}, {first['mode']})." if first["life_years"] is not None else "."))
     trust = []
     for row in worst:
         # a life a few times longer than the shortest decides as much once its model is in doubt
-        if row["damage_per_mission"] <= 0.0 or row["damage_per_mission"] < 0.2 * worst[0]["damage_per_mission"]:
+        if not _counts(row) or row["damage_per_mission"] < 0.2 * worst[0]["damage_per_mission"]:
             continue
         if not row["stated"]:
             trust.append(f"{row['mode']}: no tested range is stated for the model behind its life ({row['model']}).")
@@ -206,7 +211,7 @@ def _phases(document, worst):
     total = sum(p["time_s"] for p in document["duty"]["phases"]) or 1.0
     out = []
     for p in document["duty"]["phases"]:
-        shares = [w["damage_by_phase"].get(p["phase"], 0.0) / w["damage_per_mission"] if w["damage_per_mission"] > 0.0 else 0.0 for w in worst]
+        shares = [w["damage_by_phase"].get(p["phase"], 0.0) / w["damage_per_mission"] if _counts(w) else 0.0 for w in worst]
         out.append({"phase": p["phase"], "time_s": p["time_s"], "time_share": p["time_s"] / total, "shares": shares})
     return sorted(out, key=lambda r: (-sum(r["shares"]), -r["time_s"]))
 
@@ -215,7 +220,7 @@ def _choices(rows):
     """For the worst row of each mode: the life had a choice of the model been made otherwise."""
     out, seen = [], set()
     for row in rows:
-        if row["mode"] in seen or not row["damage_by_choice"] or row["life_years"] is None:
+        if row["mode"] in seen or not row["damage_by_choice"] or not _counts(row):
             continue
         seen.add(row["mode"])
         for choice, damage in row["damage_by_choice"].items():

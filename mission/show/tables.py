@@ -51,6 +51,25 @@ def outside_words(share: float, stated: bool) -> str:
     return f"{share:.0%}".replace("%", "\N{NO-BREAK SPACE}%") if stated else "not stated"
 
 
+#: A longer life is no statement about a device any more; its damage is rounding, its shares mean nothing.
+BEYOND_YEARS = 1e6
+
+
+def life_words(years) -> str:
+    """A life in years with three figures; what lies beyond any use is not dressed up as a number.
+
+    Examples
+    --------
+    >>> life_words(13.653), life_words(21.0), life_words(3e34), life_words(None)
+    ('13.7', '21.0', 'over a million', 'without end')
+    """
+    if years is None or years == float("inf"):
+        return "without end"
+    if years > BEYOND_YEARS:
+        return "over a million"
+    return f"{years:#.3g}".rstrip(".") if 1e-2 <= abs(years) < 1000.0 else number(years, 3)
+
+
 def unit_words(unit: str) -> str:
     """Units as people print them."""
     return {"degC": "°C", "K": "K"}.get(unit, unit)
@@ -63,14 +82,14 @@ _SHORT = """\
 <caption>Limits and target</caption>
 <thead><tr><th scope="col">what</th><th scope="col">result</th><th scope="col">limit</th><th scope="col">unit</th><th scope="col">verdict</th>\
 <th scope="col">where</th></tr></thead>
-<tbody>{% for v in verdicts %}<tr><th scope="row">{{ v.what }}</th><td>{{ v.value | number }}</td><td>{{ v.limit | number }}</td><td>{{ v.unit | unit }}</td>\
+<tbody>{% for v in verdicts %}<tr><th scope="row">{{ v.what }}</th><td>{{ (v.value | life) if v.what == "life" else (v.value | number) }}</td><td>{{ v.limit | number }}</td><td>{{ v.unit | unit }}</td>\
 <td>{{ "met" if v.met else "missed" }}</td><td>{{ v.where }}</td></tr>{% endfor %}</tbody>
 </table>
 {% if rows %}<table>
 <caption>Shortest lives{% if total > rows|length %} ({{ rows|length }} of {{ total }}; all in result.ledger.to_frame()){% endif %}</caption>
 <thead><tr><th scope="col">chip</th><th scope="col">failure mode</th><th scope="col">life, years</th><th scope="col">damage a mission</th>\
 <th scope="col">damage outside tests</th><th scope="col">worst swing, K</th></tr></thead>
-<tbody>{% for r in rows %}<tr><th scope="row">{{ r.chip }}</th><td>{{ r.mode }}</td><td>{{ r.life_years | number }}</td>\
+<tbody>{% for r in rows %}<tr><th scope="row">{{ r.chip }}</th><td>{{ r.mode }}</td><td>{{ r.life_years | life }}</td>\
 <td>{{ r.damage_per_mission | number }}</td><td>{{ r.outside }}</td><td>{{ r.worst_range_k | number }}</td></tr>{% endfor %}</tbody>
 </table>{% else %}<p>No failure mode is given: temperatures only.</p>{% endif %}
 <p><small>An engineering estimate. Verify on the real device; high voltage, stored energy and hot surfaces: see the cautions of the report.</small></p>
@@ -96,7 +115,7 @@ def result_html(result) -> str:
     top = [{"chip": r.chip, "mode": r.mode, "life_years": r.life_years, "damage_per_mission": r.damage_per_mission,
             "worst_range_k": r.worst_range_k, "outside": outside_words(r.outside_share, stated[r.mode])} for r in rows[:TOP_ROWS]]
     environment = Environment(autoescape=True)
-    environment.filters |= {"number": number, "unit": unit_words}
+    environment.filters |= {"number": number, "unit": unit_words, "life": life_words}
     return environment.from_string(_SHORT).render(
         name=result.study.name, word="every limit is met" if result.ok else "a limit is missed", complete=result.complete,
         verdicts=result.verdicts, rows=top, total=len(rows))
