@@ -7,6 +7,10 @@ import numpy as np
 from ..errors import InputError, RangeError
 from .table import CLOSED, RESIDUE, CycleTable
 
+#: Stands for an attribute that was not given: zero at every point.
+_NONE = np.zeros(1)
+_PIECE = 16384
+
 
 class CycleCounter:
     """Counts the cycles of several signals that arrive in blocks.
@@ -28,6 +32,7 @@ class CycleCounter:
         self._stack = [np.empty((64, 5)) for _ in range(n_signals)]
         self._depth = [0] * n_signals
         self._heading = [0] * n_signals
+        self._room = np.empty((0, 8))
         self._out: list[tuple[int, np.ndarray, int]] = []
 
     def push(self, signal, t_c, time_s, phase_id=None, half_period_s=None, ripple_k=None) -> None:
@@ -49,30 +54,33 @@ class CycleCounter:
         RangeError
             A temperature that is not finite.
         """
-        t_c = np.asarray(t_c, float)
-        points = np.zeros((t_c.size, 5))
-        points[:, 0], points[:, 1] = t_c, time_s
+        t_c, time_s = np.asarray(t_c, float), np.asarray(time_s, float)
         if not np.isfinite(t_c).all():
             bad = int(np.flatnonzero(~np.isfinite(t_c))[0])
             raise RangeError(f"t_c[{bad}]", f"{t_c[bad]}", "a finite temperature", "correct the series; nothing is filled in")
-        for column, values in ((2, phase_id), (3, half_period_s), (4, ripple_k)):
-            if values is not None:
-                points[:, column] = values
-        self._count(signal, points, CLOSED)
+        extra = [_NONE if v is None else np.asarray(v, float) for v in (phase_id, half_period_s, ripple_k)]
+        for name, values in zip(("time_s", "phase_id", "half_period_s", "ripple_k"), (time_s, *extra)):
+            if values is not _NONE and values.shape != t_c.shape:
+                raise RangeError(name, f"shape {values.shape}", f"shape {t_c.shape}, as t_c")
+        # pieces that stay in the cache
+        for a in range(0, t_c.size, _PIECE):
+            b = slice(a, a + _PIECE)
+            self._count(signal, t_c[b], time_s[b], [v if v is _NONE else v[b] for v in extra], CLOSED)
 
-    def _count(self, signal, points, kind):
+    def _count(self, signal, t_c, time_s, extra, kind):
         from .kernels import count
 
         depth = self._depth[signal]
-        need = depth + points.shape[0] + 1
+        need = depth + t_c.size + 1
         if need > self._stack[signal].shape[0]:
             bigger = np.empty((2 * need, 5))
             bigger[:depth] = self._stack[signal][:depth]
             self._stack[signal] = bigger
-        out = np.empty((need // 2 + 1, 8))
-        self._depth[signal], self._heading[signal], closed = count(points, self._stack[signal], depth, self._heading[signal], out)
+        if self._room.shape[0] < need // 2 + 1:
+            self._room = np.empty((need + 2, 8))
+        self._depth[signal], self._heading[signal], closed = count(t_c, time_s, *extra, self._stack[signal], depth, self._heading[signal], self._room)
         if closed:
-            self._out.append((signal, out[:closed].copy(), kind))
+            self._out.append((signal, self._room[:closed].copy(), kind))
 
     def drain(self) -> CycleTable:
         """Cycles closed since the last call."""
@@ -103,9 +111,8 @@ class CycleCounter:
             if rest.shape[0] < 2:
                 continue
             if residue == "repeat":
-                again = rest.copy()
-                again[:, 1] += period_s
-                self._count(signal, again, RESIDUE)
+                columns = [np.ascontiguousarray(rest[:, k]) for k in range(5)]
+                self._count(signal, columns[0], columns[1] + period_s, columns[2:], RESIDUE)
                 tables.append(self.drain())
             else:
                 tables.append(_table(signal, _half_cycles(rest), RESIDUE, 0.5))

@@ -12,58 +12,65 @@ RANGE, MEAN, LOW, HIGH, HEATING, START, END, PEAK_PHASE = range(8)
 RIPPLE_REACH = 1.25
 
 
-@njit(cache=True)
-def _close(a, b, after, out):
-    """The cycle between two points that ``after`` closes."""
-    out[RANGE] = abs(b[VALUE] - a[VALUE])
-    out[MEAN] = 0.5 * (a[VALUE] + b[VALUE])
-    rising = b[VALUE] > a[VALUE]
-    peak = b if rising else a
-    out[LOW] = a[VALUE] if rising else b[VALUE]
-    out[HIGH] = peak[VALUE]
-    if peak[HALF] > 0.0 and out[RANGE] <= RIPPLE_REACH * peak[RIPPLE]:
-        out[HEATING] = peak[HALF]
+@njit(cache=True, inline="always")
+def _close(stack, first, out, row):
+    """The cycle between points ``first`` and ``first + 1`` of the stack, which the point after them closes."""
+    value_a, value_b = stack[first, VALUE], stack[first + 1, VALUE]
+    time_a, time_b = stack[first, TIME], stack[first + 1, TIME]
+    rising = value_b > value_a
+    peak = first + 1 if rising else first
+    size = value_b - value_a if rising else value_a - value_b
+    if stack[peak, HALF] > 0.0 and size <= RIPPLE_REACH * stack[peak, RIPPLE]:
+        heating = stack[peak, HALF]
     elif rising:
-        out[HEATING] = b[TIME] - a[TIME]
+        heating = time_b - time_a
     else:
         # the rise that closes it, up to the level of the earlier peak
-        out[HEATING] = (after[TIME] - b[TIME]) * (a[VALUE] - b[VALUE]) / (after[VALUE] - b[VALUE])
-    out[START] = a[TIME]
-    out[END] = b[TIME]
-    out[PEAK_PHASE] = peak[PHASE]
+        heating = (stack[first + 2, TIME] - time_b) * size / (stack[first + 2, VALUE] - value_b)
+    out[row, RANGE] = size
+    out[row, MEAN] = 0.5 * (value_a + value_b)
+    out[row, LOW] = value_a if rising else value_b
+    out[row, HIGH] = value_b if rising else value_a
+    out[row, HEATING] = heating
+    out[row, START] = time_a
+    out[row, END] = time_b
+    out[row, PEAK_PHASE] = stack[peak, PHASE]
 
 
 @njit(cache=True)
-def count(points, stack, depth, heading, out):
-    """Push ``points`` (n, 5) onto the stack; its top is provisional until the direction turns.
+def count(value, time, phase, half, ripple, stack, depth, heading, out):
+    """Push points (n,) onto the stack; its top is provisional until the direction turns.
 
+    ``phase``, ``half`` and ``ripple`` may have a single entry, which then holds for all points.
     Returns (depth, heading, cycles closed). ``heading``: 0 level or empty, 1 rising, -1 falling.
     """
     closed = 0
-    for j in range(points.shape[0]):
-        value = points[j, VALUE]
+    many_phase, many_half, many_ripple = phase.size > 1, half.size > 1, ripple.size > 1
+    for j in range(value.size):
+        v = value[j]
         if depth > 0:
             top = stack[depth - 1, VALUE]
-            if value == top:
+            if v == top:
                 continue
-            turn = 1 if value > top else -1
-            if turn == heading:
-                stack[depth - 1] = points[j]
-            else:
-                stack[depth] = points[j]
+            turn = 1 if v > top else -1
+            if turn != heading:
                 depth += 1
             heading = turn
         else:
-            stack[0] = points[j]
             depth = 1
+        stack[depth - 1, VALUE] = v
+        stack[depth - 1, TIME] = time[j]
+        stack[depth - 1, PHASE] = phase[j] if many_phase else phase[0]
+        stack[depth - 1, HALF] = half[j] if many_half else half[0]
+        stack[depth - 1, RIPPLE] = ripple[j] if many_ripple else ripple[0]
         # the newest point closes what lies inside its branch, provisional or not: it can only grow
         while depth >= 4:
-            a, b, c, d = stack[depth - 4, VALUE], stack[depth - 3, VALUE], stack[depth - 2, VALUE], stack[depth - 1, VALUE]
-            inner = abs(c - b)
-            if inner > abs(b - a) or inner > abs(d - c):
+            inner = abs(stack[depth - 2, VALUE] - stack[depth - 3, VALUE])
+            if inner > abs(stack[depth - 3, VALUE] - stack[depth - 4, VALUE]) or inner > abs(stack[depth - 1, VALUE] - stack[depth - 2, VALUE]):
                 break
-            _close(stack[depth - 3], stack[depth - 2], stack[depth - 1], out[closed])
+            _close(stack, depth - 3, out, closed)
             closed += 1
-            stack[depth - 3] = stack[depth - 1]
+            for k in range(5):
+                stack[depth - 3, k] = stack[depth - 1, k]
             depth -= 2
     return depth, heading, closed

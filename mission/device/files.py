@@ -55,7 +55,7 @@ def load_module(name_or_path, folder=None) -> PowerModule:
     >>> load_module("heron300")  # doctest: +ELLIPSIS
     Traceback (most recent call last):
     ...
-    mission.errors.InputError: module 'heron300': found no such module; ... did you mean 'heron-300'?.
+    mission.errors.InputError: module 'heron300': found no such module; ... did you mean 'heron-300'?
     """
     text = str(name_or_path)
     base = Path(folder) if folder is not None else Path(".")
