@@ -49,7 +49,7 @@ class ResultFolder:
         """Write everything but the cycles; returns all paths."""
         from .document import build_document
         from .figures import all_figures
-        from .report import report_html
+        from .report import report_html, svg_text
         from .tables import ledger_frame
 
         document = build_document(result)
@@ -58,14 +58,16 @@ class ResultFolder:
         if (self.path / "cycles.parquet").exists():
             written.append(self.path / "cycles.parquet")
         written.append(self._whole("history.parquet", lambda p: result.history.to_frame().to_parquet(p, index=False)))
-        figures = all_figures(result)
+        figures, drawn = all_figures(result), {}
         for name, figure in figures.items():
-            # lay out once, not anew for each of the three times that a figure is drawn
+            # lay out once, not anew each time that a figure is drawn
             figure.draw_without_rendering()
             figure.set_layout_engine(None)
-            for ending in ("png", "svg"):
-                written.append(self._whole(f"{name}.{ending}", lambda p, f=figure, e=ending: f.savefig(p, format=e, dpi=150)))
-        written.append(self._text("report.html", report_html(result, figures, document.model_dump(mode="json"), date=date.today().isoformat())))
+            written.append(self._whole(f"{name}.png", lambda p, f=figure: f.savefig(p, format="png", dpi=150)))
+            drawn[name] = svg_text(figure, name)
+            written.append(self._text(f"{name}.svg", drawn[name]))
+        page = report_html(result, figures, document.model_dump(mode="json"), date=date.today().isoformat(), drawn_svg=drawn)
+        written.append(self._text("report.html", page))
         return written
 
     def _text(self, name, text):

@@ -34,7 +34,7 @@ _RANGE_WORDS = {
 }
 
 
-def report_html(result, figures, document: dict, *, date: str | None = None) -> str:
+def report_html(result, figures, document: dict, *, date: str | None = None, drawn_svg: dict[str, str] | None = None) -> str:
     """The report of a result as one HTML page.
 
     Parameters
@@ -62,7 +62,7 @@ def report_html(result, figures, document: dict, *, date: str | None = None) -> 
         caption = captions.get(name, "")
         drawn[_WHERE.get(name, "damage")].append({
             "id": f"fig-{_identifier(name)}", "title": _TITLES.get(name, name), "caption": caption,
-            "svg": figure_svg(figure, f"fig-{_identifier(name)}", f"{_TITLES.get(name, name)}. {caption}"),
+            "svg": figure_svg(figure, f"fig-{_identifier(name)}", f"{_TITLES.get(name, name)}. {caption}", (drawn_svg or {}).get(name)),
         })
     stated = {m["mode"]: bool(m["tested_range"]) for m in document["models"]}
     ledger = sorted(document["ledger"], key=lambda r: -r["damage_per_mission"])
@@ -265,7 +265,18 @@ def _identifier(name) -> str:
     return re.sub(r"[^a-z0-9]+", "-", str(name).lower()).strip("-") or "figure"
 
 
-def figure_svg(figure, prefix: str, words: str):
+def svg_text(figure, salt: str) -> str:
+    """A figure as an SVG document; equal figures give equal text."""
+    import matplotlib as mpl
+
+    raw = io.StringIO()
+    # text as outlines: the picture looks alike whatever fonts its reader has
+    with mpl.rc_context({"svg.fonttype": "path", "svg.hashsalt": salt}):
+        figure.savefig(raw, format="svg", metadata={"Date": None, "Creator": None, "Format": None, "Type": None})
+    return raw.getvalue()
+
+
+def figure_svg(figure, prefix: str, words: str, text: str | None = None):
     """A figure as SVG markup for a page: own identifiers, colours that follow the page, nothing from outside.
 
     Parameters
@@ -275,15 +286,12 @@ def figure_svg(figure, prefix: str, words: str):
         Makes the identifiers inside differ from those of other figures.
     words : str
         Alternative text; escaped here.
+    text : str, optional
+        What :func:`svg_text` gave for it, if it has been drawn already.
     """
-    import matplotlib as mpl
     from markupsafe import Markup, escape
 
-    raw = io.StringIO()
-    # text as outlines: the page looks alike whatever fonts its reader has; a fixed salt: equal figures, equal markup
-    with mpl.rc_context({"svg.fonttype": "path", "svg.hashsalt": prefix}):
-        figure.savefig(raw, format="svg", metadata={"Date": None, "Creator": None, "Format": None, "Type": None})
-    svg = raw.getvalue()
+    svg = svg_text(figure, prefix) if text is None else text
     svg = svg[svg.index("<svg"):]
     svg = re.sub(r"<!--.*?-->", "", svg, flags=re.DOTALL)
     # a style inside would hold for the whole page; the template says the same for figures only
