@@ -378,13 +378,18 @@ class Wires(FileModel):
 
 
 class FailureMode(FileModel):
-    """What wears out, on which swings, by which lifetime model."""
+    """What wears out, on which swings, by which lifetime model.
+
+    Stands in a module file (``[[failure_mode]]``) or in a study (``[[lifetime.failure_mode]]``).
+    ``threshold_k``: swings below it are left out and what they would cost is reported.
+    """
 
     name: Text
     acts_on: Literal["junction", "case"]
-    chips: Literal["all", "switches", "diodes"]
+    chips: Literal["all", "switches", "diodes"] = "all"
     model: Text
     options: dict[str, Any] = Field(default_factory=dict)
+    threshold_k: Annotated[float, Field(strict=True, ge=0, le=100)] | None = None
 
     @field_validator("options")
     @classmethod

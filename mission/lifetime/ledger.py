@@ -3,15 +3,13 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any, Literal
 
 import numpy as np
-from pydantic import Field
 
 from ..checks import require_range
 from ..cycles import KIND_WORDS, CycleTable
+from ..device import FailureMode
 from ..errors import InputError, RangeError
-from ..tomlfile import FileModel
 from .models import LifetimeModel, load_model, load_set
 
 N_CHIPS = 12
@@ -20,17 +18,6 @@ _CYCLE = ("range_k", "mean_c", "min_c", "max_c", "heating_s")
 #: Classes in which the ledger looks for the group of cycles that costs most [K], [degC].
 CLASS_RANGE_K = np.append(np.arange(0.0, 200.0, 5.0), np.inf)
 CLASS_MEAN_C = np.concatenate([[-np.inf], np.arange(-60.0, 251.0, 10.0), [np.inf]])
-
-
-class FailureMode(FileModel):
-    """What wears out, on which swings, by which lifetime model (``[[lifetime.failure_mode]]`` of a study)."""
-
-    name: str = Field(min_length=1)
-    acts_on: Literal["junction", "case"]
-    chips: Literal["all", "switches", "diodes"] = "all"
-    model: str = Field(min_length=1)
-    options: dict[str, Any] = Field(default_factory=dict)
-    threshold_k: float | None = Field(default=None, ge=0, le=100)
 
 
 @dataclass(frozen=True)
@@ -73,7 +60,7 @@ def resolve_modes(own, module, *, folder=None, where: str = "study") -> tuple[Mo
         if spec.name in [m.name for m in out]:
             raise InputError(f"{here}, name", f"a second failure mode named '{spec.name}'", "a name of its own for every failure mode", "rename one")
         model = load_model(spec.model, _completed(spec, module, folder), folder=folder, where=here)
-        out.append(Mode(spec.name, spec.acts_on, spec.chips, model, getattr(spec, "threshold_k", None)))
+        out.append(Mode(spec.name, spec.acts_on, spec.chips, model, spec.threshold_k))
     return tuple(out)
 
 

@@ -133,7 +133,7 @@ BROKEN_STUDIES = [
     BrokenStudy("option missing", ("lifetime.failure_mode[1], option a", "nothing", "a number", "add it to the options"), mode(model="coffin-manson", options={"n": 3.0})),
     BrokenStudy("option unknown", ("lifetime.failure_mode[1], option aspekt_ratio", "unknown option", "did you mean 'aspect_ratio'?"), mode(model="sintered-2013", options={"aspekt_ratio": 0.3})),
     BrokenStudy("option in quotes", ("lifetime.failure_mode[1], option a", "'5e9'", "a number above 0"), mode(model="coffin-manson", options={"a": "5e9", "n": 3.0})),
-    BrokenStudy("option not finite", ("lifetime.failure_mode[1], option n", "inf", "a number above 0"), mode(model="coffin-manson", options={"a": 5e9, "n": float("inf")})),
+    BrokenStudy("option not finite", ("field lifetime.failure_mode[1].options.n", "inf", "a finite number"), mode(model="coffin-manson", options={"a": 5e9, "n": float("inf")})),
     BrokenStudy("failure mode on nothing known", ("field lifetime.failure_mode[1].acts_on", "'cases'", "junction, case", "did you mean 'case'?"), mode(acts_on="cases")),
     BrokenStudy("failure mode without a model", ("field lifetime.failure_mode[1].model", "nothing", "required"), mode(model=None)),
     BrokenStudy("failure mode with a file that is not there", ("own.toml", "no such file", "a TOML file"), mode(model="own.toml")),
