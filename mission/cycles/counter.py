@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
+from ..checks import require_range
 from ..errors import InputError, RangeError
 from .table import CLOSED, RESIDUE, CycleTable
 
@@ -32,6 +33,7 @@ class CycleCounter:
         self._stack = [np.empty((64, 5)) for _ in range(n_signals)]
         self._depth = [0] * n_signals
         self._heading = [0] * n_signals
+        self._latest_s = [0.0] * n_signals
         self._room = np.empty((0, 8))
         self._out: list[tuple[int, np.ndarray, int]] = []
 
@@ -42,7 +44,8 @@ class CycleCounter:
         ----------
         signal : int
         t_c, time_s : array_like, shape (n,)
-            Temperature [degC] and time [s]; need not be turning points.
+            Temperature [degC] and time [s]; need not be turning points. Between samples
+            a straight line is assumed: the more samples, the better the heating times.
         phase_id : array_like of int, optional
             Phase of the duty at each sample.
         half_period_s, ripple_k : array_like, optional
@@ -52,12 +55,17 @@ class CycleCounter:
         Raises
         ------
         RangeError
-            A temperature that is not finite.
+            A temperature or time that is not finite, arrays of unlike shape, no such signal.
         """
+        if not 0 <= signal < len(self._stack):
+            raise RangeError("signal", f"{signal}", f"0 to {len(self._stack) - 1}")
         t_c, time_s = np.asarray(t_c, float), np.asarray(time_s, float)
-        if not np.isfinite(t_c).all():
-            bad = int(np.flatnonzero(~np.isfinite(t_c))[0])
-            raise RangeError(f"t_c[{bad}]", f"{t_c[bad]}", "a finite temperature", "correct the series; nothing is filled in")
+        if t_c.ndim != 1:
+            raise RangeError("t_c", f"shape {t_c.shape}", "one dimension")
+        for name, values, what in (("t_c", t_c, "temperature"), ("time_s", time_s, "time")):
+            if not np.isfinite(values).all():
+                bad = int(np.flatnonzero(~np.isfinite(values))[0])
+                raise RangeError(f"{name}[{bad}]", f"{values.flat[bad]}", f"a finite {what}", "correct the series; nothing is filled in")
         extra = [_NONE if v is None else np.asarray(v, float) for v in (phase_id, half_period_s, ripple_k)]
         for name, values in zip(("time_s", "phase_id", "half_period_s", "ripple_k"), (time_s, *extra)):
             if values is not _NONE and values.shape != t_c.shape:
@@ -78,7 +86,8 @@ class CycleCounter:
             self._stack[signal] = bigger
         if self._room.shape[0] < need // 2 + 1:
             self._room = np.empty((need + 2, 8))
-        self._depth[signal], self._heading[signal], closed = count(t_c, time_s, *extra, self._stack[signal], depth, self._heading[signal], self._room)
+        self._depth[signal], self._heading[signal], self._latest_s[signal], closed = count(
+            t_c, time_s, *extra, self._stack[signal], depth, self._heading[signal], self._latest_s[signal], self._room)
         if closed:
             self._out.append((signal, self._room[:closed].copy(), kind))
 
@@ -101,9 +110,15 @@ class CycleCounter:
             Count what closes when the mission repeats, or half cycles.
         period_s : float
             Length of the mission; times in the repetition stand this much later.
+
+        Raises
+        ------
+        InputError
+            Another word; a length of the mission that is not finite, or shorter than the samples.
         """
         if residue not in ("repeat", "half"):
             raise InputError("residue", f"'{residue}'", "repeat or half")
+        require_range("period_s", period_s, low=0.0, unit="s")
         before = self.drain()
         tables = [before] if len(before) else []
         for signal in range(len(self._stack)):
@@ -112,7 +127,10 @@ class CycleCounter:
                 continue
             if residue == "repeat":
                 columns = [np.ascontiguousarray(rest[:, k]) for k in range(5)]
-                self._count(signal, columns[0], columns[1] + period_s, columns[2:], RESIDUE)
+                # the repetition may not begin before the end, be it by rounding
+                span_s = self._latest_s[signal] - columns[1][0]
+                require_range("period_s", period_s, low=span_s * (1.0 - 1e-6), unit="s")
+                self._count(signal, columns[0], columns[1] + max(period_s, span_s), columns[2:], RESIDUE)
                 tables.append(self.drain())
             else:
                 tables.append(_table(signal, _half_cycles(rest), RESIDUE, 0.5))
@@ -121,17 +139,15 @@ class CycleCounter:
 
 
 def _half_cycles(rest):
-    """Pairs of a residue; a fall takes the heating time of the rise after it, else of the rise before it."""
+    """Pairs of a residue; a fall takes the time in which the rise after it, else the rise before it, covers its range."""
     a, b = rest[:-1], rest[1:]
     span = b[:, 1] - a[:, 1]
     rising = b[:, 0] > a[:, 0]
     heating = span.copy()
     for k in np.flatnonzero(~rising):
-        if k + 1 < rising.size:
-            size = abs(b[k + 1, 0] - a[k + 1, 0])
-            heating[k] = span[k + 1] * min(1.0, abs(b[k, 0] - a[k, 0]) / size)
-        elif k > 0:
-            heating[k] = span[k - 1]
+        rise = k + 1 if k + 1 < rising.size else k - 1
+        if rise >= 0:
+            heating[k] = span[rise] * min(1.0, (a[k, 0] - b[k, 0]) / (b[rise, 0] - a[rise, 0]))
     peak = np.where(rising[:, None], b, a)
     size = np.abs(b[:, 0] - a[:, 0])
     from .kernels import RIPPLE_REACH

@@ -62,11 +62,14 @@ class CycleWriter:
             pa.array(t.start_s), pa.array(t.end_s)], schema=self._schema))
 
     def __exit__(self, kind, error, trace):
-        if kind is None:
-            self._flush()
-        self._writer.close()
-        if kind is None:
-            os.replace(self._temporary, self._path)
-        else:
-            self._temporary.unlink(missing_ok=True)
+        try:
+            try:
+                if kind is None:
+                    self._flush()
+            finally:
+                self._writer.close()
+            if kind is None:
+                os.replace(self._temporary, self._path)
+        finally:
+            self._temporary.unlink(missing_ok=True)  # gone already where all went well
         return False

@@ -13,8 +13,11 @@ RIPPLE_REACH = 1.25
 
 
 @njit(cache=True, inline="always")
-def _close(stack, first, out, row):
-    """The cycle between points ``first`` and ``first + 1`` of the stack, which the point after them closes."""
+def _close(stack, first, value_before, time_before, out, row):
+    """The cycle between points ``first`` and ``first + 1`` of the stack, which the point after them closes.
+
+    ``value_before``, ``time_before``: the sample before that point.
+    """
     value_a, value_b = stack[first, VALUE], stack[first + 1, VALUE]
     time_a, time_b = stack[first, TIME], stack[first + 1, TIME]
     rising = value_b > value_a
@@ -25,8 +28,9 @@ def _close(stack, first, out, row):
     elif rising:
         heating = time_b - time_a
     else:
-        # the rise that closes it, up to the level of the earlier peak
-        heating = (stack[first + 2, TIME] - time_b) * size / (stack[first + 2, VALUE] - value_b)
+        # the rise that closes it, up to the level of the earlier peak, which lies between the last two samples
+        share = (value_a - value_before) / (stack[first + 2, VALUE] - value_before)
+        heating = time_before + share * (stack[first + 2, TIME] - time_before) - time_b
     out[row, RANGE] = size
     out[row, MEAN] = 0.5 * (value_a + value_b)
     out[row, LOW] = value_a if rising else value_b
@@ -38,22 +42,29 @@ def _close(stack, first, out, row):
 
 
 @njit(cache=True)
-def count(value, time, phase, half, ripple, stack, depth, heading, out):
+def count(value, time, phase, half, ripple, stack, depth, heading, latest_s, out):
     """Push points (n,) onto the stack; its top is provisional until the direction turns.
 
     ``phase``, ``half`` and ``ripple`` may have a single entry, which then holds for all points.
-    Returns (depth, heading, cycles closed). ``heading``: 0 level or empty, 1 rising, -1 falling.
+    Returns (depth, heading, latest_s, cycles closed). ``heading``: 0 level or empty, 1 rising, -1 falling.
+    ``latest_s``: time of the latest point; the top of the stack has its value.
     """
     closed = 0
     many_phase, many_half, many_ripple = phase.size > 1, half.size > 1, ripple.size > 1
+    value_before, time_before = 0.0, latest_s
     for j in range(value.size):
         v = value[j]
+        time_before, latest_s = latest_s, time[j]
         if depth > 0:
             top = stack[depth - 1, VALUE]
             if v == top:
                 continue
+            value_before = top
             turn = 1 if v > top else -1
             if turn != heading:
+                if turn == 1:
+                    # a rise begins where a level valley ends
+                    stack[depth - 1, TIME] = time_before
                 depth += 1
             heading = turn
         else:
@@ -68,9 +79,9 @@ def count(value, time, phase, half, ripple, stack, depth, heading, out):
             inner = abs(stack[depth - 2, VALUE] - stack[depth - 3, VALUE])
             if inner > abs(stack[depth - 3, VALUE] - stack[depth - 4, VALUE]) or inner > abs(stack[depth - 1, VALUE] - stack[depth - 2, VALUE]):
                 break
-            _close(stack, depth - 3, out, closed)
+            _close(stack, depth - 3, value_before, time_before, out, closed)
             closed += 1
             for k in range(5):
                 stack[depth - 3, k] = stack[depth - 1, k]
             depth -= 2
-    return depth, heading, closed
+    return depth, heading, latest_s, closed

@@ -106,7 +106,7 @@ class RippleClasses:
         level = np.floor(np.log(np.maximum(table.range_k, 1e-3)) / np.log(1.02)).astype(np.int64) + 400
         low = np.floor(table.min_c / 2.0).astype(np.int64) + 200
         heat = np.floor(np.log(np.maximum(table.heating_s, 1e-6)) / np.log(1.05)).astype(np.int64) + 300
-        key = (((table.signal.astype(np.int64) * 4096 + table.phase_id) * 1024 + level) * 512 + low) * 1024 + heat
+        key = (((table.signal.astype(np.int64) * 32768 + table.phase_id) * 1024 + level) * 512 + low) * 1024 + heat
         w = table.count
         sums = np.stack([w, w * table.range_k, w * table.mean_c, w * table.min_c, w * table.max_c, w * table.heating_s], axis=1)
         key = np.concatenate([self._key, key])
@@ -125,5 +125,5 @@ class RippleClasses:
         rest = self._key // 1024 // 512 // 1024
         n = self._sums[:, 0]
         mean = self._sums[:, 1:] / n[:, None]
-        return CycleTable((rest // 4096).astype(np.int16), *(mean[:, k] for k in range(5)), self._span[:, 0], self._span[:, 1],
-                          (rest % 4096).astype(np.int16), n, np.full(n.size, RIPPLE, np.uint8))
+        return CycleTable((rest // 32768).astype(np.int16), *(mean[:, k] for k in range(5)), self._span[:, 0], self._span[:, 1],
+                          (rest % 32768).astype(np.int16), n, np.full(n.size, RIPPLE, np.uint8))

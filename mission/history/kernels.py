@@ -38,6 +38,14 @@ CASE_L, CASE_S, CASE = 3600, 3792, 4944  # [mode, chip], [mode, chip], [chip]
 A_S_MANY, W_S_MANY = 4960, 5056  # [mode] factors of the shared modes over several steps at once
 W_SIZE = 5152
 
+# The same places as unsigned numbers, for the innermost loops: an index that cannot be negative needs no check,
+# and without the check the loops become vector instructions.
+U_N, U_S_MAX, U_X_L, U_A_L, U_B_L, U_X_S, U_A_S, U_W_S, U_HEAT, U_SHARED, U_GAIN, U_BASE, U_P_SUM = (
+    np.uint64(place) for place in (N, S_MAX, X_L, A_L, B_L, X_S, A_S, W_S, HEAT, SHARED, GAIN, BASE, P_SUM))
+U_B_S, U_C_S, U_T, U_FREE, U_P, U_P_MID, U_ENERGY, U_D_SELF, U_HINGE, U_KNOT, U_CASE_L, U_CASE_S, U_CASE = (
+    np.uint64(place) for place in (B_S, C_S, T, FREE, P, P_MID, ENERGY, D_SELF, HINGE, KNOT, CASE_L, CASE_S, CASE))
+U_1, U_3, U_6, U_16, U_A_S_MANY, U_W_S_MANY = (np.uint64(v) for v in (1, 3, 6, 16, A_S_MANY, W_S_MANY))
+
 # scalars carried from row to row
 TIME, THETA, COOLANT, REGIME, SETTLE, LEVEL, WINDOW_CYCLES, WINDOW_START, H_LOADED, WINDOW_PHASE = range(10)
 N_NOW = 10
@@ -50,6 +58,7 @@ IDLE, MEAN, ANGLE = 0, 1, 2
 OK, RUNAWAY = 0, 1
 NODES, RIPPLE_NODES = 64, 32  # along the conducting half wave
 CHUNK = 256
+U_NODE_LAST = np.uint64(NODES - 1)
 SIN, COS = np.sin(np.pi * np.arange(NODES + 1) / NODES), np.cos(np.pi * np.arange(NODES + 1) / NODES)
 SIN[NODES] = 0.0
 SHARED_WITHIN_S = 0.012  # shared modes move at least this often in even steps
@@ -82,28 +91,29 @@ def step_factors(h, lam_l, rho, lam_s, out):
 @njit(cache=True, inline="always")
 def load_factors(w, n_l, n_s, factors):
     """Put the factors of a step into their places."""
-    m = n_l * N
+    m = np.uint64(n_l) * U_N
+    s_first, s_many = m + m + U_N, np.uint64(n_s)
     for j in range(m):
-        w[A_L + j] = factors[j]
-        w[B_L + j] = factors[m + j]
-    for i in range(N):
-        w[D_SELF + i] = factors[2 * m + i]
-    for s in range(n_s):
-        w[A_S + s] = factors[2 * m + N + s]
-        w[W_S + s] = factors[2 * m + N + n_s + s]
+        w[U_A_L + j] = factors[j]
+        w[U_B_L + j] = factors[m + j]
+    for i in range(U_N):
+        w[U_D_SELF + i] = factors[m + m + i]
+    for s in range(s_many):
+        w[U_A_S + s] = factors[s_first + s]
+        w[U_W_S + s] = factors[s_first + s_many + s]
 
 
 @njit(cache=True, inline="always")
 def hinge_losses(w, n_h, source, target):
     """Losses of all chips at the temperatures in ``source``, into ``target``."""
-    for i in range(N):
-        w[target + i] = w[HINGE + i] + w[HINGE + 16 + i] * (w[source + i] - w[KNOT])
-    for k in range(1, n_h):
-        for i in range(N):
-            d = w[source + i] - w[KNOT + k]
+    for i in range(U_N):
+        w[target + i] = w[U_HINGE + i] + w[U_HINGE + U_16 + i] * (w[source + i] - w[U_KNOT])
+    for k in range(U_1, np.uint64(n_h)):
+        for i in range(U_N):
+            d = w[source + i] - w[U_KNOT + k]
             d = d if d > 0.0 else 0.0
-            w[target + i] += w[HINGE + 16 + 16 * k + i] * d
-    for i in range(N):
+            w[target + i] += w[U_HINGE + U_16 + U_16 * k + i] * d
+    for i in range(U_N):
         w[target + i] = w[target + i] if w[target + i] > TINY_W else TINY_W
 
 
@@ -114,22 +124,22 @@ def local_step(w, n_l, n_h, part):
     The shared part moves on by ``part`` of what its latest step added: enough for
     the temperature of the loss; :func:`shared_step` sets it right.
     """
-    for i in range(N):
-        w[SHARED + i] += part * w[GAIN + i]
-        w[FREE + i] = w[SHARED + i]
-    for k in range(n_l):
-        for i in range(N):
-            w[X_L + k * N + i] *= w[A_L + k * N + i]
-            w[FREE + i] += w[X_L + k * N + i]
-    hinge_losses(w, n_h, T, P)
-    for i in range(N):
-        w[P_MID + i] = 0.5 * (w[T + i] + w[FREE + i] + w[D_SELF + i] * w[P + i])
-    hinge_losses(w, n_h, P_MID, P)
-    for i in range(N):
-        w[T + i] = w[FREE + i] + w[D_SELF + i] * w[P + i]
-    for k in range(n_l):
-        for i in range(N):
-            w[X_L + k * N + i] += w[B_L + k * N + i] * w[P + i]
+    for i in range(U_N):
+        w[U_SHARED + i] += part * w[U_GAIN + i]
+        w[U_FREE + i] = w[U_SHARED + i]
+    for k in range(np.uint64(n_l)):
+        for i in range(U_N):
+            w[U_X_L + k * U_N + i] *= w[U_A_L + k * U_N + i]
+            w[U_FREE + i] += w[U_X_L + k * U_N + i]
+    hinge_losses(w, n_h, U_T, U_P)
+    for i in range(U_N):
+        w[U_P_MID + i] = 0.5 * (w[U_T + i] + w[U_FREE + i] + w[U_D_SELF + i] * w[U_P + i])
+    hinge_losses(w, n_h, U_P_MID, U_P)
+    for i in range(U_N):
+        w[U_T + i] = w[U_FREE + i] + w[U_D_SELF + i] * w[U_P + i]
+    for k in range(np.uint64(n_l)):
+        for i in range(U_N):
+            w[U_X_L + k * U_N + i] += w[U_B_L + k * U_N + i] * w[U_P + i]
 
 
 @njit(cache=True, inline="always")
@@ -138,51 +148,51 @@ def shared_step(w, n_s, factor, t_cool, keep, gain):
 
     ``keep`` and ``gain``: places of their factors.
     """
-    for s in range(n_s):
-        w[HEAT + s] = 0.0
-    for i in range(N):
-        for s in range(n_s):
-            w[HEAT + s] += w[B_S + i * S_MAX + s] * w[P_SUM + i]
-    for s in range(n_s):
-        w[X_S + s] = w[keep + s] * w[X_S + s] + w[gain + s] * factor * w[HEAT + s]
-    for i in range(N):
+    for s in range(np.uint64(n_s)):
+        w[U_HEAT + s] = 0.0
+    for i in range(U_N):
+        for s in range(np.uint64(n_s)):
+            w[U_HEAT + s] += w[U_B_S + i * U_S_MAX + s] * w[U_P_SUM + i]
+    for s in range(np.uint64(n_s)):
+        w[U_X_S + s] = w[keep + s] * w[U_X_S + s] + w[gain + s] * factor * w[U_HEAT + s]
+    for i in range(U_N):
         # what stands in SHARED is the extrapolation; T takes the difference, GAIN the true change
-        w[FREE + i] = w[SHARED + i]
-        w[SHARED + i] = t_cool
-        w[P_SUM + i] = 0.0
-    for s in range(n_s):
-        for i in range(N):
-            w[SHARED + i] += w[C_S + s * N + i] * w[X_S + s]
-    for i in range(N):
-        w[T + i] += w[SHARED + i] - w[FREE + i]
-        w[GAIN + i] = w[SHARED + i] - w[BASE + i]
-        w[BASE + i] = w[SHARED + i]
+        w[U_FREE + i] = w[U_SHARED + i]
+        w[U_SHARED + i] = t_cool
+        w[U_P_SUM + i] = 0.0
+    for s in range(np.uint64(n_s)):
+        for i in range(U_N):
+            w[U_SHARED + i] += w[U_C_S + s * U_N + i] * w[U_X_S + s]
+    for i in range(U_N):
+        w[U_T + i] += w[U_SHARED + i] - w[U_FREE + i]
+        w[U_GAIN + i] = w[U_SHARED + i] - w[U_BASE + i]
+        w[U_BASE + i] = w[U_SHARED + i]
 
 
 @njit(cache=True)
 def case_points(w, n_l, n_s, t_cool):
     """Case temperatures under the chips into their place."""
-    for i in range(N):
-        w[CASE + i] = t_cool
-    for k in range(n_l):
-        for i in range(N):
-            w[CASE + i] += w[CASE_L + k * N + i] * w[X_L + k * N + i]
-    for s in range(n_s):
-        for i in range(N):
-            w[CASE + i] += w[CASE_S + s * N + i] * w[X_S + s]
+    for i in range(U_N):
+        w[U_CASE + i] = t_cool
+    for k in range(np.uint64(n_l)):
+        for i in range(U_N):
+            w[U_CASE + i] += w[U_CASE_L + k * U_N + i] * w[U_X_L + k * U_N + i]
+    for s in range(np.uint64(n_s)):
+        for i in range(U_N):
+            w[U_CASE + i] += w[U_CASE_S + s * U_N + i] * w[U_X_S + s]
 
 
 @njit(cache=True)
 def shared_part(w, n_s, t_cool):
     """Coolant plus shared modes, seen at each chip; after a change from outside."""
-    for i in range(N):
-        w[SHARED + i] = t_cool
-        w[GAIN + i] = 0.0
-    for s in range(n_s):
-        for i in range(N):
-            w[SHARED + i] += w[C_S + s * N + i] * w[X_S + s]
-    for i in range(N):
-        w[BASE + i] = w[SHARED + i]
+    for i in range(U_N):
+        w[U_SHARED + i] = t_cool
+        w[U_GAIN + i] = 0.0
+    for s in range(np.uint64(n_s)):
+        for i in range(U_N):
+            w[U_SHARED + i] += w[U_C_S + s * U_N + i] * w[U_X_S + s]
+    for i in range(U_N):
+        w[U_BASE + i] = w[U_SHARED + i]
 
 
 @njit(cache=True)
@@ -222,22 +232,27 @@ def half_wave(op, stride, i_step, voltage, energy, modulation, knot_c, nodes):
 
 @njit(cache=True, inline="always")
 def leg_losses(leg, psi, nodes, w):
-    """Losses of one leg at the angle ``psi`` (within a turn) of its current: one switch and the opposite diode conduct."""
-    if psi < np.pi:
-        on, fly, off_switch, off_diode = 2 * leg, 7 + 2 * leg, 2 * leg + 1, 6 + 2 * leg
-    else:
-        on, fly, off_switch, off_diode = 2 * leg + 1, 6 + 2 * leg, 2 * leg, 7 + 2 * leg
+    """Losses of one leg at the angle ``psi`` (within a turn) of its current: one switch and the opposite diode conduct.
+
+    ``leg``: 0, 1, 2 as an unsigned number.
+    """
+    on = leg + leg
+    off = on + U_1
+    if psi >= np.pi:
+        on, off = off, on
         psi -= np.pi
     place = psi * (NODES / np.pi)
-    j = int(place)
-    if j > NODES - 1:
-        j = NODES - 1
-    u = place - j
-    for k in range(nodes.shape[2]):
-        w[HINGE + 16 * k + on] = nodes[j, 0, k] + u * (nodes[j + 1, 0, k] - nodes[j, 0, k])
-        w[HINGE + 16 * k + fly] = nodes[j, 1, k] + u * (nodes[j + 1, 1, k] - nodes[j, 1, k])
-        w[HINGE + 16 * k + off_switch] = 0.0
-        w[HINGE + 16 * k + off_diode] = 0.0
+    j = np.uint64(place)
+    if j > U_NODE_LAST:
+        j = U_NODE_LAST
+    u = place - float(j)
+    for k in range(np.uint64(nodes.shape[2])):
+        row = U_HINGE + U_16 * k
+        w[row + on] = nodes[j, 0, k] + u * (nodes[j + U_1, 0, k] - nodes[j, 0, k])
+        w[row + off] = 0.0
+        # the diode beside the switch that is off
+        w[row + U_6 + off] = nodes[j, 1, k] + u * (nodes[j + U_1, 1, k] - nodes[j, 1, k])
+        w[row + U_6 + on] = 0.0
 
 
 @njit(cache=True)
@@ -475,7 +490,7 @@ def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, leve
     if turning:
         h_angle = min(1.0 / (op[FREQ] * settings[STEPS]), 0.02)
     elif regime == ANGLE:
-        for leg in range(3):
+        for leg in range(U_3):
             leg_losses(leg, wrap(theta - THIRD * leg), half_nodes, w)
     for i in range(N):
         extreme[0, i] = w[T + i]
@@ -523,7 +538,7 @@ def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, leve
                 now[H_LOADED] = h
         if turning:
             middle = theta + omega * (used + 0.5 * h)
-            for leg in range(3):
+            for leg in range(U_3):
                 leg_losses(leg, wrap(middle - THIRD * leg), half_nodes, w)
         # the shared modes are slow: in even steps they move once in several of them, with the mean power
         even = h == h_even
@@ -531,11 +546,11 @@ def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, leve
         if h_before > 0.0:
             part = 1.0 / many if even else h / h_before
         local_step(w, n_l, n_h, part)
-        for i in range(N):
-            w[P_SUM + i] += w[P + i]
+        for i in range(U_N):
+            w[U_P_SUM + i] += w[U_P + i]
         since += 1
         if since == many or not even:
-            shared_step(w, n_s, 1.0 / since, t_cool, A_S_MANY if even else A_S, W_S_MANY if even else W_S)
+            shared_step(w, n_s, 1.0 / since, t_cool, U_A_S_MANY if even else U_A_S, U_W_S_MANY if even else U_W_S)
             h_before = h * since
             since = 0
         if even:
@@ -544,9 +559,9 @@ def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, leve
         else:
             used = used + h if left - h > 1e-12 * duration else duration
         count += 1
-        for i in range(N):
-            w[ENERGY + i] += w[P + i] * h
-            t_buffer[n_t, i] = w[T + i]
+        for i in range(U_N):
+            w[U_ENERGY + i] += w[U_P + i] * h
+            t_buffer[n_t, i] = w[U_T + i]
         t_time[n_t] = start + used
         n_t += 1
         if not turning or count % 8 == 0 or used >= duration:

@@ -185,7 +185,13 @@ class DamageLedger:
             chip = chip_all[at].astype(np.int64)
             part = tuple(getattr(table, n)[at] for n in _CYCLE)
             count = table.count[at]
-            n_f, outside = mode.model.cycles_to_failure(*part, diode=chip >= 6)
+            if mode.threshold_k is not None and mode.model.outside_range == "refuse":
+                # what is left out is not refused; its damage is still told
+                kept = part[0] >= mode.threshold_k
+                mode.model.cycles_to_failure(*(v[kept] for v in part), diode=chip[kept] >= 6)
+                n_f, outside = mode.model.never_refusing().cycles_to_failure(*part, diode=chip >= 6)
+            else:
+                n_f, outside = mode.model.cycles_to_failure(*part, diode=chip >= 6)
             each = 1.0 / n_f
             if mode.threshold_k is not None:
                 small = part[0] < mode.threshold_k

@@ -379,6 +379,10 @@ class LifetimeModel:
                        "of fast ripple beyond what was tested")
         return tuple(out)
 
+    def never_refusing(self) -> LifetimeModel:
+        """The same model with ``outside_range = "use"``."""
+        return LifetimeModel(self._set, {**self.options, "outside_range": "use"})
+
     def alternatives(self) -> dict[str, LifetimeModel]:
         """The same model with each explicit choice made otherwise, by a phrase that names the choice.
 

@@ -37,3 +37,28 @@ def closed_loop(series):
     if len(rest) == 3:
         cycles.append((rest[1], rest[0]))
     return cycles
+
+
+def closed_with_attributes(values, times, phases):
+    """Closed cycles (low, high, phase at the peak, start, end, heating time), instants looked up in the raw samples.
+
+    A peak stands at its first sample, a valley at its last; values of different levels must differ.
+    """
+    place = [k for k, x in enumerate(values) if x in reversals(values)]
+    first, last = {}, {}
+    for k in place:
+        first.setdefault(values[k], k)
+        last[values[k]] = k
+    out = []
+    for low, high in four_point(values)[0]:
+        valley, peak = last[low], first[high]
+        if valley < peak:
+            heating = times[peak] - times[valley]
+            ends = times[valley], times[peak]
+        else:
+            after = next(k for k in range(valley, len(values)) if values[k] >= high)
+            slope = (values[after] - values[after - 1]) / (times[after] - times[after - 1])
+            heating = times[after - 1] + (high - values[after - 1]) / slope - times[valley]
+            ends = times[peak], times[valley]
+        out.append((low, high, phases[peak], *ends, heating))
+    return out
