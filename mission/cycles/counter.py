@@ -27,6 +27,10 @@ class CycleCounter:
     closed by repeating the mission (A. Amzallag et al., Int. J. Fatigue 16 (1994)
     287-293) or counted as half cycles (ASTM E1049-85). The result does not depend on
     where blocks end.
+
+    In the repetition only the points of the residue are known: a rise that closes a fall
+    there is taken as one straight line. A large cycle lasts from its valley to its peak,
+    whatever smaller ones lie between; of equal peaks the first one counts.
     """
 
     def __init__(self, n_signals: int):

@@ -81,7 +81,9 @@ def count(value, time, phase, half, ripple, stack, depth, heading, latest_s, out
                 break
             _close(stack, depth - 3, value_before, time_before, out, closed)
             closed += 1
-            for k in range(5):
-                stack[depth - 3, k] = stack[depth - 1, k]
+            # of equal peaks the first stays: there the rise has done its heating
+            if heading != 1 or stack[depth - 1, VALUE] != stack[depth - 3, VALUE]:
+                for k in range(5):
+                    stack[depth - 3, k] = stack[depth - 1, k]
             depth -= 2
     return depth, heading, latest_s, closed

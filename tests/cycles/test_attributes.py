@@ -171,6 +171,13 @@ def test_impossible_length_of_the_mission_is_refused(period_s):
         counted([3.0, 1.0, 2.0], [0.0, 5.0, 10.0], period_s=period_s)
 
 
+def test_of_equal_peaks_the_first_ends_the_rise():
+    """Fifty equal cycles of 2 s: the one that spans them all reached its peak in the first (*analytic*), in its phase."""
+    table = counted([55.0, 105.0] * 50, np.arange(100.0) * 2.0, period_s=200.0, phase_id=np.arange(100))
+    assert table.heating_s.tolist() == [2.0] * 50
+    assert 1 in table.phase_id.tolist() and table.phase_id.max() < 100
+
+
 # --- ripple ------------------------------------------------------------------------------------
 
 @pytest.mark.parametrize(("swing", "half_s", "want"), [(12.5, 0.01, 0.01), (12.4, 0.01, 0.01), (12.6, 0.01, 3.0), (12.5, 0.0, 3.0)])
@@ -187,13 +194,14 @@ def test_ripple_is_judged_at_the_peak():
     assert row(at_valley, 12.0)["heating_s"] == 3.0 and row(at_peak, 12.0)["heating_s"] == 0.01
 
 
-def test_ripple_rule_for_a_fall_and_across_the_joint():
-    half, ripple = np.full(3, 0.004), np.full(3, 9.0)
-    table = counted([60.0, 52.0, 70.0], [0.0, 1.0, 5.0], period_s=6.0, half_period_s=half, ripple_k=ripple)
-    inner = row(table, 8.0)
-    assert inner["kind"] == 1 and inner["heating_s"] == 0.004
-    halves = counted([60.0, 52.0, 70.0], [0.0, 1.0, 5.0], "half", half_period_s=half, ripple_k=ripple)
-    assert row(halves, 8.0)["heating_s"] == 0.004 and row(halves, 18.0)["heating_s"] == 4.0
+def test_ripple_rule_across_the_joint_and_for_half_cycles():
+    """The mission ends at 55 (5 s) and begins at 60 (10 s): 5 K over the joint, within the ripple; 52 -> 70 is not."""
+    more = {"half_period_s": np.full(4, 0.004), "ripple_k": np.full(4, 9.0)}
+    table = counted([60.0, 52.0, 70.0, 55.0], [0.0, 1.0, 4.0, 5.0], period_s=10.0, **more)
+    assert row(table, 5.0)["kind"] == 1 and row(table, 5.0)["heating_s"] == 0.004
+    assert row(counted([60.0, 52.0, 70.0, 55.0], [0.0, 1.0, 4.0, 5.0], period_s=10.0), 5.0)["heating_s"] == 5.0
+    halves = counted([60.0, 52.0, 70.0, 55.0], [0.0, 1.0, 4.0, 5.0], "half", **more)
+    assert row(halves, 8.0)["heating_s"] == 0.004 and row(halves, 18.0)["heating_s"] == 3.0
 
 
 # --- half cycles ---------------------------------------------------------------------------------
@@ -216,8 +224,10 @@ def test_single_fall_takes_its_own_time():
 # --- doors -----------------------------------------------------------------------------------------
 
 @pytest.mark.parametrize(("call", "text"), [
-    ((0, [1.0, 2.0], [0.0, float("nan")]), r"time_s\[1\]: found nan; allowed: a finite time"), ((0, [1.0, float("inf")], [0.0, 1.0]), r"t_c\[1\]: found inf"),
-    ((-1, [1.0], [0.0]), "signal: found -1; allowed: 0 to 1"), ((2, [1.0], [0.0]), "signal: found 2"), ((0, [[1.0, 2.0]], [[0.0, 1.0]]), "t_c: found shape"),
+    ((0, [1.0, 2.0], [0.0, float("nan")]), r"time_s\[1\]: found nan; allowed: a finite time"),
+    ((0, [1.0, float("inf")], [0.0, 1.0]), r"t_c\[1\]: found inf"),
+    ((-1, [1.0], [0.0]), "signal: found -1; allowed: 0 to 1"), ((2, [1.0], [0.0]), "signal: found 2"),
+    ((0, [[1.0, 2.0]], [[0.0, 1.0]]), "t_c: found shape"),
     ((0, [1.0, 2.0], [0.0]), r"time_s: found shape \(1,\)"), ((0, [1.0, 2.0], [0.0, 1.0], [1]), "phase_id: found shape")])
 def test_doors_name_what_they_refuse(call, text):
     counter = CycleCounter(2)
