@@ -13,6 +13,18 @@ from .units import QUANTITIES, conversion
 WHOLE_MISSION = "whole mission"
 
 
+def shown(value) -> str:
+    """A value in quotes, as a message shows it: short, nothing invisible.
+
+    Examples
+    --------
+    >>> shown("a\\ufeffb"), shown(2.5)
+    ("'a\\\\ufeffb'", '2.5')
+    """
+    text = repr(value)
+    return text if len(text) <= 60 else text[:57] + "..."
+
+
 @dataclass(frozen=True)
 class ProfileBlock:
     """Some rows of a duty, in our units.
@@ -30,6 +42,13 @@ class ProfileBlock:
         Index into the profile's phases.
     first_row : int
         Number of rows before this block.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> block = ProfileBlock(np.array([0.0, 1.0]), np.array([1.0, 4.0]), {"current_a": np.array([100.0, 0.0])}, np.zeros(2, np.int16), 0)
+    >>> float(block.dt_s @ block.columns["current_a"])  # ampere seconds: every row is held until the next
+    100.0
     """
 
     time_s: np.ndarray
@@ -39,8 +58,9 @@ class ProfileBlock:
     first_row: int
 
 
-#: A source gives, anew at each call, blocks of raw columns: {quantity: array}; text for ``phase``.
-Source = Callable[[int], Iterator[dict[str, np.ndarray]]]
+#: A source gives, anew at each call, blocks of raw columns: {quantity: array}. ``phase`` comes as (codes, words):
+#: the word of row k is words[codes[k]]; so a word is looked at once a block, not once a row.
+Source = Callable[[int], Iterator[dict]]
 
 
 @dataclass(frozen=True)
@@ -63,6 +83,17 @@ class MissionProfile:
     longest_step_s, shortest_step_s : float
     notes : tuple of str
         What a result must repeat.
+
+    Examples
+    --------
+    >>> import pandas as pd
+    >>> from mission.duty import profile_from_frame
+    >>> frame = pd.DataFrame({"t": [0.0, 1.0, 3.0], "I": [80.0, -40.0, 0.0], "what": ["haul", "lower", "lower"]})
+    >>> duty = profile_from_frame(frame, {"time": {"column": "t", "unit": "s"}, "current": {"column": "I", "unit": "A rms"}, "phase": "what"})
+    >>> duty.phases, duty.time_by_phase_s
+    (('haul', 'lower'), (1.0, 2.0))
+    >>> [b.columns["current_a"].tolist() for b in duty.blocks(rows=1)]
+    [[80.0], [-40.0]]
     """
 
     name: str
@@ -97,12 +128,31 @@ class MissionProfile:
         return self._reader.place(int(row))
 
     def to_frame(self):
-        """The whole duty in our units as a DataFrame."""
+        """The whole duty in our units as a DataFrame, a row for each row that holds for a time."""
         import pandas as pd
 
         parts = [pd.DataFrame({"time_s": b.time_s, "dt_s": b.dt_s, **b.columns, "phase": np.array(self.phases, dtype=object)[b.phase_id]})
                  for b in self.blocks()]
         return pd.concat(parts, ignore_index=True)
+
+
+class _Words:
+    """Numbers words in the order in which they come, over all blocks."""
+
+    def __init__(self, words):
+        self.words = list(words)
+        self._index = {w: k for k, w in enumerate(self.words)}
+
+    def number(self, codes, words):
+        """Numbers (n,) for a block's (codes, words); words that no row uses get none."""
+        table = np.array([self._index.get(w, -1) for w in words], np.int64)
+        if (table < 0).any():
+            used, first = np.unique(codes, return_index=True)
+            for code in used[np.argsort(first)]:
+                if table[code] < 0:
+                    table[code] = self._index[words[code]] = len(self.words)
+                    self.words.append(words[code])
+        return table[codes]
 
 
 @dataclass(frozen=True)
@@ -119,15 +169,15 @@ class _Reader:
     def blocks(self, rows: int, phases: tuple[str, ...] | None) -> Iterator[ProfileBlock]:
         """Checked blocks; with ``phases`` None the names are gathered in ``self.found``."""
         scales = {q: conversion(q, c.unit, f"duty.columns.{q}") for q, c in self.columns.items()}
+        seen = _Words(phases or ())
         names = list(phases) if phases is not None else []
-        index = {p: k for k, p in enumerate(names)}
         held: dict[str, np.ndarray] | None = None
         origin = None
         before = 0
         for raw in self.source(rows):
             if raw["time"].size == 0:  # e.g. an empty row group
                 continue
-            block = self._convert(raw, scales, before if held is None else before + 1)
+            block = self._convert(raw, scales, before if held is None else before + 1, seen)
             if origin is None:
                 origin = block["time"][0]
             if held is not None:
@@ -137,25 +187,25 @@ class _Reader:
                 held = block
                 continue
             self._check_steps(block["time"], before)
-            yield self._block(block, n - 1, origin, before, names, index, phases is None, np.diff(block["time"]))
+            yield self._block(block, n - 1, origin, before, names, seen, phases is None, np.diff(block["time"]))
             before += n - 1
             held = {q: v[n - 1:] for q, v in block.items()}
         if held is None:
             raise InputError(self.label, "a header without rows", "at least two rows, or one with last_row_lasts_s", "check the export of the table")
         if self.last_row_lasts_s is not None:
-            yield self._block(held, 1, origin, before, names, index, phases is None, np.array([self.last_row_lasts_s]))
+            yield self._block(held, 1, origin, before, names, seen, phases is None, np.array([self.last_row_lasts_s]))
         elif before == 0:
             raise InputError(self.label, "a single row, which lasts for no time", "at least two rows (the last one closes the mission)",
                              "add a closing row, or give last_row_lasts_s under [duty]")
         if phases is None:
             object.__setattr__(self, "found", tuple(names) if "phase" in self.columns else (WHOLE_MISSION,))
 
-    def _convert(self, raw, scales, first):
+    def _convert(self, raw, scales, first, seen):
         out = {}
         for quantity, (factor, offset) in scales.items():
             values = raw[quantity]
             if quantity == "phase":
-                out[quantity] = values
+                out[quantity] = seen.number(*values)
                 continue
             bad = ~np.isfinite(values)
             if bad.any():
@@ -192,7 +242,7 @@ class _Reader:
             return str(stamp).removesuffix("000").removesuffix(".000") + " (UTC)"
         return f"{time_s / QUANTITIES['time'].units[unit][0]:.10g} {unit}"
 
-    def _block(self, block, n, origin, before, names, index, gather, dt):
+    def _block(self, block, n, origin, before, names, seen, gather, dt):
         columns = {}
         for quantity in self.columns:
             if quantity in ("time", "phase"):
@@ -202,29 +252,25 @@ class _Reader:
             else:
                 columns[QUANTITIES[quantity].column] = block[quantity][:n]
         if "phase" in block:
-            phase_id = self._phase_ids(block["phase"][:n], before, names, index, gather)
+            phase_id = self._phase_ids(block["phase"][:n], before, names, seen.words, gather)
         else:
             phase_id = np.zeros(n, np.int16)
         return ProfileBlock(block["time"][:n] - origin, dt, columns, phase_id, before)
 
-    def _phase_ids(self, words, before, names, index, gather):
-        import pandas as pd
-
-        codes, unique = pd.factorize(words, use_na_sentinel=False)
-        table = np.empty(len(unique), np.int64)
-        for k, word in enumerate(unique):
+    def _phase_ids(self, numbers, before, names, words, gather):
+        """Words get numbers as they come, so those beyond ``names`` are new; a closing row's own word never gets here."""
+        for number in range(len(names), int(numbers.max()) + 1):
+            word = words[number]
             if not isinstance(word, str) or not word.strip():
-                self._refuse("phase", before + int(np.flatnonzero(codes == k)[0]), f"value {word!r}", "a word for what the drive is doing", "name the phase in every row")
-            if word not in index:
-                if not gather:
-                    raise InputError(self.label, f"a phase '{word}' that was not there when the file was checked", "a file that does not change during a run")
-                index[word] = len(names)
-                names.append(word)
-                if len(names) > 200:
-                    self._refuse("phase", before + int(np.flatnonzero(codes == k)[0]), "more than 200 different phases", "a few words for what the drive is doing",
-                                 "map another column, or none")
-            table[k] = index[word]
-        return table[codes].astype(np.int16)
+                self._refuse("phase", before + int(np.argmax(numbers == number)), f"value {shown(word)}", "a word for what the drive is doing",
+                             "name the phase in every row")
+            if not gather:
+                raise InputError(self.label, f"a phase {shown(word)} that was not there when the file was checked", "a file that does not change during a run")
+            names.append(word)
+            if len(names) > 200:
+                self._refuse("phase", before + int(np.argmax(numbers == number)), "more than 200 different phases", "a few words for what the drive is doing",
+                             "map another column, or none")
+        return numbers.astype(np.int16)
 
     def _refuse(self, quantity, row, found, allowed, advice):
         raise InputError(f"{self.label}, {self.place(row)}, column '{self.columns[quantity].column}'", found, allowed, advice)

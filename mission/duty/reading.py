@@ -5,6 +5,8 @@ from __future__ import annotations
 import codecs
 import csv
 import re
+import sys
+from collections.abc import Mapping
 from datetime import date
 from decimal import Decimal
 from pathlib import Path
@@ -14,13 +16,15 @@ import numpy as np
 from ..checks import require_range
 from ..errors import InputError
 from ..tomlfile import parse_model
-from .profile import MissionProfile, _Reader, checked
+from .profile import MissionProfile, _Reader, checked, shown
 from .spec import ColumnMap, DutySpec
 from .units import conversion, near_name
 
 _LONGEST_LINE = 1 << 20
 _ISO_DATE = re.compile(r"\d{4}-\d\d-\d\d", re.ASCII)
 _NUMBER = re.compile(r"[+-]?((\d+\.?\d*|\.\d+)(e[+-]?\d+)?|nan|inf(inity)?)", re.ASCII | re.IGNORECASE)
+#: What may stand around a number: the same as pyarrow takes, so that both ways through a file agree.
+_BLANKS = " \t"
 _CSV_ENDINGS, _PARQUET_ENDINGS = (".csv", ".txt", ".tsv"), (".parquet", ".pq")
 
 
@@ -41,9 +45,21 @@ def read_profile(spec: DutySpec, folder=".") -> MissionProfile:
     ------
     InputError
         First thing that is wrong, with file, line, column and value.
+
+    Examples
+    --------
+    >>> import tempfile
+    >>> from pathlib import Path
+    >>> spec = DutySpec.model_validate({"file": "day.csv", "columns": {"time": {"column": "t", "unit": "min"}, "current": {"column": "I", "unit": "A rms"},
+    ...                                                                "speed": {"column": "n", "unit": "1/s"}}})
+    >>> with tempfile.TemporaryDirectory() as folder:
+    ...     _ = (Path(folder) / "day.csv").write_text("t,I,n\\n0,100,5\\n0.5,-40,5\\n1,0,0\\n")
+    ...     duty = read_profile(spec, folder)
+    >>> duty.rows, duty.duration_s, duty.ranges["current_a"]
+    (2, 60.0, (-40.0, 100.0))
     """
     path = Path(folder) / spec.file
-    label = str(path)
+    label = _printable(str(path))
     try:
         is_folder, is_there, size = path.is_dir(), path.exists(), path.stat().st_size if path.is_file() else None
     except OSError as err:
@@ -52,7 +68,7 @@ def read_profile(spec: DutySpec, folder=".") -> MissionProfile:
         raise InputError(label, "a folder", "a CSV or Parquet file", "name the file in it")
     if not is_there:
         there = [p.name for p in path.parent.iterdir() if p.suffix.lower() in _CSV_ENDINGS + _PARQUET_ENDINGS] if path.parent.is_dir() else []
-        raise InputError(label, "no such file", "a CSV or Parquet file", near_name(path.name, there) or "paths count from the study file")
+        raise InputError(label, "no such file", "a CSV or Parquet file", _printable(near_name(path.name, there)) or "paths count from the study file")
     ending = path.suffix.lower()
     if ending not in _CSV_ENDINGS + _PARQUET_ENDINGS:
         raise InputError(label, f"the ending '{path.suffix}'", ", ".join(_CSV_ENDINGS + _PARQUET_ENDINGS), "name the file by what it holds")
@@ -77,11 +93,21 @@ def profile_from_frame(frame, columns, *, name: str = "duty", longest_step_s: fl
     Parameters
     ----------
     frame : pandas.DataFrame
-    columns : dict
+    columns : dict or ColumnMap
         Quantity -> column name, or {"column": ..., "unit": ...}, as in a study file.
     name : str
     longest_step_s, last_row_lasts_s : float
         As in a study file.
+
+    Returns
+    -------
+    MissionProfile
+        With a copy of the columns that were named: the frame may change afterwards.
+
+    Raises
+    ------
+    InputError
+        First thing that is wrong, with row (1 is the first), column and value.
 
     Examples
     --------
@@ -92,6 +118,12 @@ def profile_from_frame(frame, columns, *, name: str = "duty", longest_step_s: fl
     >>> duty.rows, duty.duration_s, round(duty.ranges["current_a"][1], 4)
     (2, 15.0, 106.066)
     """
+    import pandas as pd
+
+    if not isinstance(frame, pd.DataFrame):
+        raise InputError("frame", f"a {type(frame).__name__}", "a pandas DataFrame", "make one of it, or write it to a file and read that")
+    if not isinstance(columns, (Mapping, ColumnMap)):
+        raise InputError("columns", f"a {type(columns).__name__}", 'a dict such as {"time": {"column": "t", "unit": "s"}, ...}')
     given = parse_model({q: {"column": c} if isinstance(c, str) else c for q, c in dict(columns).items()}, ColumnMap, "columns").given()
     for quantity, column in given.items():
         conversion(quantity, column.unit, f"columns.{quantity}")
@@ -104,7 +136,7 @@ def profile_from_frame(frame, columns, *, name: str = "duty", longest_step_s: fl
     for quantity, column in given.items():
         series = frame.iloc[:, there.index(column.column)]
         if quantity == "phase":
-            raw[quantity] = series.to_numpy(dtype=object)
+            raw[quantity], words = _words(series, column.column)
         elif quantity == "time" and column.unit == "datetime":
             raw[quantity] = _datetimes(series, "DataFrame", column.column, _row_place)
         else:
@@ -115,7 +147,7 @@ def profile_from_frame(frame, columns, *, name: str = "duty", longest_step_s: fl
     def source(rows):
         n = len(frame)
         for a in range(0, n, rows):
-            yield {q: v[a:a + rows] for q, v in raw.items()}
+            yield {q: (v[a:a + rows], words) if q == "phase" else v[a:a + rows] for q, v in raw.items()}
 
     return checked(_Reader(source, "DataFrame", given, _row_place, longest_step_s, last_row_lasts_s), name)
 
@@ -129,7 +161,24 @@ def _numbers(series, label, column):
         for k, value in enumerate(series):
             if isinstance(value, bool) or not isinstance(value, (int, float, np.integer, np.floating, Decimal)):
                 raise InputError(f"{label}, row {k + 1}, column '{column}'", f"value {value!r}", "a number", "convert the column to numbers")
-    return series.to_numpy(dtype=float, na_value=np.nan, copy=True)
+    try:
+        return series.to_numpy(dtype=float, na_value=np.nan, copy=True)
+    except OverflowError:  # an int of Python's beyond the doubles
+        k = next(k for k, value in enumerate(series) if isinstance(value, int) and abs(value) > sys.float_info.max)
+        raise InputError(f"{label}, row {k + 1}, column '{column}'", f"value {shown(series.iloc[k])}", "a finite number", "correct the row") from None
+
+
+def _words(series, column):
+    """(codes, words) of a column of texts."""
+    import pandas as pd
+
+    try:
+        codes, words = pd.factorize(series.to_numpy(dtype=object), use_na_sentinel=False)
+    except TypeError:  # lists and the like, which nothing can be looked up by
+        k = next(k for k, value in enumerate(series) if not isinstance(value, str))
+        raise InputError(f"DataFrame, row {k + 1}, column '{column}'", f"value {shown(series.iloc[k])}", "a word for what the drive is doing",
+                         "name the phase in every row") from None
+    return codes, list(words)
 
 
 def _datetimes(series, label, column, place):
@@ -138,7 +187,7 @@ def _datetimes(series, label, column, place):
 
     def refuse(k):
         value = series.iloc[k]
-        found = "an empty field" if value is None or value == "" or value is pd.NaT or value is pd.NA else f"value {_short(value)}"
+        found = "an empty field" if value is None or value == "" or value is pd.NaT or value is pd.NA else f"value {shown(value)}"
         raise InputError(f"{label}, {place(k)}, column '{column}'", found, "an ISO 8601 date and time such as 2031-05-04T06:30:00",
                          "correct the row, or give the column's unit: s, ms, min, h, d")
 
@@ -167,19 +216,14 @@ def _row_place(row: int) -> str:
     return f"row {row + 1}"
 
 
-def _short(value) -> str:
-    text = repr(value)
-    return text if len(text) <= 60 else text[:57] + "..."
-
-
 def _need_columns(label, columns, there, field="duty.columns"):
     for quantity, column in columns.items():
         if column.column not in there:
-            names = ", ".join(f"'{c}'" for c in there[:40]) + (f" and {len(there) - 40} more" if len(there) > 40 else "")
-            hint = near_name(column.column, there) or "copy the name from the file's header"
+            names = ", ".join(f"'{_printable(c)}'" for c in there[:40]) + (f" and {len(there) - 40} more" if len(there) > 40 else "")
+            hint = _printable(near_name(column.column, there)) or "copy the name from the file's header"
             if there and sum(_is_number(c, ".") for c in there) > len(there) // 2:
                 hint = "line 1 looks like values: put a header line with the names of the columns on top"
-            raise InputError(f"{label}, field {field}.{quantity}.column", f"no column '{column.column}'", f"one of {names}", hint)
+            raise InputError(f"{label}, field {field}.{quantity}.column", f"no column '{_printable(column.column)}'", f"one of {names}", hint)
         if there.count(column.column) > 1:
             raise InputError(f"{label}, field {field}.{quantity}.column", f"the column name '{column.column}' {there.count(column.column)} times", "every name once",
                              "rename one of the columns")
@@ -194,7 +238,7 @@ def _parquet_source(path, label, columns):
         file = pq.ParquetFile(path)
         there, kinds = file.schema_arrow.names, {f.name: f.type for f in file.schema_arrow}
         file.close()
-    except (pa.ArrowException, OSError) as err:
+    except (pa.ArrowException, OSError, ValueError) as err:  # ValueError: names in the schema that are not UTF-8
         raise InputError(label, f"a file that is not Parquet ({_first_line(err)})", "a Parquet file", "export it anew, or give it the ending of what it holds") from None
     _need_columns(label, columns, there)
     for quantity, column in columns.items():
@@ -215,11 +259,12 @@ def _parquet_source(path, label, columns):
     def source(rows):
         done = 0
         try:
-            with pq.ParquetFile(path) as file:
+            words = [c.column for q, c in columns.items() if q == "phase"]
+            with pq.ParquetFile(path, read_dictionary=words) as file:
                 for batch in file.iter_batches(batch_size=rows, columns=[c.column for c in columns.values()]):
                     yield {q: _arrow_values(batch.column(c.column), q, c, label, done, _row_place) for q, c in columns.items()}
                     done += batch.num_rows
-        except (pa.ArrowException, OSError) as err:
+        except (pa.ArrowException, OSError, ValueError) as err:
             raise InputError(f"{label}, after row {done}", f"data that cannot be read ({_first_line(err)})", "an undamaged Parquet file", "export it anew") from None
 
     return source
@@ -230,6 +275,11 @@ def _first_line(err) -> str:
     return "".join(c if c.isprintable() else "?" for c in text)
 
 
+def _printable(text) -> str:
+    """Signs that nobody sees are spelt out."""
+    return text if text.isprintable() else "".join(c if c.isprintable() else repr(c)[1:-1] for c in text)
+
+
 def _arrow_values(column, quantity, spec, label, first, place):
     import pyarrow as pa
 
@@ -237,7 +287,8 @@ def _arrow_values(column, quantity, spec, label, first, place):
         k = int(np.flatnonzero(column.is_null().to_numpy(zero_copy_only=False))[0])
         raise InputError(f"{label}, {place(first + k)}, column '{spec.column}'", "an empty value", "a value in every row", "nothing is filled in: correct the row or cut it out")
     if quantity == "phase":
-        return column.to_numpy(zero_copy_only=False)
+        coded = column if pa.types.is_dictionary(column.type) else column.dictionary_encode()
+        return coded.indices.to_numpy(zero_copy_only=False), coded.dictionary.to_pylist()
     if quantity == "time" and spec.unit == "datetime":
         import pandas as pd
 
@@ -257,7 +308,7 @@ def _csv_source(path, label, columns, spec):
     if len(header) == 1:
         other = [d for d in ";\t,|" if d != spec.delimiter and d in header[0]]
         sign = {"\t": "\\t"}.get(other[0], other[0]) if other else ""
-        raise InputError(f"{label}, line 1", f"a single column {_short(header[0])}", f"columns divided by {spec.delimiter!r}",
+        raise InputError(f"{label}, line 1", f"a single column {shown(header[0])}", f"columns divided by {spec.delimiter!r}",
                          f'set delimiter = "{sign}" under [duty]' if other else "check the file")
     if any(header) and all(_is_number(h, spec.decimal) for h in header if h):
         raise InputError(f"{label}, line 1", f"numbers ({', '.join(header[:4])} ...)", "a header line with the names of the columns", "put a header line on top")
@@ -275,6 +326,7 @@ def _csv_source(path, label, columns, spec):
         # with a decimal comma the numbers come as text: pyarrow then refuses blanks and plus signs, which it takes with a point
         as_text = spec.decimal == ","
         types = {c.column: pa.string() if as_text or _is_text(q, c) else pa.float64() for q, c in columns.items()}
+        types.update({c.column: pa.dictionary(pa.int32(), pa.string()) for q, c in columns.items() if q == "phase"})
         done = 0
         held: list = []
         waiting = 0
@@ -323,7 +375,7 @@ def _from_decimal_comma(values):
     import pyarrow as pa
     import pyarrow.compute as pc
 
-    bare = pc.utf8_trim_whitespace(values)
+    bare = pc.utf8_trim(values, characters=_BLANKS)
     if pc.any(pc.match_substring(bare, ".")).as_py():
         raise pa.ArrowInvalid("a point in a number with decimal comma")
     return pc.replace_substring(pc.replace_substring_regex(bare, r"^\+(\d)", r"\1"), ",", ".").cast(pa.float64())
@@ -434,7 +486,7 @@ def _split(line, spec) -> list[str]:
 
 
 def _is_number(text, decimal) -> bool:
-    text = text.strip()
+    text = text.strip(_BLANKS)
     if decimal == "," and "." in text:
         return False
     return _NUMBER.fullmatch(text.replace(decimal, ".")) is not None
@@ -457,7 +509,7 @@ def _find_fault(path, label, columns, spec, header):
             for quantity, column in columns.items():
                 value = fields[index[quantity]]
                 if not _is_text(quantity, column) and not _is_number(value, spec.decimal):
-                    raise InputError(f"{label}, line {number}, column '{column.column}'", f"value {_short(value)}" if value.strip() else "an empty field", "a number",
+                    raise InputError(f"{label}, line {number}, column '{column.column}'", f"value {shown(value)}" if value.strip() else "an empty field", "a number",
                                      _number_advice(value, spec))
     except (OSError, UnicodeError) as err:
         raise InputError(label, f"text that cannot be read ({err})", f"text in {spec.encoding}", "check the file and its encoding") from None
