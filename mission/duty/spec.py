@@ -15,14 +15,29 @@ _Positive = Annotated[float, Field(gt=0)]
 
 
 class ColumnSpec(FileModel):
-    """Which column of the file, in which unit."""
+    """Which column of the file, in which unit.
+
+    Examples
+    --------
+    >>> ColumnSpec(column="I_motor", unit="A peak").unit
+    'A peak'
+    """
 
     column: str = Field(min_length=1)
     unit: str | None = None
 
 
 class ColumnMap(FileModel):
-    """The user's columns by what they mean."""
+    """The user's columns by what they mean.
+
+    Time, and current or torque, are always needed. What else is, the kind of machine decides; a study checks that.
+
+    Examples
+    --------
+    >>> columns = ColumnMap(current={"column": "I", "unit": "A rms"}, time={"column": "t", "unit": "h"})
+    >>> list(columns.given())
+    ['time', 'current']
+    """
 
     time: ColumnSpec
     current: ColumnSpec | None = None
@@ -55,7 +70,14 @@ class ColumnMap(FileModel):
 
 
 class DutySpec(FileModel):
-    """Where the duty comes from and how its columns are read."""
+    """Where the duty comes from and how its columns are read.
+
+    Examples
+    --------
+    >>> spec = DutySpec(file="day.csv", columns={"time": {"column": "t", "unit": "s"}, "torque": {"column": "M", "unit": "N m"}}, delimiter=";")
+    >>> spec.delimiter, spec.decimal, spec.longest_step_s
+    (';', '.', 60.0)
+    """
 
     file: str = Field(min_length=1)
     columns: ColumnMap

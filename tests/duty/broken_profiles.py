@@ -67,6 +67,14 @@ def damaged_parquet(path):
     path.write_bytes(bytes(raw))
 
 
+def misnamed_parquet(path):
+    """A name in the schema that is no UTF-8."""
+    parquet()["duty.parquet"](path)
+    raw = path.read_bytes()
+    assert b"what" in raw
+    path.write_bytes(raw.replace(b"what", b"wh\xb9t"))
+
+
 def parquet_without_rows(path):
     """A schema and nothing else."""
     import pyarrow as pa
@@ -86,6 +94,11 @@ BROKEN_PROFILES = [
     BrokenProfile("text in a number column", ("duty.csv, line 3, column 'n'", "'fast'", "a number", "cut it out"), changed("300", "fast")),
     BrokenProfile("thousands divided by a blank", ("line 3, column 'I'", "'1 000'", "a number"), changed("100", "1 000")),
     BrokenProfile("digits with underscore", ("line 3, column 'I'", "'1_00'", "a number"), changed("100", "1_00")),
+    BrokenProfile("a no-break space behind a number", ("duty.csv, line 3, column 'I'", "'100\\xa0'", "a number"), changed("100", "100\u00a0")),
+    BrokenProfile("a form feed behind a number", ("duty.csv, line 3, column 'I'", "'100\\x0c'", "a number"), changed("100", "100\f")),
+    BrokenProfile("a no-break space before a worse row, with decimal comma", ("duty.csv, line 3, column 'I'", "'100\\xa0'", "a number"),
+                  {"duty.csv": CSV.replace(",", ";").replace("100", "100\u00a0").replace("150", "x")}, with_duty(delimiter=";", decimal=",")),
+    BrokenProfile("hexadecimal number", ("duty.csv, line 3, column 'I'", "'0x64'", "a number"), changed("100", "0x64")),
     BrokenProfile("empty field", ("duty.csv, line 3, column 'I'", "an empty field", "a number", "nothing is filled in"), changed("1,100,", "1,,")),
     BrokenProfile("blank field", ("duty.csv, line 3, column 'I'", "an empty field", "a number"), changed("1,100,", "1,  ,")),
     BrokenProfile("units in a row of their own", ("duty.csv, line 2, column 't'", "'s'", "a number"), changed("what\n", "what\ns,A,rpm,degC,-\n")),
@@ -120,6 +133,9 @@ BROKEN_PROFILES = [
     BrokenProfile("unit on a column that has none", ("duty.columns.phase.unit", "'s'", "no unit", "remove it"), duty=with_duty(columns={"phase": {"column": "what", "unit": "s"}})),
     BrokenProfile("missing column", ("duty.csv, field duty.columns.coolant.column", "no column 'Tin'", "'t', 'I', 'n', 'T_in', 'what'", "did you mean 'T_in'?"),
                   duty=with_duty(columns={"coolant": {"column": "Tin", "unit": "degC"}})),
+    BrokenProfile("a sign that nobody sees in a name", ("duty.csv, field duty.columns.current.column", "no column 'I'", "'\\ufeffI'", "did you mean '\\ufeffI'?"),
+                  changed("t,I", "t,\ufeffI")),
+    BrokenProfile("a blank in front of a name", ("duty.csv, field duty.columns.current.column", "no column 'I'", "did you mean ' I'?"), changed("t,I", "t, I")),
     BrokenProfile("a quantity that is not known", ("duty.columns.curent", "unknown key", "did you mean 'current'?"),
                   duty=with_duty(columns={"curent": {"column": "I", "unit": "A rms"}, "current": None})),
     BrokenProfile("no time", ("duty.columns.time", "nothing", "required"), duty=with_duty(columns={"time": None})),
@@ -173,6 +189,11 @@ BROKEN_PROFILES = [
     BrokenProfile("text file with the ending of Parquet", ("duty.parquet", "not Parquet", "a Parquet file"), {"duty.parquet": CSV}, with_duty(**PARQUET)),
     BrokenProfile("empty Parquet file", ("duty.parquet", "an empty file"), {"duty.parquet": b""}, with_duty(**PARQUET)),
     BrokenProfile("damaged Parquet", ("duty.parquet", "cannot be read", "undamaged"), {"duty.parquet": damaged_parquet}, with_duty(**PARQUET)),
+    BrokenProfile("Parquet with a name that is no text", ("duty.parquet", "not Parquet", "export it anew"), {"duty.parquet": misnamed_parquet}, with_duty(**PARQUET)),
+    BrokenProfile("Parquet without a phase", ("duty.parquet, row 2, column 'what'", "an empty value", "a value in every row"), parquet(what=["a", None, "b", "b"]),
+                  with_duty(**PARQUET)),
+    BrokenProfile("Parquet with a blank phase", ("duty.parquet, row 3, column 'what'", "value ' '", "a word for what the drive is doing"), parquet(what=["a", "a", " ", "b"]),
+                  with_duty(**PARQUET)),
     BrokenProfile("Parquet without a value", ("duty.parquet, row 3, column 'I'", "an empty value", "a value in every row"), parquet(I=[0.0, 1.0, None, 2.0]), with_duty(**PARQUET)),
     BrokenProfile("Parquet with NaN", ("duty.parquet, row 2, column 'n'", "nan", "a finite number"), parquet(n=[0.0, float("nan"), 1.0, 2.0]), with_duty(**PARQUET)),
     BrokenProfile("Parquet with numbers as text", ("duty.parquet, column 'I'", "type string", "numbers", "convert the column"), parquet(I=["0", "1", "2", "3"]), with_duty(**PARQUET)),
@@ -187,6 +208,8 @@ BROKEN_PROFILES = [
     BrokenProfile("wrong ending", ("duty.xlsx", "'.xlsx'", ".csv, .txt, .tsv, .parquet"), {"duty.xlsx": CSV}, with_duty(file="duty.xlsx")),
     BrokenProfile("folder instead of a file", ("duty.csv", "a folder", "a CSV or Parquet file"), {"duty.csv": lambda path: path.mkdir()}),
     BrokenProfile("missing file", ("duti.csv", "no such file", "a CSV or Parquet file", "did you mean 'duty.csv'?"), duty=with_duty(file="duti.csv")),
+    BrokenProfile("zero byte in the file's name", ("du\\x00ty.csv", "no such file", "did you mean 'duty.csv'?"), duty=with_duty(file="du\x00ty.csv")),
+    BrokenProfile("row of delimiters at the end", ("duty.csv, line 7, column 't'", "an empty field", "a number"), {"duty.csv": CSV + ",,,,\n"}),
     BrokenProfile("file name too long", ("aaa.csv", "cannot be reached", "a CSV or Parquet file"), duty=with_duty(file="a" * 400 + ".csv")),
     BrokenProfile("no file", ("duty.file", "an empty text", "at least 1 character"), duty=with_duty(file="")),
     # impossible values

@@ -81,9 +81,13 @@ def test_any_block_size_joins_to_the_same_arrays(data, tmp_path_factory):
     whole = joined(profile_from_frame(frame, DUTY["columns"], last_row_lasts_s=last), 1000)
     assert whole["dt_s"].size == n - (last is None)
     np.testing.assert_array_equal(whole["current_a"], frame["I"].to_numpy()[: whole["dt_s"].size])
+    words = frame["what"].tolist()[: whole["dt_s"].size]
+    phases = tuple(dict.fromkeys(words))
+    assert whole["phase_id"].tolist() == [phases.index(w) for w in words]
     rows = data.draw(st.integers(1, n + 3))
     for profile in (profile_from_frame(frame, DUTY["columns"], last_row_lasts_s=last), read(folder, **extra), read(folder, "duty.parquet", **extra)):
         same(joined(profile, rows), whole)
+        assert profile.phases == phases
 
 
 def test_last_row_closes_the_mission_or_lasts_as_told(tmp_path):
@@ -109,6 +113,29 @@ def test_phases_are_in_order_of_first_appearance_and_their_times_add_up(tmp_path
     profile = read(tmp_path)
     assert profile.phases == ("idle", "go", "brake") and profile.time_by_phase_s == (1.0, 2.0, 1.0)
     assert joined(profile, 1)["phase_id"].tolist() == [0, 1, 1, 2] and joined(profile, 1)["phase_id"].dtype == np.int16
+
+
+@pytest.mark.parametrize("rows", [1, 2, 9])
+def test_phases_do_not_follow_the_order_in_which_a_file_stores_its_words(rows, tmp_path):
+    frame = FRAME.assign(what=pd.Categorical(["go", "idle", "go", "brake", "idle"], categories=["never", "brake", "idle", "go"]))
+    frame.to_parquet(tmp_path / "duty.parquet", index=False)
+    for profile in (read(tmp_path, "duty.parquet"), profile_from_frame(frame, DUTY["columns"])):
+        assert profile.phases == ("go", "idle", "brake") and joined(profile, rows)["phase_id"].tolist() == [0, 1, 0, 2]
+
+
+@pytest.mark.parametrize("word", ["end", "", None, "go"])
+def test_the_phase_of_the_closing_row_is_not_used(word):
+    profile = profile_from_frame(FRAME.assign(what=["idle", "go", "go", "brake", word]), DUTY["columns"])
+    assert profile.phases == ("idle", "go", "brake") and joined(profile, 2)["phase_id"].tolist() == [0, 1, 1, 2]
+
+
+@pytest.mark.parametrize("rows", [1, 3, 1000])
+def test_a_phase_that_was_not_there_at_the_check_is_refused(rows, tmp_path):
+    write(tmp_path, {"duty.csv": CSV})
+    profile = read(tmp_path)
+    write(tmp_path, {"duty.csv": CSV.replace("brake", "other")})
+    with pytest.raises(InputError, match="a phase 'other' that was not there when the file was checked"):
+        list(profile.blocks(rows))
 
 
 def test_without_a_phase_column_there_is_one_phase(tmp_path):
@@ -303,6 +330,8 @@ BROKEN_FRAMES = {
     "complex": ({"I": np.array([1j] * 5)}, "row 1, column 'I'", "1j"),
     "time differences": ({"t": pd.to_timedelta([0, 1, 2, 3, 4], unit="s")}, "row 1, column 't'", "Timedelta"),
     "no word for a phase": ({"what": ["a", None, "b", "c", "d"]}, "row 2, column 'what'", "a word"),
+    "a list for a phase": ({"what": ["a", ["b"], "b", "c", "d"]}, "row 2, column 'what'", "['b']"),
+    "an int beyond all doubles": ({"I": pd.Series([0, 10**400, 1, 2, 3], dtype=object)}, "row 2, column 'I'", "a finite number"),
     "numbers for phases": ({"what": [1, 2, 3, 4, 5]}, "row 1, column 'what'", "a word"),
     "decreasing": ({"t": [0.0, 1.0, 0.5, 2.0, 3.0]}, "row 3, column 't'", "rise"),
 }
@@ -314,6 +343,13 @@ def test_broken_frames(name):
     with pytest.raises(InputError) as caught:
         profile_from_frame(FRAME.assign(**changes), DUTY["columns"])
     assert str(caught.value).startswith(f"DataFrame, {place}") and words in str(caught.value)
+
+
+@pytest.mark.parametrize(("frame", "columns", "words"), [(None, DUTY["columns"], "frame: found a NoneType"), ([1, 2], DUTY["columns"], "frame: found a list"),
+                                                         (FRAME, None, "columns: found a NoneType"), (FRAME, ["t", "I"], "columns: found a list")])
+def test_what_is_no_frame_or_no_map_is_refused(frame, columns, words):
+    with pytest.raises(InputError, match=words):
+        profile_from_frame(frame, columns)
 
 
 def test_numbers_are_no_time_stamps():
