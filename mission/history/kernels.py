@@ -697,12 +697,14 @@ def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_l
         want = ANGLE
         if op[I_PEAK] <= 0.0:
             want = IDLE
-        elif f >= settings[F_SLOW]:
+        elif f >= settings[F_SLOW] and f > 0.0 and (not changed or left * f >= settings[SETTLE_PERIODS]):
+            # rows that change faster than a few periods have no periodic ripple: they go by angle
             want = MEAN
         small = want == MEAN and before == MEAN and small_change(op, ripple_op)
         if changed:
             # after a small change the first steps may be coarser
             now[LEVEL] = 6.0 if small else 0.0
+        if want != MEAN:
             now[SETTLE] = 0.0
         if before == MEAN and want != MEAN:
             close_window(now, old, window, pair, pair_time, pair_ripple,

@@ -285,7 +285,10 @@ class ElectrothermalMarch:
         """How many pieces each row is cut into, so that its points fit the buffers."""
         slow = (points.i_peak_a > 0.0) & (points.frequency_hz > 0.0) & (points.frequency_hz < self.settings.f_slow_hz)
         steps = np.where(slow, np.maximum(points.frequency_hz * self.settings.steps_per_period, 50.0), 1.0) * dt_s
-        return np.maximum(1, np.ceil(steps / (0.5 * _POINT_CAPACITY))).astype(int)
+        pieces = np.maximum(1, np.ceil(steps / (0.5 * _POINT_CAPACITY)))
+        # in fast rotation a long row is counted second by second, so that its ripple is charged at the temperature it has
+        fast = (points.i_peak_a > 0.0) & (points.frequency_hz >= self.settings.f_slow_hz)
+        return np.where(fast, np.clip(np.ceil(dt_s - 1e-9), pieces, 20000), pieces).astype(int)
 
     def _check_current(self, points):
         top = self.tables.i_max_a

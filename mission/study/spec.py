@@ -53,7 +53,7 @@ class MarchSpec(FileModel):
 
     start: Literal["repeat", "coolant"] = "repeat"
     start_angle_deg: float = Field(default=0.0, ge=-360, le=360)
-    slow_below_hz: float = Field(default=5.0, ge=0, le=1000)
+    slow_below_hz: float = Field(default=5.0, ge=0.1, le=1000)
     steps_per_period: int = Field(default=128, ge=32, le=4096)
     network_tolerance: float = Field(default=1e-3, gt=0, le=0.05)
 
