@@ -22,7 +22,6 @@ BLOCK_ROWS = 65536
 #: A repeated mission starts and ends at the same temperatures within this [K], or this share of its largest swing.
 PERIODIC_WITHIN_K, PERIODIC_WITHIN_SHARE = 0.02, 0.002
 MAX_PASSES = 40
-SIGNALS = CHIP_NAMES + tuple(f"case {c}" for c in CHIP_NAMES)
 
 Progress = Callable[[float, str], None]
 
