@@ -70,6 +70,68 @@ def switching_energy_j(curves, current_a, t_vj_c):
     return _interpolate(curves, current_a, t_vj_c)
 
 
+def temperature_coefficient_v_per_k(curves, current_a, t_vj_c):
+    """How the on-state voltage changes with temperature at a fixed current.
+
+    Parameters
+    ----------
+    curves : OnStateCurves
+    current_a, t_vj_c : array_like
+        As for :func:`on_state_voltage_v` [A], [degC].
+
+    Returns
+    -------
+    ndarray
+        Slope between the two curves around ``t_vj_c`` [V/K]; at a temperature of the
+        data sheet that of the piece above it. Negative: a hotter chip drops less and so
+        draws current from its neighbours; positive: parallel chips share by themselves.
+
+    Raises
+    ------
+    RangeError
+        Negative current, NaN or infinity.
+    """
+    i, t = _checked(current_a, t_vj_c)
+    t_data = curves.t_vj_c
+    k, _ = _bracket(t_data, t)
+    along = np.stack([broken_line(c.current_a, c.values, i) for c in curves.points])
+    cold = np.take_along_axis(along, k[None], axis=0)[0]
+    hot = np.take_along_axis(along, k[None] + 1, axis=0)[0]
+    return (hot - cold) / (t_data[k + 1] - t_data[k])
+
+
+def on_state_crossing_a(curves) -> float | None:
+    """Current at which the coldest and the hottest on-state curve cross.
+
+    Parameters
+    ----------
+    curves : OnStateCurves
+
+    Returns
+    -------
+    float or None
+        [A]; above it the hotter curve lies higher for good, below it lower. None if the
+        curves do not cross inside their common points (or only touch at zero current).
+
+    Examples
+    --------
+    >>> from mission.device import load_module
+    >>> round(on_state_crossing_a(load_module("heron-300").switch.on_state))
+    89
+    """
+    first, last = curves.current_data_a
+    _, current, values = curves.on_grid()
+    keep = (current >= first) & (current <= last)
+    current, gap = current[keep], (values[-1] - values[0])[keep]
+    up = np.flatnonzero((gap[:-1] <= 0.0) & (gap[1:] > 0.0))
+    if up.size == 0:
+        return None
+    j = up[-1]
+    if gap[j] == 0.0 and current[j] == 0.0:
+        return None
+    return float(current[j] - gap[j] * (current[j + 1] - current[j]) / (gap[j + 1] - gap[j]))
+
+
 @dataclass(frozen=True)
 class OutsideData:
     """Where a look-up rests on straight-line extension; boolean arrays of one common shape.
@@ -112,9 +174,9 @@ def outside_data(curves, current_a, t_vj_c) -> OutsideData:
         Negative current, NaN or infinity.
     """
     i, t = _checked(current_a, t_vj_c)
-    t_data = np.array([c.t_vj_c for c in curves.curve])
-    first = np.array([c.current_a[0] for c in curves.curve])
-    last = np.array([c.current_a[-1] for c in curves.curve])
+    t_data = np.array([c.t_vj_c for c in curves.points])
+    first = np.array([c.current_a[0] for c in curves.points])
+    last = np.array([c.current_a[-1] for c in curves.points])
     k, share = _bracket(t_data, t)
     # at a temperature of the data sheet only that one curve counts
     low, high = np.zeros(i.shape, bool), np.zeros(i.shape, bool)
@@ -138,8 +200,8 @@ def _bracket(t_data, t):
 
 def _interpolate(curves, current_a, t_vj_c):
     i, t = _checked(current_a, t_vj_c)
-    k, share = _bracket(np.array([c.t_vj_c for c in curves.curve]), t)
-    along = np.stack([broken_line(c.current_a, c.values, i) for c in curves.curve])
+    k, share = _bracket(np.array([c.t_vj_c for c in curves.points]), t)
+    along = np.stack([broken_line(c.current_a, c.values, i) for c in curves.points])
     cold = np.take_along_axis(along, k[None], axis=0)[0]
     hot = np.take_along_axis(along, k[None] + 1, axis=0)[0]
     return cold + share * (hot - cold)

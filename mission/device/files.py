@@ -20,8 +20,8 @@ def shipped_modules() -> tuple[str, ...]:
 
     Examples
     --------
-    >>> shipped_modules()
-    ('heron-300', 'kite-300')
+    >>> shipped_modules()  # doctest: +ELLIPSIS
+    ('curlew-300', ..., 'heron-300', ...)
     """
     return tuple(sorted(p.stem for p in _SHIPPED.glob("*.toml")))
 
@@ -99,7 +99,14 @@ def to_toml(module: PowerModule) -> str:
 
     Comments of an original file are not kept.
     """
-    return "\n".join(_table(module.model_dump(mode="python", exclude_none=True), ())).lstrip("\n") + "\n"
+    return "\n".join(_table(_without_empty(module.model_dump(mode="python", exclude_none=True)), ())).lstrip("\n") + "\n"
+
+
+def _without_empty(data):
+    """Curves by points need no empty list of lines beside them, and the other way round."""
+    if isinstance(data, dict):
+        return {k: _without_empty(v) for k, v in data.items() if not (k in ("line", "curve") and not v)}
+    return [_without_empty(v) for v in data] if isinstance(data, (list, tuple)) and data and isinstance(data[0], dict) else data
 
 
 def save_module(module: PowerModule, path) -> None:

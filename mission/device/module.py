@@ -8,6 +8,7 @@ with the lifetime model to use for each. All units are in the key names.
 from __future__ import annotations
 
 import math
+from dataclasses import dataclass
 from itertools import pairwise
 from typing import Annotated, Any, Literal
 
@@ -38,9 +39,29 @@ class Ratings(FileModel):
     i_peak_repetitive_a: Positive
     t_vj_op_max_c: Number
     t_vj_op_min_c: Number
+    t_vj_overload_c: Number | None = None
+    overload_longest_s: Positive | None = None
+    overload_share: Annotated[float, Field(strict=True, gt=0, le=1)] | None = None
 
     @model_validator(mode="after")
     def _sensible(self):
+        overload = (self.t_vj_overload_c, self.overload_longest_s, self.overload_share)
+        if any(v is None for v in overload) and any(v is not None for v in overload):
+            raise RangeError(
+                "t_vj_overload_c",
+                "only some of t_vj_overload_c, overload_longest_s, overload_share",
+                "all three or none",
+                "a permitted overload needs its temperature, its longest time and its share of the time",
+            )
+        if self.t_vj_overload_c is not None:
+            _plausible_temperature("t_vj_overload_c", self.t_vj_overload_c)
+            if self.t_vj_overload_c <= self.t_vj_op_max_c:
+                raise RangeError(
+                    "t_vj_overload_c",
+                    f"t_vj_overload_c = {self.t_vj_overload_c:g} degC not above t_vj_op_max_c = {self.t_vj_op_max_c:g} degC",
+                    "an overload temperature above the continuous one",
+                    "leave the three overload keys out where the data sheet permits none",
+                )
         if self.i_peak_repetitive_a < self.i_nominal_a:
             raise RangeError(
                 "i_peak_repetitive_a",
@@ -208,15 +229,20 @@ class _Curves(FileModel):
 
     @model_validator(mode="after")
     def _temperatures(self):
-        if len(self.curve) < 2:
+        if getattr(self, "line", ()) and self.curve:
+            for k, (one, two) in enumerate(pairwise(self.line), 2):
+                if two.t_vj_c <= one.t_vj_c:
+                    raise RangeError("line", f"t_vj_c = {two.t_vj_c:g} degC in line {k} after {one.t_vj_c:g} degC",
+                                     "temperatures that rise from line to line", "sort the lines from cold to hot")
+        if len(self.points) < 2:
             raise RangeError(
                 "curve",
-                f"{len(self.curve)} curve{'' if len(self.curve) == 1 else 's'}",
+                f"{len(self.points)} curve{'' if len(self.points) == 1 else 's'}",
                 "curves at two or more junction temperatures",
                 "add a [[...curve]] section; where the data sheet gives one temperature only, "
                 "repeat it at a second one on purpose",
             )
-        for k, (a, b) in enumerate(pairwise(self.curve), 2):
+        for k, (a, b) in enumerate(pairwise(self.points), 2):
             if b.t_vj_c <= a.t_vj_c:
                 raise RangeError(
                     "curve",
@@ -229,7 +255,7 @@ class _Curves(FileModel):
     @property
     def t_vj_c(self) -> np.ndarray:
         """Temperatures of the curves, rising [degC], shape (k,)."""
-        return np.array([c.t_vj_c for c in self.curve])
+        return np.array([c.t_vj_c for c in self.points])
 
     def on_grid(self) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
         """All curves on the union of their currents.
@@ -243,19 +269,102 @@ class _Curves(FileModel):
             Voltages [V] or energies [J]. A curve that starts later or ends
             sooner than the others is extended in a straight line.
         """
-        current = np.unique(np.concatenate([c.current_a for c in self.curve]))
-        return self.t_vj_c, current, np.stack([broken_line(c.current_a, c.values, current) for c in self.curve])
+        current = np.unique(np.concatenate([c.current_a for c in self.points]))
+        return self.t_vj_c, current, np.stack([broken_line(c.current_a, c.values, current) for c in self.points])
 
     @property
     def current_data_a(self) -> tuple[float, float]:
         """First and last current that every curve covers [A]."""
-        return max(c.current_a[0] for c in self.curve), min(c.current_a[-1] for c in self.curve)
+        return max(c.current_a[0] for c in self.points), min(c.current_a[-1] for c in self.points)
+
+
+class OnStateLine(FileModel):
+    """Straight-line parameters at one temperature: v0 + r i, from zero to ``current_end_a``."""
+
+    t_vj_c: Number
+    v0_v: Positive
+    r_ohm: NotNegative
+    current_end_a: Positive
+
+    @field_validator("t_vj_c")
+    @classmethod
+    def _celsius(cls, value):
+        _plausible_temperature("t_vj_c", value)
+        return value
+
+    @field_validator("r_ohm")
+    @classmethod
+    def _ohms(cls, value):
+        if value > 10.0:
+            raise RangeError("r_ohm", f"{value:g} ohm", "at most 10 ohm", "r_ohm is in ohm, not milliohm")
+        return value
+
+    def as_curve(self) -> OnStateCurve:
+        """The line as a curve of two points."""
+        end = self.current_end_a
+        return OnStateCurve(t_vj_c=self.t_vj_c, current_a=(0.0, end), voltage_v=(self.v0_v, self.v0_v + self.r_ohm * end))
 
 
 class OnStateCurves(_Curves):
-    """On-state voltage by current and temperature."""
+    """On-state voltage by current and temperature: points, straight lines, or both.
 
-    curve: tuple[OnStateCurve, ...]
+    Points count where there are any; lines beside them are only shown. A file
+    with lines alone gets two-point curves in ``points``.
+    """
+
+    curve: tuple[OnStateCurve, ...] = ()
+    line: tuple[OnStateLine, ...] = ()
+
+    @property
+    def points(self) -> tuple[OnStateCurve, ...]:
+        """The curves that count."""
+        return self.curve or tuple(one.as_curve() for one in self.line)
+
+
+class GateResistorCurve(FileModel):
+    """Energy over the external gate resistor, at the reference current and a hot junction."""
+
+    r_ref_ohm: NotNegative
+    r_ohm: Numbers
+    energy_j: Numbers
+
+    @model_validator(mode="after")
+    def _sensible(self):
+        if len(self.r_ohm) < 2 or len(self.r_ohm) != len(self.energy_j):
+            raise RangeError(
+                "r_ohm",
+                f"{len(self.r_ohm)} resistors beside {len(self.energy_j)} energies",
+                "at least two resistors, and one energy for each",
+                "complete the shorter list",
+            )
+        for k, (a, b) in enumerate(pairwise(self.r_ohm), 2):
+            if b <= a:
+                raise RangeError("r_ohm", f"{b:g} ohm at point {k} after {a:g} ohm", "resistors that rise from point to point", "sort the points")
+        for k, e in enumerate(self.energy_j, 1):
+            if e <= 0.0:
+                raise RangeError("energy_j", f"{e:g} J at point {k}", "energies above 0 J", "correct the point")
+        if self.r_ohm[0] < 0.0:
+            raise RangeError("r_ohm", f"{self.r_ohm[0]:g} ohm", "resistors of at least 0 ohm", "correct the sign")
+        if not self.r_ohm[0] <= self.r_ref_ohm <= self.r_ohm[-1]:
+            raise RangeError(
+                "r_ref_ohm",
+                f"{self.r_ref_ohm:g} ohm",
+                f"{self.r_ohm[0]:g} to {self.r_ohm[-1]:g} ohm, where the curve runs",
+                "enter the resistor at which the energy curves were measured",
+            )
+        return self
+
+    def factor(self, r_ohm: float) -> float:
+        """Energy with this resistor over energy with the one of the energy curves, [-]; refused outside the points."""
+        if not self.r_ohm[0] <= r_ohm <= self.r_ohm[-1]:
+            raise RangeError(
+                "gate resistor",
+                f"{r_ohm:g} ohm",
+                f"{self.r_ohm[0]:g} to {self.r_ohm[-1]:g} ohm, where the data sheet gives energies",
+                "choose a resistor inside, or extend the curve with measured points",
+            )
+        at = np.interp([r_ohm, self.r_ref_ohm], self.r_ohm, self.energy_j)
+        return float(at[0] / at[1])
 
 
 class EnergyCurves(_Curves):
@@ -264,6 +373,12 @@ class EnergyCurves(_Curves):
     v_ref_v: Positive
     voltage_exponent: Annotated[float, Field(strict=True, ge=0, le=3)]
     curve: tuple[EnergyCurve, ...]
+    gate_resistor: GateResistorCurve | None = None
+
+    @property
+    def points(self) -> tuple[EnergyCurve, ...]:
+        """The curves that count."""
+        return self.curve
 
 
 class LayerSpec(FileModel):
@@ -333,21 +448,47 @@ class ChipThermal(FileModel):
         return self
 
 
+class ParallelChips(FileModel):
+    """Chips side by side in one position; ``on_state_spread_v``: how much lower the best one's on-state voltage
+    lies than that of the others at its share of the nominal current."""
+
+    chips: Annotated[int, Field(strict=True, ge=2, le=64)]
+    on_state_spread_v: Annotated[float, Field(strict=True, ge=0, le=1)]
+
+
 class SwitchData(FileModel):
-    """One switch: the transistor of one arm, all its parallel chips together."""
+    """One switch: the transistor of one arm, all its parallel chips together.
+
+    ``reverse`` (MOSFET only): from source to drain with the gate on. Without it the
+    channel is taken to conduct alike both ways, with the body diode beside it.
+    """
 
     on_state: OnStateCurves
     turn_on: EnergyCurves
     turn_off: EnergyCurves
     thermal: ChipThermal
+    reverse: OnStateCurves | None = None
+    parallel: ParallelChips | None = None
 
 
 class DiodeData(FileModel):
-    """One freewheeling diode, all its parallel chips together."""
+    """One freewheeling diode, all its parallel chips together.
+
+    No ``thermal`` where it is part of the switch's chip (body diode, reverse-conducting
+    IGBT); no ``recovery`` for a silicon carbide Schottky diode.
+    """
 
     on_state: OnStateCurves
-    recovery: EnergyCurves
-    thermal: ChipThermal
+    recovery: EnergyCurves | None = None
+    thermal: ChipThermal | None = None
+    parallel: ParallelChips | None = None
+
+
+class SwitchingData(FileModel):
+    """What the turn-off overshoot needs: the module's own inductance, and its fall time at nominal current (90 to 10 %)."""
+
+    stray_inductance_h: Annotated[float, Field(strict=True, ge=0, le=1e-5)]
+    fall_time_s: Annotated[float, Field(strict=True, gt=0, le=1e-5)]
 
 
 class CaseToSinkModule(FileModel):
@@ -358,11 +499,11 @@ class CaseToSinkModule(FileModel):
 
 
 class CaseToSinkChips(FileModel):
-    """A resistance of its own under every switch and every diode."""
+    """A resistance of its own under every switch and every diode (under every chip where one chip is both)."""
 
     per: Literal["switch-and-diode"]
     r_th_switch_k_per_w: Positive
-    r_th_diode_k_per_w: Positive
+    r_th_diode_k_per_w: Positive | None = None
 
 
 CaseToSink = Annotated[CaseToSinkModule | CaseToSinkChips, Field(discriminator="per")]
@@ -408,30 +549,62 @@ class FailureMode(FileModel):
         return value
 
 
+#: Devices whose diode is a part of the switch's chip.
+ONE_CHIP_KINDS = ("reverse-conducting-igbt", "mosfet")
+THREE_LEVEL = ("npc-leg", "t-type-leg")
+
+
+@dataclass(frozen=True)
+class ChipPair:
+    """Two like chips of a leg, one above and one below: what the stages below know a chip by.
+
+    Attributes
+    ----------
+    name : str
+        First part of the chip's name: S, D; SO, SI, DO, DI, DC in three-level legs.
+    place : str
+        Section of the file that holds its thermal data.
+    is_diode : bool
+    thermal : ChipThermal
+    """
+
+    name: str
+    place: str
+    is_diode: bool
+    thermal: ChipThermal
+
+
 class PowerModule(FileModel):
-    """A power module with six switches and six diodes, or a half-bridge of which three are used.
+    """The module, or the three modules, of a three-phase bridge.
 
     Attributes mirror the keys of the file, e.g. ``module.switch.on_state.curve[0].voltage_v``.
-    Curves and thermal branches are per switch and per diode. ``wires`` is None when the
-    file says nothing about them.
+    Curves and thermal branches are per switch and per diode. Three-level legs: ``switch`` and
+    ``diode`` are the outer pair, ``inner_switch`` and ``inner_diode`` the pair next to the
+    output (npc-leg) or the midpoint switch (t-type-leg), ``clamp_diode`` the diodes to the midpoint.
+    ``wires`` is None when the file says nothing about them.
     """
 
     format: Literal[1]
     name: Text
     technology: Text
-    kind: Literal["igbt"]
-    arrangement: Literal["six-pack", "half-bridge"]
+    kind: Literal["igbt", "igbt-schottky", "reverse-conducting-igbt", "mosfet"]
+    arrangement: Literal["six-pack", "half-bridge", "npc-leg", "t-type-leg"]
     source: Text
     ratings: Ratings
     gate: Gate
+    switching: SwitchingData | None = None
     switch: SwitchData
     diode: DiodeData
+    inner_switch: SwitchData | None = None
+    inner_diode: DiodeData | None = None
+    clamp_diode: DiodeData | None = None
     case_to_sink: CaseToSink | None = None
     wires: Wires | None = None
     failure_mode: tuple[FailureMode, ...] = ()
 
     @model_validator(mode="after")
     def _sensible(self):
+        self._check_parts()
         nominal = self.ratings.i_nominal_a
         for place, curves in self.energy_curves().items():
             if curves.v_ref_v >= self.ratings.v_ces_v:
@@ -451,28 +624,45 @@ class PowerModule(FileModel):
                         f"at most {limit:.3g} J for such a chip",
                         "energies are in joules, not millijoules",
                     )
-        sides = (self.switch.thermal.reference, self.diode.thermal.reference)
-        if sides[0] != sides[1]:
-            raise RangeError(
-                "diode.thermal.reference",
-                f"switch.thermal.reference = '{sides[0]}' and diode.thermal.reference = '{sides[1]}'",
-                "the same reference for both",
-                "use the branches that end at the same place",
-            )
-        if sides[0] == "case" and self.case_to_sink is None:
+        for place, curves in self.energy_curves().items():
+            if curves.gate_resistor is not None:
+                try:
+                    curves.gate_resistor.factor(self.gate_resistor_ohm(place))
+                except RangeError as err:
+                    key = "gate.r_off_ohm" if place.endswith("turn_off") else "gate.r_on_ohm"
+                    raise RangeError(key, f"{key} = {self.gate_resistor_ohm(place):g} ohm", err.allowed, err.advice) from None
+        first, *others = self.chip_pairs()
+        for pair in others:
+            if pair.thermal.reference != first.thermal.reference:
+                raise RangeError(
+                    f"{pair.place}.thermal.reference",
+                    f"{first.place}.thermal.reference = '{first.thermal.reference}' and {pair.place}.thermal.reference = '{pair.thermal.reference}'",
+                    "the same reference for all chips",
+                    "use the branches that end at the same place",
+                )
+        if first.thermal.reference == "case" and self.case_to_sink is None:
             raise RangeError(
                 "case_to_sink",
                 "no section case_to_sink, and thermal branches that end at the case",
                 "a section [case_to_sink]",
                 'enter the resistance of the thermal paste, or the branches to the sink with reference = "sink"',
             )
-        if sides[0] == "sink" and self.case_to_sink is not None:
+        if first.thermal.reference == "sink" and self.case_to_sink is not None:
             raise RangeError(
                 "case_to_sink",
                 "a section case_to_sink, and thermal branches that end at the sink",
                 "no section case_to_sink",
                 'the branches hold the paste already: remove the section, or set reference = "case"',
             )
+        if self.case_to_sink is not None and self.case_to_sink.per == "switch-and-diode":
+            has_diodes = any(p.is_diode for p in self.chip_pairs())
+            if has_diodes != (self.case_to_sink.r_th_diode_k_per_w is not None):
+                raise RangeError(
+                    "case_to_sink.r_th_diode_k_per_w",
+                    "no r_th_diode_k_per_w, and diodes with chips of their own" if has_diodes else "r_th_diode_k_per_w, and no diode chips",
+                    "a resistance for every kind of chip there is",
+                    "enter it" if has_diodes else f"kind = '{self.kind}' has one chip for both jobs: remove the key",
+                )
         names = [f.name for f in self.failure_mode]
         for name in names:
             if names.count(name) > 1:
@@ -484,17 +674,99 @@ class PowerModule(FileModel):
                 )
         return self
 
+    def _check_parts(self):
+        """The sections that this kind and this arrangement need, and no others."""
+        three = self.arrangement in THREE_LEVEL
+        if three and self.one_chip:
+            raise RangeError(
+                "kind",
+                f"kind = '{self.kind}' with arrangement = '{self.arrangement}'",
+                "igbt or igbt-schottky in three-level legs",
+                "three-level legs of one-chip devices are not modelled",
+            )
+        wanted = {"inner_switch": three, "inner_diode": three, "clamp_diode": self.arrangement == "npc-leg"}
+        for name, needed in wanted.items():
+            if needed != (getattr(self, name) is not None):
+                raise RangeError(
+                    name,
+                    f"no section {name}" if needed else f"a section {name}",
+                    f"{'a' if needed else 'no'} section {name} with arrangement = '{self.arrangement}'",
+                    "add it" if needed else "remove it, or correct the arrangement",
+                )
+        for name in ("diode", "inner_diode", "clamp_diode"):
+            diode = getattr(self, name)
+            if diode is None:
+                continue
+            if self.one_chip != (diode.thermal is None):
+                raise RangeError(
+                    f"{name}.thermal",
+                    f"a section {name}.thermal" if self.one_chip else f"no section {name}.thermal",
+                    f"{'no' if self.one_chip else 'a'} section {name}.thermal with kind = '{self.kind}'",
+                    "its heat arises in the switch's chip: remove the section" if self.one_chip else "enter the branches of the diode",
+                )
+            if diode.recovery is None and self.kind != "igbt-schottky":
+                raise RangeError(
+                    f"{name}.recovery",
+                    f"no section {name}.recovery",
+                    f"recovery energies with kind = '{self.kind}'",
+                    "only a silicon carbide Schottky diode (kind = \"igbt-schottky\") goes without",
+                )
+        for name in ("switch", "inner_switch"):
+            switch = getattr(self, name)
+            if switch is not None and switch.reverse is not None and self.kind != "mosfet":
+                raise RangeError(f"{name}.reverse", f"a section {name}.reverse", "reverse curves with kind = 'mosfet' only", "remove the section")
+
+    @property
+    def one_chip(self) -> bool:
+        """Whether switch and diode are one chip."""
+        return self.kind in ONE_CHIP_KINDS
+
+    @property
+    def levels(self) -> int:
+        """Voltage levels of the leg: 2 or 3."""
+        return 3 if self.arrangement in THREE_LEVEL else 2
+
+    def chip_pairs(self) -> tuple[ChipPair, ...]:
+        """The pairs of chips of a leg, in the order of their numbers; chip number = 6 pair + 2 leg + (0 upper, 1 lower)."""
+        if self.levels == 2:
+            pairs = [ChipPair("S", "switch", False, self.switch.thermal)]
+            return tuple(pairs if self.one_chip else [*pairs, ChipPair("D", "diode", True, self.diode.thermal)])
+        pairs = [ChipPair("SO", "switch", False, self.switch.thermal), ChipPair("SI", "inner_switch", False, self.inner_switch.thermal),
+                 ChipPair("DO", "diode", True, self.diode.thermal), ChipPair("DI", "inner_diode", True, self.inner_diode.thermal)]
+        if self.clamp_diode is not None:
+            pairs.append(ChipPair("DC", "clamp_diode", True, self.clamp_diode.thermal))
+        return tuple(pairs)
+
+    def chip_names(self) -> tuple[str, ...]:
+        """Names of all chips of the bridge, e.g. S-a-up, S-a-lo, S-b-up."""
+        return tuple(f"{pair.name}-{leg}-{side}" for pair in self.chip_pairs() for leg in "abc" for side in ("up", "lo"))
+
+    def diode_chips(self) -> np.ndarray:
+        """Which of the chips are diodes only, shape (n,) of bool."""
+        return np.repeat([pair.is_diode for pair in self.chip_pairs()], 6)
+
+    def _parts(self):
+        return {n: getattr(self, n) for n in ("switch", "diode", "inner_switch", "inner_diode", "clamp_diode") if getattr(self, n) is not None}
+
     def on_state_curves(self) -> dict[str, OnStateCurves]:
         """On-state curves by their place in the file."""
-        return {"switch.on_state": self.switch.on_state, "diode.on_state": self.diode.on_state}
+        out = {f"{name}.on_state": part.on_state for name, part in self._parts().items()}
+        if self.switch.reverse is not None:
+            out["switch.reverse"] = self.switch.reverse
+        return out
 
     def energy_curves(self) -> dict[str, EnergyCurves]:
         """Energy curves by their place in the file."""
-        return {
-            "switch.turn_on": self.switch.turn_on,
-            "switch.turn_off": self.switch.turn_off,
-            "diode.recovery": self.diode.recovery,
-        }
+        out = {}
+        for name, part in self._parts().items():
+            for key in ("turn_on", "turn_off", "recovery"):
+                if getattr(part, key, None) is not None:
+                    out[f"{name}.{key}"] = getattr(part, key)
+        return out
+
+    def gate_resistor_ohm(self, place: str) -> float:
+        """External gate resistor that an energy depends on: the turn-on one also for recovery [ohm]."""
+        return self.gate.r_off_ohm if place.endswith("turn_off") else self.gate.r_on_ohm
 
     @property
     def notes(self) -> tuple[str, ...]:
