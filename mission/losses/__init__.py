@@ -1,10 +1,20 @@
 """Losses: operating point and junction temperature -> watts per chip."""
 
-from .modulation import MOD_INDEX_INJECTED_MAX, Modulation, phase_reference
-from .periods import conduction_integrals_w, mean_energy_j, mean_losses_w, voltage_factor
-from .tables import CURRENT_REACH, LossTables, build_tables
+from .legs import LegPlan, leg_plan
+from .modulation import MOD_INDEX_INJECTED_MAX, MOD_INDEX_SIX_STEP, Modulation, held_phase, phase_reference, reference_for
+from .periods import (
+    LegLosses,
+    conduction_integrals_w,
+    leg_losses_at_angle_w,
+    leg_losses_w,
+    mean_energy_j,
+    mean_losses_w,
+    voltage_factor,
+)
+from .tables import CURRENT_REACH, LossTables, build_tables, current_reach_a
 
 __all__ = [
-    "CURRENT_REACH", "LossTables", "MOD_INDEX_INJECTED_MAX", "Modulation", "build_tables", "conduction_integrals_w", "mean_energy_j", "mean_losses_w",
-    "phase_reference", "voltage_factor",
+    "CURRENT_REACH", "LegLosses", "LegPlan", "LossTables", "MOD_INDEX_INJECTED_MAX", "MOD_INDEX_SIX_STEP", "Modulation", "build_tables",
+    "conduction_integrals_w", "current_reach_a", "held_phase", "leg_losses_at_angle_w", "leg_losses_w", "leg_plan", "mean_energy_j",
+    "mean_losses_w", "phase_reference", "reference_for", "voltage_factor",
 ]

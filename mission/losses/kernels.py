@@ -1,13 +1,31 @@
-"""Loss look-ups for the march: plain arrays, no checks.
+"""Losses of a leg for the march: plain arrays, no checks.
 
 A loss at given current and operating point is a broken line of temperature,
-kept as ``p[0] + p[1] * (t - knot[0]) + sum_k p[1 + k] * max(t - knot[k], 0)``.
+kept as ``p[0] + p[1] * (t - knot[0]) + sum_k p[1 + k] * max(t - knot[k], 0)``. So a
+loss is worked out at the corner temperatures of the curves only.
+
+``point`` holds one operating point, ``drive`` what all of them share (places below),
+``conduction`` and ``switching`` the rules of :class:`mission.losses.legs.LegPlan`.
 """
 
 from __future__ import annotations
 
 import numpy as np
 from numba import njit
+
+# places in ``point``; from SCALE on one factor for every energy curve [W/J]
+PEAK, SIZE, SHIFT, PHI, CLIP_FIRST, CLIP_LAST, FSW, MORE, LESS, TIME_SENSE, SCALE = range(11)
+# places in ``drive``
+CODE, LEVELS, FOLLOWS_CURRENT, SYMMETRIC, DEAD_S, COMPENSATED, AT_ZERO = range(7)
+_HALF, _TURN, _SIXTH, _TWELFTH = 0.5 * np.pi, 2.0 * np.pi, np.pi / 3.0, np.pi / 6.0
+_ROOT3_2 = np.sqrt(3.0) / 2.0
+# phase held at which rail: sectors of 60 and of 30 degrees
+_PHASE_60, _RAIL_60 = np.array([1, 0, 2, 1, 0, 2]), np.array([-1.0, 1.0, -1.0, 1.0, -1.0, 1.0])
+_PHASE_30 = np.array([2, 0, 1, 2, 0, 1, 2, 0, 1, 2, 0, 1])
+_RAIL_30 = np.array([1.0, 1.0, -1.0, -1.0, 1.0, 1.0, -1.0, -1.0, 1.0, 1.0, -1.0, -1.0])
+_GAUSS, _GAUSS_WEIGHT = np.polynomial.legendre.leggauss(5)
+_PAIR = 0.5 / np.sqrt(3.0)
+MOST_BORDERS = 64
 
 
 @njit(cache=True, inline="always")
@@ -35,66 +53,274 @@ def at_temperature(hinge, knot_c, n_hinges, t_c):
     return p if p > 0.0 else 0.0
 
 
-@njit(cache=True)
-def period_mean_corners(kind, i_peak, mod_index, phi, scale, i_step, conduction, energy_mean, order, amount, out):
-    """Mean loss of kind 0 (switch) or 1 (diode) at every corner temperature: ``out`` (k,).
-
-    ``scale`` (3,): watts per joule for turn-on, turn-off and recovery, in this order.
-    """
-    cell = i_peak / i_step
-    j = int(cell)
-    last = conduction.shape[1] - 2
-    if j > last:
-        j = last
-    u = cell - j
-    sign = 1.0 - 2.0 * kind
-    n_knots = conduction.shape[2]
-    for k in range(n_knots):
-        out[k] = (1.0 - u) * conduction[kind, j, k, 0] + u * conduction[kind, j + 1, k, 0]
-        if kind == 0:
-            for e in range(2):
-                out[k] += scale[e] * ((1.0 - u) * energy_mean[e, j, k] + u * energy_mean[e, j + 1, k])
-        else:
-            out[k] += scale[2] * ((1.0 - u) * energy_mean[2, j, k] + u * energy_mean[2, j + 1, k])
-    for h in range(order.size):
-        turn = sign * mod_index * amount[h] * np.cos(order[h] * phi)
-        for k in range(n_knots):
-            out[k] += turn * ((1.0 - u) * conduction[kind, j, k, 1 + h] + u * conduction[kind, j + 1, k, 1 + h])
+@njit(cache=True, inline="always")
+def wrap(angle):
+    """Angle within one turn from zero."""
+    return angle - _TURN * np.floor(angle / _TURN)
 
 
 @njit(cache=True)
-def instant_corners(kind, current, share, scale, i_step, voltage, energy, out):
-    """Loss of kind 0 or 1 at a current [A] with its conducting ``share``, at every corner temperature: ``out`` (k,)."""
-    cell = current / i_step
+def set_point(point, drive, i_peak, size, phi, direction, clip_first, clip_last, fsw, f, v_dc, v_ref, exponent, gate):
+    """Fill ``point`` for one operating point; turning backwards the angle of the current falls in time."""
+    point[PEAK], point[SIZE] = i_peak, size
+    point[PHI] = phi * direction
+    point[CLIP_FIRST], point[CLIP_LAST], point[FSW] = clip_first, clip_last, fsw
+    point[TIME_SENSE] = direction
+    point[SHIFT] = 0.0
+    if drive[FOLLOWS_CURRENT] > 0.0:
+        folded = point[PHI] - np.pi * np.round(point[PHI] / np.pi)
+        point[SHIFT] = min(max(folded, -_TWELFTH), _TWELFTH)
+    point[MORE] = point[LESS] = 1.0
+    if clip_first < _HALF and clip_last >= _HALF and f > 0.0 and fsw > 0.0:
+        # from rail to rail in n carrier periods: one edge more in that direction than against it
+        n = 2.0 * clip_first / (drive[LEVELS] - 1.0) * fsw / (_TURN * f)
+        point[MORE] = max(n + 0.5, 1.0) / n
+        point[LESS] = max(n - 0.5, 0.0) / n
+    commutated = v_dc / (drive[LEVELS] - 1.0)
+    for e in range(v_ref.size):
+        point[SCALE + e] = gate[e] * (commutated / v_ref[e]) ** exponent[e] * fsw
+
+
+@njit(cache=True, inline="always")
+def reference_at(code, x, size, shift):
+    """Reference of the phase at angle ``x``, not yet clipped, and whether a clamp holds that phase."""
+    sin_x, cos_x = np.sin(x), np.cos(x)
+    a = size * sin_x
+    if code == 0:
+        return a, False
+    if code == 1:
+        return a + size / 6.0 * sin_x * (3.0 - 4.0 * sin_x * sin_x), False
+    if code == 2:
+        return a + size / 4.0 * sin_x * (3.0 - 4.0 * sin_x * sin_x), False
+    b = size * (-0.5 * sin_x - _ROOT3_2 * cos_x)
+    c = -a - b
+    if code == 3:
+        high, low = max(a, max(b, c)), min(a, min(b, c))
+        return a - 0.5 * (high + low), False
+    phase, rail = 0, 1.0
+    if code == 4:
+        sector = min(int(wrap(x - shift) / _SIXTH), 5)
+        phase, rail = _PHASE_60[sector], _RAIL_60[sector]
+    elif code == 5:
+        sector = min(int(wrap(x) / _TWELFTH), 11)
+        phase, rail = _PHASE_30[sector], _RAIL_30[sector]
+    elif code == 6:
+        phase = min(int(wrap(x - _TWELFTH) / (2.0 * _SIXTH)), 2)
+    else:
+        phase = (min(int(wrap(x - _HALF) / (2.0 * _SIXTH)), 2) + 2) % 3
+        rail = -1.0
+    if phase == 0:
+        return rail, True
+    return a + rail - (b if phase == 1 else c), False
+
+
+@njit(cache=True)
+def add_losses(theta, weight, point, drive, conduction, switching, i_step, voltage, energy, out):
+    """Losses of every position at the angle ``theta`` of the current, times ``weight``, added to ``out`` (positions, k)."""
+    sin_t = np.sin(theta)
+    flow = 0 if sin_t >= 0.0 else 1
+    size = point[PEAK] * abs(sin_t)
+    x = theta + point[PHI]
+    r, held = reference_at(int(drive[CODE]), x, point[SIZE], point[SHIFT])
+    active = not held and abs(r) < 1.0
+    r = min(max(r, -1.0), 1.0)
+    dead = drive[DEAD_S] * point[FSW] if active else 0.0
+    move = 0.0
+    if drive[COMPENSATED] == 0.0:
+        move = dead if flow == 1 else -dead
+    at_p, at_z, at_n = 0.0, 0.0, 0.0
+    if drive[LEVELS] == 2.0:
+        at_p = min(max(0.5 * (1.0 + r) + move, 0.0), 1.0)
+        at_n = 1.0 - at_p
+    elif r >= 0.0:
+        at_p = min(max(r + move, 0.0), 1.0)
+        at_z = 1.0 - at_p
+    else:
+        at_z = min(max(1.0 + r + move, 0.0), 1.0)
+        at_n = 1.0 - at_z
+    both_off = min(2.0 * dead, at_n if flow == 0 else at_p)
+    cell = size / i_step
     j = int(cell)
     last = voltage.shape[1] - 2
     if j > last:
         j = last
     u = cell - j
-    for k in range(voltage.shape[2]):
-        v = (1.0 - u) * voltage[kind, j, k] + u * voltage[kind, j + 1, k]
-        p = v * current * share
-        if kind == 0:
-            p += scale[0] * ((1.0 - u) * energy[0, j, k] + u * energy[0, j + 1, k])
-            p += scale[1] * ((1.0 - u) * energy[1, j, k] + u * energy[1, j + 1, k])
+    n_k = voltage.shape[2]
+    for rule in range(conduction.shape[0]):
+        if conduction[rule, 2] != flow:
+            continue
+        where = conduction[rule, 3]
+        if where == 0:
+            share = at_p
+        elif where == 1:
+            share = at_z
+        elif where == 2:
+            share = at_n
+        elif where == 3:
+            share = at_p - both_off
+        elif where == 4:
+            share = at_n - both_off
         else:
-            p += scale[2] * ((1.0 - u) * energy[2, j, k] + u * energy[2, j + 1, k])
-        out[k] = p
+            share = both_off
+        if share <= 0.0:
+            continue
+        position, curve = conduction[rule, 0], conduction[rule, 1]
+        p = weight * share * size
+        for k in range(n_k):
+            out[position, k] += p * ((1.0 - u) * voltage[curve, j, k] + u * voltage[curve, j + 1, k])
+    if not active or point[PEAK] <= 0.0:
+        return
+    rising, falling = point[LESS], point[MORE]
+    if (np.cos(x) >= 0.0) == (point[TIME_SENSE] > 0.0):
+        rising, falling = falling, rising
+    for rule in range(switching.shape[0]):
+        if switching[rule, 2] != flow:
+            continue
+        side = switching[rule, 3]
+        if (side == 1 and r < 0.0) or (side == 2 and r >= 0.0):
+            continue
+        position, curve = switching[rule, 0], switching[rule, 1]
+        p = weight * point[SCALE + curve] * (rising if (switching[rule, 4] == 0) == (flow == 0) else falling)
+        for k in range(n_k):
+            out[position, k] += p * ((1.0 - u) * energy[curve, j, k] + u * energy[curve, j + 1, k])
 
 
-@njit(cache=True, inline="always")
-def zero_sequence(modulation, a, b, c):
-    """What is added to all three references (a, b, c include the modulation index)."""
-    if modulation == 0:
-        return 0.0
-    if modulation == 1:
-        # m/6 sin 3x = (m/6)(3 s - 4 s^3) with s = a/m; written with the product a b c = -m^3/4 sin 3x
-        m2 = (a * a + b * b + c * c) / 1.5
-        if m2 < 1e-24:
-            return 0.0
-        return -4.0 / 6.0 * a * b * c / m2
-    high = a if a > b else b
-    high = high if high > c else c
-    low = a if a < b else b
-    low = low if low < c else c
-    return -0.5 * (high + low)
+@njit(cache=True)
+def jumps(point, drive, out):
+    """Angles of the current within a turn where a loss jumps, into ``out``; returns how many."""
+    code = int(drive[CODE])
+    n = 0
+    shift = point[SHIFT]
+    if code == 4:
+        for k in range(6):
+            out[n + k] = shift + k * _SIXTH
+        n += 6
+    elif code == 5:
+        for k in range(12):
+            out[n + k] = k * _TWELFTH
+        n += 12
+    elif code >= 6:
+        begin = _TWELFTH if code == 6 else _HALF
+        for k in range(3):
+            out[n + k] = begin + 2.0 * k * _SIXTH
+        n += 3
+    for clip in (point[CLIP_FIRST], point[CLIP_LAST]):
+        if clip < _HALF:
+            out[n], out[n + 1], out[n + 2], out[n + 3] = clip, np.pi - clip, np.pi + clip, _TURN - clip
+            n += 4
+    if drive[LEVELS] == 3.0:
+        if code < 4:
+            out[n], out[n + 1] = 0.0, np.pi
+            n += 2
+        else:
+            for k in range(12):
+                low, high = shift + k * _TWELFTH + 1e-9, shift + (k + 1) * _TWELFTH - 1e-9
+                begins = reference_at(code, low, point[SIZE], shift)[0] >= 0.0
+                if begins == (reference_at(code, high, point[SIZE], shift)[0] >= 0.0):
+                    continue
+                for _ in range(40):
+                    middle = 0.5 * (low + high)
+                    if (reference_at(code, middle, point[SIZE], shift)[0] >= 0.0) == begins:
+                        low = middle
+                    else:
+                        high = middle
+                out[n] = 0.5 * (low + high)
+                n += 1
+    for k in range(n):
+        out[k] = wrap(out[k] - point[PHI])
+    if drive[AT_ZERO] > 0.0:
+        out[n], out[n + 1] = 0.0, np.pi
+        n += 2
+    return n
+
+
+@njit(cache=True)
+def _sort(values, n):
+    """Rising order in place; short lists."""
+    for a in range(1, n):
+        v = values[a]
+        b = a - 1
+        while b >= 0 and values[b] > v:
+            values[b + 1] = values[b]
+            b -= 1
+        values[b + 1] = v
+
+
+@njit(cache=True)
+def period_means(point, drive, conduction, switching, i_step, voltage, energy, half, border, out):
+    """Mean losses of every position over a period at the corner temperatures: ``out`` (positions, k).
+
+    ``half`` like ``out`` and ``border`` (MOST_BORDERS,) are work space.
+    """
+    n = jumps(point, drive, border)
+    for k in range(12):
+        border[n + k] = wrap(point[SHIFT] + k * _TWELFTH - point[PHI])
+    n += 12
+    symmetric = drive[SYMMETRIC] > 0.0
+    end = np.pi if symmetric else _TURN
+    border[n], border[n + 1], border[n + 2] = 0.0, np.pi, end
+    n += 3
+    _sort(border, n)
+    half[:] = 0.0
+    for k in range(n - 1):
+        a, b = border[k], border[k + 1]
+        if b > end or b - a < 1e-10:
+            continue
+        for g in range(_GAUSS.size):
+            theta = 0.5 * (a + b) + 0.5 * (b - a) * _GAUSS[g]
+            add_losses(theta, (b - a) * _GAUSS_WEIGHT[g] / (2.0 * _TURN), point, drive, conduction, switching, i_step, voltage, energy, half)
+    for position in range(out.shape[0]):
+        for k in range(out.shape[1]):
+            out[position, k] = half[position, k] + (half[position ^ 1, k] if symmetric else 0.0)
+
+
+@njit(cache=True)
+def angle_nodes(count, point, drive, conduction, switching, knot_c, i_step, voltage, energy, corner, border, nodes):
+    """Losses of every position along a turn of the current as hinges ``nodes`` (count + 1, positions, k), linear in between.
+
+    A node beside a jump holds the mean weighted with its share of the two cells around it, so that the
+    broken line keeps the area of the true course.
+    """
+    n_positions, n_k = corner.shape
+    spacing = _TURN / count
+    symmetric = drive[SYMMETRIC] > 0.0
+    many = count // 2 if symmetric else count
+    n = jumps(point, drive, border)
+    _sort(border, n)
+    for j in range(many):
+        middle = j * spacing
+        broken = False
+        for b in range(n):
+            away = abs(border[b] - middle)
+            if away < spacing or _TURN - away < spacing:
+                broken = True
+        corner[:] = 0.0
+        if not broken:
+            add_losses(middle, 1.0, point, drive, conduction, switching, i_step, voltage, energy, corner)
+        else:
+            for side in (-1.0, 1.0):
+                # cuts inside this cell, from the node outwards
+                at = 0.0
+                while at < spacing:
+                    until = spacing
+                    for b in range(n):
+                        away = wrap(side * (border[b] - middle))
+                        if at + 1e-9 < away < until:
+                            until = away
+                    if until > spacing - 1e-9:
+                        until = spacing
+                    for sign in (-1.0, 1.0):
+                        d = 0.5 * (at + until) + sign * _PAIR * (until - at)
+                        weight = 0.5 * (until - at) / spacing * (1.0 - d / spacing)
+                        add_losses(middle + side * d, weight, point, drive, conduction, switching, i_step, voltage, energy, corner)
+                    at = until
+        for position in range(n_positions):
+            to_hinges(corner[position], knot_c, n_k, nodes[j, position])
+    if symmetric:
+        for j in range(many):
+            for position in range(n_positions):
+                for k in range(nodes.shape[2]):
+                    nodes[j + many, position, k] = nodes[j, position ^ 1, k]
+    for position in range(n_positions):
+        for k in range(nodes.shape[2]):
+            nodes[count, position, k] = nodes[0, position, k]

@@ -1,27 +1,57 @@
-"""Means over a fundamental period of any on-state curve and any energy curve.
+"""Losses over a fundamental period, exact for any on-state curve, any energy curve, every leg and modulation.
 
-With i = I sin(theta) over the conducting half wave, the share of the upper
-switch is (1 + sum_h M_h sin(h (theta + phi)))/2. All odd harmonics keep only
-their part that is even about the current's peak, so that
+The period is cut wherever something has a kink or a jump: where the current
+passes a point of a curve, changes its sign, where a phase begins or ends to be
+held or clipped, where the reference of a three-level leg changes its sign. Every
+piece is smooth and is integrated by Gauss-Legendre points.
+
+For modulations whose zero sequence is proportional to the modulation index the
+mean conduction losses of a two-level leg also have the closed form
 
     switch: A + sum_h M_h cos(h phi) B_h      diode: A - sum_h M_h cos(h phi) B_h
 
     A = 1/(4 pi) int v i dtheta,   B_h = 1/(4 pi) int v i sin(h theta) dtheta
 
-holds for every curve, straight or not. (With a straight line and no injection
+over the half wave, whatever the curve. (With a straight line and no injection
 it is the formula of F. Casanellas, IEE Proc.-Electr. Power Appl. 141(5), 1994.)
+:func:`conduction_integrals_w` gives A and B_h.
 """
 
 from __future__ import annotations
+
+from dataclasses import dataclass
 
 import numpy as np
 
 from ..checks import require_range
 from ..device import PowerModule, on_state_voltage_v, switching_energy_j
 from ..errors import RangeError
-from .modulation import Modulation
+from . import legs
+from .modulation import Modulation, held_phase, phase_reference, reference_for
 
 _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(24)
+_FEW, _FEW_WEIGHTS = np.polynomial.legendre.leggauss(8)
+
+
+@dataclass(frozen=True)
+class LegLosses:
+    """Losses of every chip of one leg; p positions.
+
+    Attributes
+    ----------
+    positions : tuple of str
+        Names of the chips, e.g. S-up, S-lo, D-up, D-lo.
+    conduction_w, switching_w : ndarray, shape (p, n)
+    """
+
+    positions: tuple[str, ...]
+    conduction_w: np.ndarray
+    switching_w: np.ndarray
+
+    @property
+    def total_w(self) -> np.ndarray:
+        """Conduction and switching together, shape (p, n) [W]."""
+        return self.conduction_w + self.switching_w
 
 
 def half_wave_angles(i_peak_a, knots_a):
@@ -39,18 +69,22 @@ def half_wave_angles(i_peak_a, knots_a):
         Gauss-Legendre points between the kinks; the weights sum to pi/2.
     """
     i = np.asarray(i_peak_a, float)[:, None]
-    knots = np.asarray(knots_a, float)[None, :]
-    with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
-        ratio = np.where(i > 0.0, knots / np.where(i > 0.0, i, 1.0), 1.0)
-    borders = np.arcsin(np.clip(ratio, 0.0, 1.0))
     # two more borders keep the high harmonics resolved where the curve has no kink
     fixed = np.broadcast_to(np.array([0.0, np.pi / 6, np.pi / 3, np.pi / 2]), (i.shape[0], 4))
-    borders = np.sort(np.concatenate([fixed, borders], axis=1), axis=1)
+    borders = np.sort(np.concatenate([fixed, _knot_angles(i, knots_a)], axis=1), axis=1)
     half = 0.5 * np.diff(borders, axis=1)[..., None]
     middle = 0.5 * (borders[:, 1:] + borders[:, :-1])[..., None]
     theta = (middle + half * _NODES).reshape(i.shape[0], -1)
     weight = (half * _WEIGHTS).reshape(i.shape[0], -1)
     return theta, weight
+
+
+def _knot_angles(i_peak, knots_a):
+    """Angles of the first quarter wave where a current passes given values, (n, 1) and (k,) -> (n, k)."""
+    knots = np.asarray(knots_a, float)[None, :]
+    with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+        ratio = np.where(i_peak > 0.0, knots / np.where(i_peak > 0.0, i_peak, 1.0), 1.0)
+    return np.arcsin(np.clip(ratio, 0.0, 1.0))
 
 
 def conduction_integrals_w(curves, i_peak_a, t_vj_c, harmonics):
@@ -72,7 +106,7 @@ def conduction_integrals_w(curves, i_peak_a, t_vj_c, harmonics):
         A, then B_h [W].
     """
     i = require_range("i_peak_a", np.atleast_1d(i_peak_a), low=0.0, unit="A")
-    knots = np.unique(np.concatenate([c.current_a for c in curves.curve]))
+    knots = np.unique(np.concatenate([c.current_a for c in curves.points]))
     theta, weight = half_wave_angles(i, knots)
     current = i[:, None] * np.sin(theta)
     power = on_state_voltage_v(curves, current, t_vj_c) * current * weight
@@ -86,31 +120,313 @@ def conduction_integrals_w(curves, i_peak_a, t_vj_c, harmonics):
 def mean_energy_j(curves, i_peak_a, t_vj_c):
     """Energy per switching averaged over the whole period (the other half wave counts as zero), shape (n,) [J]."""
     i = require_range("i_peak_a", np.atleast_1d(i_peak_a), low=0.0, unit="A")
-    knots = np.unique(np.concatenate([c.current_a for c in curves.curve]))
+    knots = np.unique(np.concatenate([c.current_a for c in curves.points]))
     theta, weight = half_wave_angles(i, knots)
     energy = switching_energy_j(curves, i[:, None] * np.sin(theta), t_vj_c)
     return np.where(i > 0.0, (energy * weight).sum(axis=1) / np.pi, 0.0)
 
 
-def voltage_factor(curves, v_dc_v):
-    """Energies over their reference voltage: (V_dc/V_ref)^k, [-]."""
-    return (np.asarray(v_dc_v, float) / curves.v_ref_v) ** curves.voltage_exponent
+def voltage_factor(curves, v_commutated_v):
+    """Energies over their reference voltage: (V/V_ref)^k, [-]."""
+    return (np.asarray(v_commutated_v, float) / curves.v_ref_v) ** curves.voltage_exponent
 
 
-def mean_losses_w(module: PowerModule, modulation: Modulation, *, i_peak_a, mod_index, phi_rad, t_switch_c, t_diode_c,
-                  switching_frequency_hz, v_dc_v):
-    """Mean losses of one switch and one diode over a fundamental period, exact for the curves of the file.
+def gate_factors(module: PowerModule, places, r_gate_on_ohm=None, r_gate_off_ohm=None) -> np.ndarray:
+    """What other gate resistors than those of the energy curves make of the energies, one factor a curve.
+
+    Parameters
+    ----------
+    module : PowerModule
+    places : sequence of str
+        Energy curves by their place in the file, e.g. ``"switch.turn_on"``.
+    r_gate_on_ohm, r_gate_off_ohm : float, optional
+        External resistors; default those of the module file [ohm].
+
+    Raises
+    ------
+    RangeError
+        Another resistor than the file's where the data sheet gives no curve over it, or one outside that curve.
+    """
+    curves = module.energy_curves()
+    out = np.ones(len(places))
+    for k, place in enumerate(places):
+        name = "r_gate_off_ohm" if place.endswith("turn_off") else "r_gate_on_ohm"
+        asked = r_gate_off_ohm if name == "r_gate_off_ohm" else r_gate_on_ohm
+        used = module.gate_resistor_ohm(place) if asked is None else float(asked)
+        table = curves[place].gate_resistor
+        if table is None:
+            if asked is not None and used != module.gate_resistor_ohm(place):
+                raise RangeError(name, f"{used:g} ohm", f"{module.gate_resistor_ohm(place):g} ohm, the module's own",
+                                 f"{place} of '{module.name}' has no section gate_resistor: add one, or leave the resistor as it is")
+            continue
+        try:
+            out[k] = table.factor(used)
+        except RangeError as err:
+            raise RangeError(name, err.found, err.allowed, f"{err.advice} ({place} of '{module.name}')") from None
+    return out
+
+
+@dataclass(frozen=True)
+class _Case:
+    """Checked inputs of a leg, one operating point a row."""
+
+    plan: legs.LegPlan
+    modulation: Modulation
+    i_peak: np.ndarray
+    reference: np.ndarray
+    clip_first: np.ndarray
+    clip_last: np.ndarray
+    phi: np.ndarray
+    t_c: np.ndarray  # (positions,)
+    fsw: np.ndarray
+    f: np.ndarray
+    scale: np.ndarray  # (energies, n), without the switching frequency
+    dead: float
+    compensated: bool
+
+
+def leg_losses_w(module: PowerModule, modulation: Modulation, *, i_peak_a, mod_index, phi_rad, t_vj_c, switching_frequency_hz, v_dc_v,
+                 frequency_hz=None, dead_time_s=0.0, dead_time_compensated=False, overmodulation=False, r_gate_on_ohm=None,
+                 r_gate_off_ohm=None) -> LegLosses:
+    """Mean losses of every chip of a leg over a fundamental period.
+
+    Parameters
+    ----------
+    module : PowerModule
+        Of any kind and arrangement.
+    modulation : Modulation
+    i_peak_a, mod_index, phi_rad : array_like, shape (n,)
+        Peak phase current [A]; modulation index (fundamental peak phase voltage over half
+        the DC voltage); displacement [rad], positive when the current lags, beyond 90
+        degrees when generating.
+    t_vj_c : float or array_like, shape (p,)
+        Junction temperatures, one for all or one a position [degC].
+    switching_frequency_hz, v_dc_v : array_like
+    frequency_hz : array_like, optional
+        Output frequency; needed in overmodulation only, where a leg may switch less than
+        once in a carrier period. Without it the carrier is taken as much faster.
+    dead_time_s : float
+        Time in which both switches of a pair are off [s].
+    dead_time_compensated : bool
+        Whether the control corrects the voltage that the dead time costs.
+    overmodulation : bool
+        Allow a modulation index up to 4/pi, see :func:`mission.losses.reference_for`.
+    r_gate_on_ohm, r_gate_off_ohm : float, optional
+        Other gate resistors than the module file's.
+
+    Returns
+    -------
+    LegLosses
+
+    Raises
+    ------
+    RangeError
+        Names the argument, the first bad index and value.
+
+    Notes
+    -----
+    Current ripple is neglected. Temperature is held over the period; the march adds what its
+    ripple changes. A three-level leg commutates half the DC voltage, its midpoint is taken
+    as balanced.
+
+    Examples
+    --------
+    >>> from mission.device import load_module
+    >>> one = leg_losses_w(load_module("heron-300"), Modulation.CLAMP_120_UPPER, i_peak_a=300.0, mod_index=0.8, phi_rad=0.4, t_vj_c=125.0,
+    ...                    switching_frequency_hz=5000.0, v_dc_v=600.0)
+    >>> one.positions
+    ('S-up', 'S-lo', 'D-up', 'D-lo')
+    >>> bool(one.total_w[0, 0] != one.total_w[1, 0])
+    True
+    """
+    case = _case(module, modulation, i_peak_a, mod_index, phi_rad, t_vj_c, switching_frequency_hz, v_dc_v, frequency_hz, dead_time_s,
+                 dead_time_compensated, overmodulation, r_gate_on_ohm, r_gate_off_ohm)
+    n = case.i_peak.size
+    out = np.zeros((2, len(case.plan.positions), n))
+    for a in range(0, n, 256):  # bounded memory
+        part = slice(a, min(a + 256, n))
+        theta, weight = _period_points(case, part)
+        for total, values in zip(out, _at_angles(case, part, theta)):
+            total[:, part] = (values * weight).sum(axis=2) / (2.0 * np.pi)
+    return LegLosses(case.plan.positions, out[0], out[1])
+
+
+def leg_losses_at_angle_w(module: PowerModule, modulation: Modulation, theta_rad, **point) -> LegLosses:
+    """Losses of a leg along the angle of its current, averaged over a switching period only.
 
     Parameters
     ----------
     module : PowerModule
     modulation : Modulation
-    i_peak_a, mod_index, phi_rad : array_like, shape (n,)
-        Peak phase current [A]; modulation index; displacement [rad], positive when
-        the current lags, beyond 90 degrees when generating.
+    theta_rad : array_like, shape (a,)
+        Angle of the phase current i = I sin(theta) [rad].
+    **point
+        One operating point, as for :func:`leg_losses_w`.
+
+    Returns
+    -------
+    LegLosses
+        Arrays of shape (p, a).
+
+    Raises
+    ------
+    RangeError
+        As :func:`leg_losses_w`; more than one operating point.
+    """
+    order = ("i_peak_a", "mod_index", "phi_rad", "t_vj_c", "switching_frequency_hz", "v_dc_v", "frequency_hz", "dead_time_s",
+             "dead_time_compensated", "overmodulation", "r_gate_on_ohm", "r_gate_off_ohm")
+    default = {"frequency_hz": None, "dead_time_s": 0.0, "dead_time_compensated": False, "overmodulation": False, "r_gate_on_ohm": None,
+               "r_gate_off_ohm": None}
+    for name in point:
+        if name not in order:
+            raise TypeError(f"leg_losses_at_angle_w has no argument '{name}'")
+    given = default | point
+    case = _case(module, modulation, *(given[name] for name in order))
+    if case.i_peak.size != 1:
+        raise RangeError("i_peak_a", f"{case.i_peak.size} operating points", "one")
+    theta = require_range("theta_rad", np.atleast_1d(theta_rad))
+    conduction, switching = _at_angles(case, slice(0, 1), theta[None, :])
+    return LegLosses(case.plan.positions, conduction[:, 0], switching[:, 0])
+
+
+def _case(module, modulation, i_peak_a, mod_index, phi_rad, t_vj_c, fsw, v_dc_v, frequency_hz, dead_time_s, compensated, overmodulation,
+          r_on, r_off):
+    i = require_range("i_peak_a", np.atleast_1d(i_peak_a), low=0.0, unit="A")
+    phi = require_range("phi_rad", np.atleast_1d(phi_rad))
+    most = modulation.mod_index_max
+    if not overmodulation:
+        require_range("mod_index", np.atleast_1d(mod_index), low=0.0, high=most * (1 + 1e-9))
+    reference, first, last = reference_for(modulation, mod_index)
+    fsw = require_range("switching_frequency_hz", np.atleast_1d(fsw), low=0.0, unit="Hz")
+    v = require_range("v_dc_v", np.atleast_1d(v_dc_v), low=0.0, low_open=True, unit="V")
+    f = np.zeros(1) if frequency_hz is None else require_range("frequency_hz", np.atleast_1d(frequency_hz), low=0.0, unit="Hz")
+    dead = float(require_range("dead_time_s", dead_time_s, low=0.0, unit="s"))
+    if dead * fsw.max(initial=0.0) > 0.1:
+        raise RangeError("dead_time_s", f"{dead:g} s at {fsw.max():g} Hz", "at most a tenth of the switching period", "dead time is in seconds, not microseconds")
+    try:
+        i, reference, first, last, phi, fsw, v, f = np.broadcast_arrays(i, reference, first, last, phi, fsw, v, f)
+    except ValueError:
+        raise RangeError("i_peak_a, mod_index, phi_rad", f"shapes {np.shape(i_peak_a)}, {np.shape(mod_index)}, {np.shape(phi_rad)}",
+                         "equal lengths, or single numbers") from None
+    plan = legs.leg_plan(module)
+    t = require_range("t_vj_c", t_vj_c, unit="degC")
+    if t.ndim > 1 or (t.ndim == 1 and t.size != len(plan.positions)):
+        raise RangeError("t_vj_c", f"shape {t.shape}", f"one temperature, or one for each of {', '.join(plan.positions)}")
+    gate = gate_factors(module, plan.energy_places, r_on, r_off)
+    scale = np.stack([g * voltage_factor(c, v / (plan.levels - 1)) for g, c in zip(gate, plan.energies)])
+    return _Case(plan, modulation, i, reference, first, last, phi, np.broadcast_to(t, (len(plan.positions),)), fsw, f, scale, dead, bool(compensated))
+
+
+def _period_points(case, part):
+    """Gauss-Legendre points of a whole period between everything that has a kink or a jump, (n, p)."""
+    i, phi = case.i_peak[part, None], case.phi[part, None]
+    knots = np.unique(np.concatenate([c.current_a for curves in (*case.plan.voltages, *case.plan.energies) for c in curves.points]))
+    quarter = _knot_angles(i, knots)
+    from_current = np.concatenate([quarter, np.pi - quarter, np.pi + quarter, 2.0 * np.pi - quarter], axis=1)
+    shift = case.modulation.shift_rad(phi)
+    first, last = case.clip_first[part, None], case.clip_last[part, None]
+    x = np.concatenate([shift + np.arange(12) * np.pi / 6, np.broadcast_to(np.arange(12) * np.pi / 6, (i.shape[0], 12))]
+                       + [s * a + b for a in (first, last) for s, b in ((1, 0), (-1, np.pi), (1, np.pi), (-1, 2 * np.pi))], axis=1)
+    x = np.mod(x, 2.0 * np.pi)
+    if case.plan.levels == 3:
+        x = np.concatenate([x, _sign_changes(case, part, np.sort(x, axis=1))], axis=1)
+    ends = np.broadcast_to([0.0, np.pi, 2.0 * np.pi], (i.shape[0], 3))
+    borders = np.sort(np.concatenate([from_current, np.mod(x - phi, 2.0 * np.pi), ends], axis=1), axis=1)
+    half = 0.5 * np.diff(borders, axis=1)[..., None]
+    middle = 0.5 * (borders[:, 1:] + borders[:, :-1])[..., None]
+    return (middle + half * _FEW).reshape(i.shape[0], -1), (half * _FEW_WEIGHTS).reshape(i.shape[0], -1)
+
+
+def _sign_changes(case, part, x):
+    """Where the reference changes its sign inside the pieces between sorted angles ``x``; other pieces give their middle."""
+    low, high = x, np.concatenate([x[:, 1:], x[:, :1] + 2.0 * np.pi], axis=1)
+    span = high - low
+    low, high = low + 1e-9 * span, high - 1e-9 * span
+
+    def positive(at):
+        return phase_reference(case.modulation, at, case.reference[part, None], case.phi[part, None]) >= 0.0
+
+    begins = positive(low)
+    for _ in range(50):
+        middle = 0.5 * (low + high)
+        same = positive(middle) == begins
+        low, high = np.where(same, middle, low), np.where(same, high, middle)
+    return np.mod(0.5 * (low + high), 2.0 * np.pi)
+
+
+def _at_angles(case, part, theta):
+    """Conduction and switching losses of every position, each (positions, n, angles) [W]."""
+    plan = case.plan
+    col = (slice(None), None)
+    i_peak, phi, fsw, f = case.i_peak[part][col], case.phi[part][col], case.fsw[part][col], case.f[part][col]
+    current = i_peak * np.sin(theta)
+    size = np.abs(current)
+    flow = np.where(np.sin(theta) >= 0.0, legs.FLOW_OUT, legs.FLOW_IN)
+    x = theta + phi
+    wanted = phase_reference(case.modulation, x, case.reference[part][col], phi)
+    r = np.clip(wanted, -1.0, 1.0)
+    switches = np.abs(wanted) < 1.0
+    if case.modulation.holds:
+        switches = held_phase(case.modulation, x, phi)[0] != 0
+    dead = case.dead * fsw * switches
+    move = 0.0 if case.compensated else np.where(flow == legs.FLOW_OUT, -dead, dead)  # to the upper state of the pair
+    if plan.levels == 2:
+        upper = np.clip(0.5 * (1.0 + r) + move, 0.0, 1.0)
+        share = {legs.P: upper, legs.Z: np.zeros_like(r), legs.N: 1.0 - upper}
+    else:
+        upper = np.clip(np.where(r >= 0.0, r, 1.0 + r) + move, 0.0, 1.0)
+        share = {legs.P: np.where(r >= 0.0, upper, 0.0), legs.Z: np.where(r >= 0.0, 1.0 - upper, upper), legs.N: np.where(r >= 0.0, 0.0, 1.0 - upper)}
+    idle = np.where(flow == legs.FLOW_OUT, share[legs.N], share[legs.P])
+    share[legs.DEAD] = np.minimum(2.0 * dead, idle)
+    share[legs.N_GATED] = share[legs.N] - share[legs.DEAD]
+    share[legs.P_GATED] = share[legs.P] - share[legs.DEAD]
+    conduction = np.zeros((len(plan.positions), *theta.shape))
+    switching = np.zeros_like(conduction)
+    for position, curve, way, where in plan.conduction:
+        v = on_state_voltage_v(plan.voltages[curve], size, case.t_c[position])
+        conduction[position] += np.where(flow == way, share[where] * v * size, 0.0)
+    rising, falling = _edges(case, part, x)
+    above = r >= 0.0
+    loaded = i_peak > 0.0
+    for position, curve, way, side, edge in plan.switching:
+        energy = switching_energy_j(plan.energies[curve], size, case.t_c[position]) * case.scale[curve, part][col]
+        here = (flow == way) & switches & loaded
+        if side != legs.ANY:
+            here &= above == (side == legs.ABOVE)
+        # with the current flowing out a rising edge takes it over
+        often = rising if (edge == legs.ON) == (way == legs.FLOW_OUT) else falling
+        switching[position] += np.where(here, energy * fsw * often, 0.0)
+    return conduction, switching
+
+
+def _edges(case, part, x):
+    """Rising and falling edges in a carrier period where the reference passes from rail to rail in a few of them or less.
+
+    From a stretch at one rail to a stretch at the other there is one edge more in that
+    direction than against it: n + 1/2 and n - 1/2 in n carrier periods, at least one and none.
+    """
+    first, f, fsw = case.clip_first[part][:, None], case.f[part][:, None], case.fsw[part][:, None]
+    full = (first < np.pi / 2) & (case.clip_last[part][:, None] >= np.pi / 2) & (f > 0.0) & (fsw > 0.0)
+    n = np.where(full, 2.0 * first / (case.plan.levels - 1) * fsw / (2.0 * np.pi * np.where(full, f, 1.0)), 1.0)
+    more = np.where(full, np.maximum(n + 0.5, 1.0) / n, 1.0)
+    less = np.where(full, np.maximum(n - 0.5, 0.0) / n, 1.0)
+    upward = np.cos(x) >= 0.0
+    return np.where(upward, more, less), np.where(upward, less, more)
+
+
+def mean_losses_w(module: PowerModule, modulation: Modulation, *, i_peak_a, mod_index, phi_rad, t_switch_c, t_diode_c,
+                  switching_frequency_hz, v_dc_v):
+    """Mean losses of one upper switch and one lower diode of a two-level leg over a fundamental period.
+
+    Parameters
+    ----------
+    module : PowerModule
+        Two-level, with diodes of their own.
+    modulation : Modulation
+    i_peak_a, mod_index, phi_rad, switching_frequency_hz, v_dc_v
+        As for :func:`leg_losses_w`.
     t_switch_c, t_diode_c : float
         Junction temperatures [degC].
-    switching_frequency_hz, v_dc_v : float
 
     Returns
     -------
@@ -121,33 +437,11 @@ def mean_losses_w(module: PowerModule, modulation: Modulation, *, i_peak_a, mod_
     Raises
     ------
     RangeError
-        Negative current, or modulation index beyond the linear range.
-
-    Notes
-    -----
-    Dead time and current ripple are neglected. Temperature is held over the period;
-    the march adds what the ripple of the temperature changes.
+        Negative current, modulation index beyond the linear range, or another kind of leg.
     """
-    i = require_range("i_peak_a", np.atleast_1d(i_peak_a), low=0.0, unit="A")
-    m = require_range("mod_index", mod_index, low=0.0, high=modulation.mod_index_max * (1 + 1e-9))
-    phi = require_range("phi_rad", phi_rad)
-    require_range("v_dc_v", v_dc_v, low=0.0, low_open=True, unit="V")
-    try:
-        i, m, phi = np.broadcast_arrays(i, m, phi)
-    except ValueError:
-        raise RangeError("i_peak_a, mod_index, phi_rad", f"shapes {np.shape(i_peak_a)}, {np.shape(mod_index)}, {np.shape(phi_rad)}",
-                         "equal lengths, or single numbers") from None
-    series = modulation.harmonics()
-    orders = list(series)
-    turn = np.stack([m * amount * np.cos(h * phi) for h, amount in series.items()], axis=1)
-    switch = conduction_integrals_w(module.switch.on_state, i, t_switch_c, orders)
-    diode = conduction_integrals_w(module.diode.on_state, i, t_diode_c, orders)
-    f = float(require_range("switching_frequency_hz", switching_frequency_hz, low=0.0, unit="Hz"))
-    on, off, rec = module.switch.turn_on, module.switch.turn_off, module.diode.recovery
-    return {
-        "switch_conduction": switch[:, 0] + (turn * switch[:, 1:]).sum(axis=1),
-        "switch_switching": f * (mean_energy_j(on, i, t_switch_c) * voltage_factor(on, v_dc_v)
-                                 + mean_energy_j(off, i, t_switch_c) * voltage_factor(off, v_dc_v)),
-        "diode_conduction": diode[:, 0] - (turn * diode[:, 1:]).sum(axis=1),
-        "diode_switching": f * mean_energy_j(rec, i, t_diode_c) * voltage_factor(rec, v_dc_v),
-    }
+    if module.levels != 2 or module.one_chip:
+        raise RangeError("module", f"kind '{module.kind}', arrangement '{module.arrangement}'", "a two-level leg with diodes of their own", "use leg_losses_w")
+    one = leg_losses_w(module, modulation, i_peak_a=i_peak_a, mod_index=mod_index, phi_rad=phi_rad, t_vj_c=[t_switch_c] * 2 + [t_diode_c] * 2,
+                       switching_frequency_hz=switching_frequency_hz, v_dc_v=v_dc_v)
+    return {"switch_conduction": one.conduction_w[0], "switch_switching": one.switching_w[0],
+            "diode_conduction": one.conduction_w[3], "diode_switching": one.switching_w[3]}
