@@ -17,7 +17,7 @@ class CycleTable:
     Attributes
     ----------
     signal : ndarray of int16
-        0 to 11: junctions, 12 to 23: case points.
+        Chip number for junctions, number of chips more for the case points under them.
     range_k, mean_c, min_c, max_c : ndarray
         Swing and where it lies.
     heating_s : ndarray

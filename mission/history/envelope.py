@@ -6,27 +6,27 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from .march import CHIP_NAMES, RowEnvelope
+from .march import RowEnvelope
 
 
 @dataclass(frozen=True)
 class JunctionHistory:
-    """Temperatures and losses of a mission; b time buckets, twelve chips.
+    """Temperatures and losses of a mission; b time buckets, n chips.
 
     Attributes
     ----------
     edge_s : ndarray, shape (b + 1,)
         Borders of the buckets.
-    t_min_c, t_max_c, case_min_c, case_max_c, loss_w : ndarray, shape (b, 12)
+    t_min_c, t_max_c, case_min_c, case_max_c, loss_w : ndarray, shape (b, n)
         Extremes of junction and case points, mean losses.
     coolant_c : ndarray, shape (b,)
         Mean coolant temperature.
     phase_id : ndarray, shape (b,)
         Phase that holds most of the bucket.
-    peak_c, peak_time_s, peak_phase_id, lowest_c, case_peak_c, energy_j : ndarray, shape (12,)
+    peak_c, peak_time_s, peak_phase_id, lowest_c, case_peak_c, energy_j : ndarray, shape (n,)
         Highest junction temperature, end of the row that holds it, its phase; lowest
         junction temperature; highest case temperature; loss energy of the mission.
-    beyond_data_s : ndarray, shape (12,)
+    beyond_data_s : ndarray, shape (n,)
         Time in which the junction stood outside the temperatures of the data-sheet
         curves, so that losses were extended in a straight line.
     """
@@ -73,23 +73,24 @@ class JunctionHistory:
 class EnvelopeBuilder:
     """Gathers row envelopes into at most ``n_buckets`` equal stretches of time."""
 
-    def __init__(self, duration_s: float, phases, data_c, *, n_buckets: int = 8640):
-        self.duration_s, self.phases, self.data_c = float(duration_s), tuple(phases), data_c
+    def __init__(self, duration_s: float, chips, phases, data_c, *, n_buckets: int = 8640):
+        self.duration_s, self.chips, self.phases, self.data_c = float(duration_s), tuple(chips), tuple(phases), data_c
+        n = len(self.chips)
         b = self._b = int(n_buckets)
         self._width = self.duration_s / b
-        self._temps = np.empty((4, b, 12))
+        self._temps = np.empty((4, b, n))
         self._temps[::2], self._temps[1::2] = np.inf, -np.inf
-        self._loss, self._coolant = np.zeros((b, 12)), np.zeros(b)
+        self._loss, self._coolant = np.zeros((b, n)), np.zeros(b)
         self._phase_time = np.zeros((b, len(self.phases)))
-        self.peak_c, self.peak_time_s, self.peak_phase_id = np.full(12, -np.inf), np.zeros(12), np.zeros(12, np.int64)
-        self.lowest_c, self.case_peak_c = np.full(12, np.inf), np.full(12, -np.inf)
-        self.energy_j, self.beyond_data_s = np.zeros(12), np.zeros(12)
+        self.peak_c, self.peak_time_s, self.peak_phase_id = np.full(n, -np.inf), np.zeros(n), np.zeros(n, np.int64)
+        self.lowest_c, self.case_peak_c = np.full(n, np.inf), np.full(n, -np.inf)
+        self.energy_j, self.beyond_data_s = np.zeros(n), np.zeros(n)
 
     def add(self, rows: RowEnvelope) -> None:
         """Take the rows of one block."""
         span = rows.end_s - rows.start_s
         best = np.argmax(rows.t_max_c, axis=0)
-        chip = np.arange(12)
+        chip = np.arange(len(self.chips))
         higher = rows.t_max_c[best, chip] > self.peak_c
         self.peak_c = np.where(higher, rows.t_max_c[best, chip], self.peak_c)
         self.peak_time_s = np.where(higher, rows.end_s[best], self.peak_time_s)
@@ -133,7 +134,7 @@ class EnvelopeBuilder:
         # a bucket shorter than a row shows the row's extremes; one without any row cannot occur within the mission
         edge = np.append(np.flatnonzero(used) * width, min(end, self.duration_s))
         return JunctionHistory(
-            CHIP_NAMES, self.phases, float(end), edge, *(self._temps[k][used] for k in range(4)),
+            self.chips, self.phases, float(end), edge, *(self._temps[k][used] for k in range(4)),
             self._loss[used] / time[used, None], self._coolant[used] / time[used], self._phase_time[used].argmax(axis=1),
             self.peak_c, self.peak_time_s, self.peak_phase_id, self.lowest_c, self.case_peak_c, self.energy_j, self.beyond_data_s,
         )

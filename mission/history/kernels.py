@@ -11,7 +11,7 @@ mode and the loss read at the temperature of the middle of the step:
 
 Everything that a step touches lies in one flat work array at fixed places, so
 that the compiler can see that nothing overlaps and uses vector instructions
-across the twelve chips. Local states are scaled with their output weight: a
+across the chips. Local states are scaled with their output weight: a
 junction temperature is the coolant plus the plain sum of its local states plus
 the shared part.
 """
@@ -21,82 +21,86 @@ from __future__ import annotations
 import numpy as np
 from numba import njit
 
-from ..losses.kernels import at_temperature, instant_corners, period_mean_corners, to_hinges, zero_sequence
+from ..losses.kernels import MOST_BORDERS, SCALE, angle_nodes, at_temperature, period_means, set_point, wrap
 
-N = 12  # chips: six switches, then six diodes, a-upper, a-lower, b-upper ...
+# Chips stand side by side in lanes, so that a vector instruction takes several at once. The number of lanes has to be known
+# when the kernels are compiled; it comes in as the length of a tuple, and a bridge with fewer chips leaves some lanes cold.
+LANES = (12, 30)
 L_MAX, S_MAX, K_MAX = 16, 96, 8  # local modes a chip, shared modes, hinge coefficients
+LANE = 32  # from one row of lanes to the next
 # places in the work array w
-X_L, A_L, B_L = 0, 192, 384  # [mode, chip]
-X_S, A_S, W_S, HEAT = 576, 672, 768, 960  # [mode]
-B_S = 1056  # [chip, S_MAX] heat input, one chip after the other
-C_S = 2208  # [mode, chip] output
-T, FREE, P, P_MID, ENERGY, D_SELF = 3360, 3376, 3392, 3408, 3424, 3440  # [chip]
-SHARED, GAIN, BASE, P_SUM = 864, 880, 896, 912  # [chip] coolant plus shared part, its latest change, its value then; sum of losses since then
-HINGE = 3456  # [coefficient, 16]
-KNOT = 3584  # [corner]
-CASE_L, CASE_S, CASE = 3600, 3792, 4944  # [mode, chip], [mode, chip], [chip]
-A_S_MANY, W_S_MANY = 4960, 5056  # [mode] factors of the shared modes over several steps at once
-W_SIZE = 5152
+X_L, A_L, B_L = 0, 512, 1024  # [mode, chip]
+X_S, A_S, W_S, HEAT = 1536, 1632, 1728, 1824  # [mode]
+A_S_MANY, W_S_MANY = 1920, 2016  # [mode] factors of the shared modes over several steps at once
+B_S = 2112  # [chip, S_MAX] heat input, one chip after the other
+C_S = 5184  # [mode, chip] output
+T, FREE, P, P_MID, ENERGY, D_SELF = 8256, 8288, 8320, 8352, 8384, 8416  # [chip]
+SHARED, GAIN, BASE, P_SUM = 8448, 8480, 8512, 8544  # [chip] coolant plus shared part, its latest change, its value then; sum of losses since then
+HINGE = 8576  # [coefficient, chip]
+KNOT = 8832  # [corner]
+CASE_L, CASE_S, CASE = 8848, 9360, 12432  # [mode, chip], [mode, chip], [chip]
+W_SIZE = 12480
 
 # The same places as unsigned numbers, for the innermost loops: an index that cannot be negative needs no check,
 # and without the check the loops become vector instructions.
-U_N, U_S_MAX, U_X_L, U_A_L, U_B_L, U_X_S, U_A_S, U_W_S, U_HEAT, U_SHARED, U_GAIN, U_BASE, U_P_SUM = (
-    np.uint64(place) for place in (N, S_MAX, X_L, A_L, B_L, X_S, A_S, W_S, HEAT, SHARED, GAIN, BASE, P_SUM))
+U_LANE, U_S_MAX, U_X_L, U_A_L, U_B_L, U_X_S, U_A_S, U_W_S, U_HEAT, U_SHARED, U_GAIN, U_BASE, U_P_SUM = (
+    np.uint64(place) for place in (LANE, S_MAX, X_L, A_L, B_L, X_S, A_S, W_S, HEAT, SHARED, GAIN, BASE, P_SUM))
 U_B_S, U_C_S, U_T, U_FREE, U_P, U_P_MID, U_ENERGY, U_D_SELF, U_HINGE, U_KNOT, U_CASE_L, U_CASE_S, U_CASE = (
     np.uint64(place) for place in (B_S, C_S, T, FREE, P, P_MID, ENERGY, D_SELF, HINGE, KNOT, CASE_L, CASE_S, CASE))
-U_1, U_3, U_6, U_16, U_A_S_MANY, U_W_S_MANY = (np.uint64(v) for v in (1, 3, 6, 16, A_S_MANY, W_S_MANY))
+U_1, U_2, U_3, U_6, U_A_S_MANY, U_W_S_MANY = (np.uint64(v) for v in (1, 2, 3, 6, A_S_MANY, W_S_MANY))
 
 # scalars carried from row to row
 TIME, THETA, COOLANT, REGIME, SETTLE, LEVEL, WINDOW_CYCLES, WINDOW_START, H_LOADED, WINDOW_PHASE = range(10)
 N_NOW = 10
 # columns of the row table
-DT, FREQ, DIRECTION, I_PEAK, MOD, PHI, ANGLE_OFFSET, T_COOLANT, S_ON, S_OFF, S_REC = range(11)
-N_ROW = 11
+DT, FREQ, DIRECTION, I_PEAK, MOD, PHI, ANGLE_OFFSET, T_COOLANT, CLIP_FIRST, CLIP_LAST, FSW, V_DC = range(12)
+N_ROW = 12
 # settings
 F_SLOW, STEPS, H0, H_MAX, SETTLE_PERIODS, SETTLE_K, T_STOP = range(7)
 IDLE, MEAN, ANGLE = 0, 1, 2
 OK, RUNAWAY = 0, 1
-NODES, RIPPLE_NODES = 64, 32  # along the conducting half wave
+NODES, RIPPLE_NODES = 128, 64  # along a turn of the current
 CHUNK = 256
 U_NODE_LAST = np.uint64(NODES - 1)
-SIN, COS = np.sin(np.pi * np.arange(NODES + 1) / NODES), np.cos(np.pi * np.arange(NODES + 1) / NODES)
-SIN[NODES] = 0.0
 SHARED_WITHIN_S = 0.012  # shared modes move at least this often in even steps
+TURN = 2.0 * np.pi
 TINY_W = 1e-9  # keeps decaying states out of the denormal range, where the processor crawls
 THIRD = 2.0 * np.pi / 3.0
-ROOT3_2 = np.sqrt(3.0) / 2.0
 
 
 @njit(cache=True)
 def step_factors(h, lam_l, rho, lam_s, out):
-    """Factors of an exact step of length ``h`` into ``out`` (2 L N + N + 2 S): keep, heat in (local), own rise, keep, gain (shared)."""
-    n_l = lam_l.shape[0]
+    """Factors of an exact step of length ``h`` into ``out`` (2 L n + n + 2 S): keep, heat in (local), own rise, keep, gain (shared)."""
+    n_l, n = lam_l.shape
     n_s = lam_s.size
-    own = 2 * n_l * N
-    for i in range(N):
+    own = 2 * n_l * n
+    for i in range(n):
         out[own + i] = 0.0
     for k in range(n_l):
-        for i in range(N):
+        for i in range(n):
             e = np.expm1(-lam_l[k, i] * h)
-            out[k * N + i] = 1.0 + e
+            out[k * n + i] = 1.0 + e
             b = -rho[k, i] * e / lam_l[k, i]
-            out[n_l * N + k * N + i] = b
+            out[n_l * n + k * n + i] = b
             out[own + i] += b
     for s in range(n_s):
         e = np.expm1(-lam_s[s] * h)
-        out[own + N + s] = 1.0 + e
-        out[own + N + n_s + s] = -e / lam_s[s]
+        out[own + n + s] = 1.0 + e
+        out[own + n + n_s + s] = -e / lam_s[s]
 
 
 @njit(cache=True, inline="always")
-def load_factors(w, n_l, n_s, factors):
+def load_factors(lanes, w, n_l, n_s, factors):
     """Put the factors of a step into their places."""
-    m = np.uint64(n_l) * U_N
-    s_first, s_many = m + m + U_N, np.uint64(n_s)
-    for j in range(m):
-        w[U_A_L + j] = factors[j]
-        w[U_B_L + j] = factors[m + j]
-    for i in range(U_N):
+    n = np.uint64(len(lanes))
+    modes = np.uint64(n_l)
+    m = modes * n
+    s_first, s_many = m + m + n, np.uint64(n_s)
+    for k in range(modes):
+        for i in range(n):
+            w[U_A_L + k * U_LANE + i] = factors[k * n + i]
+            w[U_B_L + k * U_LANE + i] = factors[m + k * n + i]
+    for i in range(n):
         w[U_D_SELF + i] = factors[m + m + i]
     for s in range(s_many):
         w[U_A_S + s] = factors[s_first + s]
@@ -104,161 +108,135 @@ def load_factors(w, n_l, n_s, factors):
 
 
 @njit(cache=True, inline="always")
-def hinge_losses(w, n_h, source, target):
+def hinge_losses(lanes, w, n_h, source, target):
     """Losses of all chips at the temperatures in ``source``, into ``target``."""
-    for i in range(U_N):
-        w[target + i] = w[U_HINGE + i] + w[U_HINGE + U_16 + i] * (w[source + i] - w[U_KNOT])
+    n = np.uint64(len(lanes))
+    for i in range(n):
+        w[target + i] = w[U_HINGE + i] + w[U_HINGE + U_LANE + i] * (w[source + i] - w[U_KNOT])
     for k in range(U_1, np.uint64(n_h)):
-        for i in range(U_N):
+        for i in range(n):
             d = w[source + i] - w[U_KNOT + k]
             d = d if d > 0.0 else 0.0
-            w[target + i] += w[U_HINGE + U_16 + U_16 * k + i] * d
-    for i in range(U_N):
+            w[target + i] += w[U_HINGE + U_LANE + U_LANE * k + i] * d
+    for i in range(n):
         w[target + i] = w[target + i] if w[target + i] > TINY_W else TINY_W
 
 
 @njit(cache=True, inline="always")
-def local_step(w, n_l, n_h, part):
+def local_step(lanes, w, n_l, n_h, part):
     """Local modes of all chips over one step, exact, loss at the predicted middle temperature.
 
     The shared part moves on by ``part`` of what its latest step added: enough for
     the temperature of the loss; :func:`shared_step` sets it right.
     """
-    for i in range(U_N):
+    n = np.uint64(len(lanes))
+    for i in range(n):
         w[U_SHARED + i] += part * w[U_GAIN + i]
         w[U_FREE + i] = w[U_SHARED + i]
     for k in range(np.uint64(n_l)):
-        for i in range(U_N):
-            w[U_X_L + k * U_N + i] *= w[U_A_L + k * U_N + i]
-            w[U_FREE + i] += w[U_X_L + k * U_N + i]
-    hinge_losses(w, n_h, U_T, U_P)
-    for i in range(U_N):
+        for i in range(n):
+            w[U_X_L + k * U_LANE + i] *= w[U_A_L + k * U_LANE + i]
+            w[U_FREE + i] += w[U_X_L + k * U_LANE + i]
+    hinge_losses(lanes, w, n_h, U_T, U_P)
+    for i in range(n):
         w[U_P_MID + i] = 0.5 * (w[U_T + i] + w[U_FREE + i] + w[U_D_SELF + i] * w[U_P + i])
-    hinge_losses(w, n_h, U_P_MID, U_P)
-    for i in range(U_N):
+    hinge_losses(lanes, w, n_h, U_P_MID, U_P)
+    for i in range(n):
         w[U_T + i] = w[U_FREE + i] + w[U_D_SELF + i] * w[U_P + i]
     for k in range(np.uint64(n_l)):
-        for i in range(U_N):
-            w[U_X_L + k * U_N + i] += w[U_B_L + k * U_N + i] * w[U_P + i]
+        for i in range(n):
+            w[U_X_L + k * U_LANE + i] += w[U_B_L + k * U_LANE + i] * w[U_P + i]
 
 
 @njit(cache=True, inline="always")
-def shared_step(w, n_s, factor, t_cool, keep, gain):
+def shared_step(lanes, w, n_s, factor, t_cool, keep, gain):
     """Shared modes over the time since their latest step, with the mean power ``factor * w[P_SUM]``, exact.
 
     ``keep`` and ``gain``: places of their factors.
     """
+    n = np.uint64(len(lanes))
     for s in range(np.uint64(n_s)):
         w[U_HEAT + s] = 0.0
-    for i in range(U_N):
+    for i in range(n):
         for s in range(np.uint64(n_s)):
             w[U_HEAT + s] += w[U_B_S + i * U_S_MAX + s] * w[U_P_SUM + i]
     for s in range(np.uint64(n_s)):
         w[U_X_S + s] = w[keep + s] * w[U_X_S + s] + w[gain + s] * factor * w[U_HEAT + s]
-    for i in range(U_N):
+    for i in range(n):
         # what stands in SHARED is the extrapolation; T takes the difference, GAIN the true change
         w[U_FREE + i] = w[U_SHARED + i]
         w[U_SHARED + i] = t_cool
         w[U_P_SUM + i] = 0.0
     for s in range(np.uint64(n_s)):
-        for i in range(U_N):
-            w[U_SHARED + i] += w[U_C_S + s * U_N + i] * w[U_X_S + s]
-    for i in range(U_N):
+        for i in range(n):
+            w[U_SHARED + i] += w[U_C_S + s * U_LANE + i] * w[U_X_S + s]
+    for i in range(n):
         w[U_T + i] += w[U_SHARED + i] - w[U_FREE + i]
         w[U_GAIN + i] = w[U_SHARED + i] - w[U_BASE + i]
         w[U_BASE + i] = w[U_SHARED + i]
 
 
 @njit(cache=True)
-def case_points(w, n_l, n_s, t_cool):
+def case_points(lanes, w, n_l, n_s, t_cool):
     """Case temperatures under the chips into their place."""
-    for i in range(U_N):
+    n = np.uint64(len(lanes))
+    for i in range(n):
         w[U_CASE + i] = t_cool
     for k in range(np.uint64(n_l)):
-        for i in range(U_N):
-            w[U_CASE + i] += w[U_CASE_L + k * U_N + i] * w[U_X_L + k * U_N + i]
+        for i in range(n):
+            w[U_CASE + i] += w[U_CASE_L + k * U_LANE + i] * w[U_X_L + k * U_LANE + i]
     for s in range(np.uint64(n_s)):
-        for i in range(U_N):
-            w[U_CASE + i] += w[U_CASE_S + s * U_N + i] * w[U_X_S + s]
+        for i in range(n):
+            w[U_CASE + i] += w[U_CASE_S + s * U_LANE + i] * w[U_X_S + s]
 
 
 @njit(cache=True)
-def shared_part(w, n_s, t_cool):
+def shared_part(lanes, w, n_s, t_cool):
     """Coolant plus shared modes, seen at each chip; after a change from outside."""
-    for i in range(U_N):
+    n = np.uint64(len(lanes))
+    for i in range(n):
         w[U_SHARED + i] = t_cool
         w[U_GAIN + i] = 0.0
     for s in range(np.uint64(n_s)):
-        for i in range(U_N):
-            w[U_SHARED + i] += w[U_C_S + s * U_N + i] * w[U_X_S + s]
-    for i in range(U_N):
+        for i in range(n):
+            w[U_SHARED + i] += w[U_C_S + s * U_LANE + i] * w[U_X_S + s]
+    for i in range(n):
         w[U_BASE + i] = w[U_SHARED + i]
 
 
 @njit(cache=True)
-def junctions(w, n_l, n_s, t_cool):
+def junctions(lanes, w, n_l, n_s, t_cool):
     """Junction temperatures from the states."""
-    shared_part(w, n_s, t_cool)
-    for i in range(N):
-        w[T + i] = w[SHARED + i]
-    for k in range(n_l):
-        for i in range(N):
-            w[T + i] += w[X_L + k * N + i]
-
-
-@njit(cache=True)
-def half_wave(op, stride, i_step, voltage, energy, modulation, knot_c, nodes):
-    """Losses of switch and diode along the half wave that they conduct: hinges ``nodes`` (NODES + 1, 2, k).
-
-    Node j stands at j pi/NODES of the current; only every ``stride``-th is made.
-    """
-    n_k = knot_c.size
-    phi = op[PHI] * op[DIRECTION]
-    cos_phi, sin_phi = np.cos(phi), np.sin(phi)
-    scale = op[S_ON:S_REC + 1]
-    corner = np.empty(n_k)
-    m = op[MOD]
-    for j in range(0, NODES + 1, stride):
-        sin_x = SIN[j] * cos_phi + COS[j] * sin_phi
-        cos_x = COS[j] * cos_phi - SIN[j] * sin_phi
-        a = m * sin_x
-        b = m * (-0.5 * sin_x - ROOT3_2 * cos_x)
-        share = 0.5 * (1.0 + a + zero_sequence(modulation, a, b, -a - b))
-        current = op[I_PEAK] * SIN[j]
-        for kind in range(2):
-            instant_corners(kind, current, share if kind == 0 else 1.0 - share, scale, i_step, voltage, energy, corner)
-            to_hinges(corner, knot_c, n_k, nodes[j, kind])
+    n = np.uint64(len(lanes))
+    shared_part(lanes, w, n_s, t_cool)
+    for i in range(n):
+        w[U_T + i] = w[U_SHARED + i]
+    for k in range(np.uint64(n_l)):
+        for i in range(n):
+            w[U_T + i] += w[U_X_L + k * U_LANE + i]
 
 
 @njit(cache=True, inline="always")
 def leg_losses(leg, psi, nodes, w):
-    """Losses of one leg at the angle ``psi`` (within a turn) of its current: one switch and the opposite diode conduct.
+    """Losses of one leg at the angle ``psi`` (within a turn) of its current.
 
-    ``leg``: 0, 1, 2 as an unsigned number.
+    ``leg``: 0, 1, 2 as an unsigned number; ``nodes`` (NODES + 1, positions, k).
     """
-    on = leg + leg
-    off = on + U_1
-    if psi >= np.pi:
-        on, off = off, on
-        psi -= np.pi
-    place = psi * (NODES / np.pi)
+    place = psi * (NODES / TURN)
     j = np.uint64(place)
     if j > U_NODE_LAST:
         j = U_NODE_LAST
     u = place - float(j)
-    for k in range(np.uint64(nodes.shape[2])):
-        row = U_HINGE + U_16 * k
-        w[row + on] = nodes[j, 0, k] + u * (nodes[j + U_1, 0, k] - nodes[j, 0, k])
-        w[row + off] = 0.0
-        # the diode beside the switch that is off
-        w[row + U_6 + off] = nodes[j, 1, k] + u * (nodes[j + U_1, 1, k] - nodes[j, 1, k])
-        w[row + U_6 + on] = 0.0
+    for position in range(np.uint64(nodes.shape[1])):
+        chip = U_HINGE + U_6 * (position // U_2) + U_2 * leg + position % U_2
+        for k in range(np.uint64(nodes.shape[2])):
+            w[chip + U_LANE * k] = nodes[j, position, k] + u * (nodes[j + U_1, position, k] - nodes[j, position, k])
 
 
 @njit(cache=True)
 def feed(first, n_points, values, times, half, ripple, phase, last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count):
-    """Feed samples ``values`` (points, N) of N signals from ``first`` on to their turning-point filters."""
-    for i in range(N):
+    """Feed samples ``values`` (points, n) of n signals from ``first`` on to their turning-point filters."""
+    for i in range(values.shape[1]):
         signal = first + i
         head = heading[signal]
         newest = last[signal, 0]
@@ -311,23 +289,26 @@ def flush_points(last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_co
 
 
 @njit(cache=True)
-def ripple_of(kind, t_mean, op, half_nodes, knot_c, lam, rho, nodes, result):
+def ripple_of(position, flow, t_mean, op, coarse, knot_c, lam, rho, nodes, result):
     """Periodic ripple of one chip about its mean temperature, its own feedback included.
 
     Power is a broken line over the angle, so the response of each mode is exact.
-    ``half_nodes``: see :func:`half_wave`. ``result``: kappa (what the ripple adds
-    to the mean loss, relative), lowest and highest ripple [K], loss at the mean
-    temperature, that temperature. ``nodes`` (RIPPLE_NODES + 1, L) gets the scaled
-    states less their means.
+    ``coarse`` (RIPPLE_NODES + 1, positions, k): losses along a turn. ``flow``: which half of it loads
+    the chip (0, 1; 2: both). ``result``: kappa (what the ripple adds to the mean loss, relative), lowest
+    and highest ripple [K], loss at the mean temperature, that temperature. ``nodes``
+    (RIPPLE_NODES + 1, L) gets the scaled states less their means, from the start of the loaded part on.
     """
-    n = RIPPLE_NODES
+    n = RIPPLE_NODES if flow == 2 else RIPPLE_NODES // 2
+    begin = RIPPLE_NODES // 2 if flow == 1 else 0
     n_l = lam.size
     n_h = max(knot_c.size - 1, 1)
     f = op[FREQ]
-    stride = NODES // RIPPLE_NODES
-    # turning backwards the half wave is crossed from its other end
-    begin, stride = (0, stride) if op[DIRECTION] > 0.0 else (NODES, -stride)
-    dt = 0.5 / (f * n)
+    stride = 1
+    if op[DIRECTION] < 0.0:
+        # turning backwards the loaded part is crossed from its other end
+        begin, stride = begin + n, -1
+    dt = 1.0 / (f * RIPPLE_NODES)
+    rest = 1.0 / f - n * dt if flow != 2 else 0.0
     a_k, w0, w1, over, x_k = np.empty(n_l), np.empty(n_l), np.empty(n_l), np.empty(n_l), np.empty(n_l)
     for k in range(n_l):
         z = lam[k] * dt
@@ -339,8 +320,7 @@ def ripple_of(kind, t_mean, op, half_nodes, knot_c, lam, rho, nodes, result):
             mean = -np.expm1(-z) / z
             w1[k] = dt * (1.0 - mean) / z
             w0[k] = dt * (mean - a_k[k]) / z
-        half = 0.5 * lam[k] / f
-        over[k] = np.exp(-half) / -np.expm1(-2.0 * half)
+        over[k] = np.exp(-lam[k] * rest) / -np.expm1(-lam[k] / f)
     tau = np.zeros(n + 1)
     p = np.empty(n + 1)
     mean_before = 0.0
@@ -348,9 +328,9 @@ def ripple_of(kind, t_mean, op, half_nodes, knot_c, lam, rho, nodes, result):
     for turn in range(3):
         mean_p = 0.0
         for j in range(n + 1):
-            p[j] = at_temperature(half_nodes[begin + stride * j, kind], knot_c, n_h, t_mean + tau[j])
+            p[j] = at_temperature(coarse[begin + stride * j, position], knot_c, n_h, t_mean + tau[j])
             mean_p += p[j] if 0 < j < n else 0.5 * p[j]
-        mean_p *= 0.5 / n
+        mean_p /= RIPPLE_NODES
         if turn == 0:
             mean_before = mean_p
         for k in range(n_l):
@@ -380,15 +360,16 @@ def ripple_of(kind, t_mean, op, half_nodes, knot_c, lam, rho, nodes, result):
 
 
 @njit(cache=True)
-def ripples(op, w, group, group_kind, group_lam, group_rho, half_nodes, knot_c, nodes, out):
+def ripples(op, w, group, group_position, flows, group_lam, group_rho, coarse, knot_c, nodes, out):
     """Ripple of every group of like chips at their mean temperature: ``nodes`` (G, ., L) and ``out`` (G, 5)."""
-    for g in range(group_kind.size):
+    for g in range(group_position.size):
         total, count = 0.0, 0
-        for i in range(N):
+        for i in range(group.size):
             if group[i] == g:
                 total += w[T + i]
                 count += 1
-        ripple_of(group_kind[g], total / count, op, half_nodes, knot_c, group_lam[g], group_rho[g], nodes[g], out[g])
+        position = group_position[g]
+        ripple_of(position, flows[position], total / count, op, coarse, knot_c, group_lam[g], group_rho[g], nodes[g], out[g])
 
 
 @njit(cache=True)
@@ -397,8 +378,8 @@ def small_change(op, made_for):
     return (abs(op[FREQ] - made_for[FREQ]) <= 0.005 * made_for[FREQ] and op[DIRECTION] == made_for[DIRECTION]
             and abs(op[I_PEAK] - made_for[I_PEAK]) <= 0.03 * made_for[I_PEAK]
             and abs(op[MOD] - made_for[MOD]) <= 0.02 and abs(op[PHI] - made_for[PHI]) <= 0.03
-            and abs(op[S_ON] - made_for[S_ON]) <= 0.02 * made_for[S_ON] and abs(op[S_OFF] - made_for[S_OFF]) <= 0.02 * made_for[S_OFF]
-            and abs(op[S_REC] - made_for[S_REC]) <= 0.02 * made_for[S_REC])
+            and abs(op[CLIP_FIRST] - made_for[CLIP_FIRST]) <= 0.02 and abs(op[CLIP_LAST] - made_for[CLIP_LAST]) <= 0.02
+            and abs(op[FSW] - made_for[FSW]) <= 0.02 * made_for[FSW] and abs(op[V_DC] - made_for[V_DC]) <= 0.01 * made_for[V_DC])
 
 
 @njit(cache=True)
@@ -406,79 +387,79 @@ def ripple_share(w, n_h, i, result):
     """A chip's loss over the loss that its group's ripple was made for."""
     if result[3] <= 0.0:
         return 1.0
-    p = w[HINGE + i] + w[HINGE + 16 + i] * (w[T + i] - w[KNOT])
+    p = w[HINGE + i] + w[HINGE + LANE + i] * (w[T + i] - w[KNOT])
     for k in range(1, n_h):
         d = w[T + i] - w[KNOT + k]
         if d > 0.0:
-            p += w[HINGE + 16 + 16 * k + i] * d
+            p += w[HINGE + LANE + LANE * k + i] * d
     return max(p, 0.0) / (result[3] * (1.0 + result[0]))
 
 
 @njit(cache=True)
-def add_ripple(sign, op, theta_rotor, w, n_l, n_h, group, group_lam, group_rho, ripple, nodes):
+def add_ripple(sign, op, theta_rotor, w, n_l, n_h, group, flows, group_lam, group_rho, ripple, nodes):
     """Turn mean states into physical ones at the present angle (sign +1), or back (-1)."""
     f = op[FREQ]
     theta = theta_rotor + op[ANGLE_OFFSET]
-    for i in range(N):
+    for i in range(group.size):
         g = group[i]
+        flow = flows[2 * (i // 6) + i % 2]
         share = sign * ripple_share(w, n_h, i, ripple[g])
+        # from the start of the part of the turn that loads the chip
         psi = theta - THIRD * ((i % 6) // 2)
-        if (i % 2 == 1) != (i >= 6):
-            psi -= np.pi  # lower switch and upper diode carry the negative half wave
+        if flow == 1:
+            psi -= np.pi
+        loaded = TURN if flow == 2 else np.pi
         if op[DIRECTION] < 0.0:
-            psi = np.pi - psi
+            psi = loaded - psi
         psi = wrap(psi)
         change = 0.0
-        if psi < np.pi:
-            place = psi / np.pi * RIPPLE_NODES
+        if psi < loaded:
+            place = psi / TURN * RIPPLE_NODES
             j = min(int(place), RIPPLE_NODES - 1)
             u = place - j
             for k in range(n_l):
                 d = share * ((1.0 - u) * nodes[g, j, k] + u * nodes[g, j + 1, k])
-                w[X_L + k * N + i] += d
+                w[X_L + k * LANE + i] += d
                 change += d
         else:
-            since = (psi - np.pi) / (2.0 * np.pi * f)
+            since = (psi - np.pi) / (TURN * f)
             for k in range(n_l):
                 # after the half wave the state itself decays, its mean does not
                 mean = group_rho[g, k] / group_lam[g, k] * ripple[g, 3] * (1.0 + ripple[g, 0])
-                d = share * ((nodes[g, RIPPLE_NODES, k] + mean) * np.exp(-group_lam[g, k] * since) - mean)
-                w[X_L + k * N + i] += d
+                d = share * ((nodes[g, RIPPLE_NODES // 2, k] + mean) * np.exp(-group_lam[g, k] * since) - mean)
+                w[X_L + k * LANE + i] += d
                 change += d
         w[T + i] += change
 
 
 @njit(cache=True)
-def wrap(angle):
-    """Angle within one turn from zero."""
-    return angle - 2.0 * np.pi * np.floor(angle / (2.0 * np.pi))
-
-
-@njit(cache=True)
-def mean_hinges(op, w, i_step, conduction, energy_mean, order, amount, knot_c, group, ripple):
-    """Mean losses with the ripple's share, as hinges of every chip."""
+def mean_hinges(w, means, knot_c, group, ripple):
+    """Mean losses with the ripple's share, as hinges of every chip; ``means`` (positions, k) at the corner temperatures."""
     n_k = knot_c.size
-    corner = np.empty(n_k)
-    hinge = np.empty(max(n_k, 2))
-    for kind in range(2):
-        period_mean_corners(kind, op[I_PEAK], op[MOD], op[PHI], op[S_ON:S_REC + 1], i_step, conduction, energy_mean, order, amount, corner)
-        to_hinges(corner, knot_c, n_k, hinge)
-        for i in range(6 * kind, 6 * kind + 6):
-            gain = 1.0 + ripple[group[i], 0]
-            for k in range(hinge.size):
-                w[HINGE + 16 * k + i] = hinge[k] * gain
+    for i in range(group.size):
+        position = 2 * (i // 6) + i % 2
+        gain = 1.0 + ripple[group[i], 0]
+        w[HINGE + i] = means[position, 0] * gain
+        w[HINGE + LANE + i] = 0.0
+        before = 0.0
+        for k in range(1, n_k):
+            slope = (means[position, k] - means[position, k - 1]) / (knot_c[k] - knot_c[k - 1])
+            w[HINGE + LANE * k + i] = (slope - before) * gain
+            before = slope
 
 
 @njit(cache=True)
-def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, levels, odd,
-          half_nodes, knot_c, settings, now,
+def cross(lanes, row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, levels, odd,
+          fine, knot_c, settings, now,
           t_buffer, t_time, c_buffer, c_time, no_ripple, extreme, envelope,
           last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count):
     """Cross ``duration`` in one regime (ANGLE with f = 0 is standstill).
 
-    ``extreme`` (4, N) gets lowest temperature, its time, highest, its time;
-    ``envelope`` (4, N): running junction and case extremes of the row.
+    ``extreme`` (4, n) gets lowest temperature, its time, highest, its time;
+    ``envelope`` (4, n): running junction and case extremes of the row.
     """
+    n = len(lanes)
+    n_u = np.uint64(n)
     n_k = knot_c.size
     n_h = max(n_k - 1, 1)
     t_cool = now[COOLANT]
@@ -491,8 +472,8 @@ def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, leve
         h_angle = min(1.0 / (op[FREQ] * settings[STEPS]), 0.02)
     elif regime == ANGLE:
         for leg in range(U_3):
-            leg_losses(leg, wrap(theta - THIRD * leg), half_nodes, w)
-    for i in range(N):
+            leg_losses(leg, wrap(theta - THIRD * leg), fine, w)
+    for i in range(n):
         extreme[0, i] = w[T + i]
         extreme[1, i] = start
         extreme[2, i] = w[T + i]
@@ -508,7 +489,7 @@ def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, leve
         h = settings[H0] * 2.0**level
         if h_even == 0.0 and h < left * (1.0 - 1e-12) and h < h_angle and level + 1 < levels.shape[0]:
             if now[H_LOADED] != h:
-                load_factors(w, n_l, n_s, levels[level])
+                load_factors(lanes, w, n_l, n_s, levels[level])
                 now[H_LOADED] = h
             # the first size is taken twice, then sizes double
             if once and 2.0 * h <= settings[H_MAX]:
@@ -527,30 +508,30 @@ def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, leve
                         w[A_S_MANY + s] = 1.0 + e
                         w[W_S_MANY + s] = -e / lam_s[s]
                     # the change that GAIN holds belongs to the step before; stretch it to the new one
-                    for i in range(N):
+                    for i in range(n):
                         w[GAIN + i] *= h_even * many / h_before if h_before > 0.0 else 0.0
                 h = h_even
             else:
                 h = min(left, settings[H_MAX])
             if now[H_LOADED] != h:
                 step_factors(h, lam_l, rho, lam_s, odd)
-                load_factors(w, n_l, n_s, odd)
+                load_factors(lanes, w, n_l, n_s, odd)
                 now[H_LOADED] = h
         if turning:
             middle = theta + omega * (used + 0.5 * h)
             for leg in range(U_3):
-                leg_losses(leg, wrap(middle - THIRD * leg), half_nodes, w)
+                leg_losses(leg, wrap(middle - THIRD * leg), fine, w)
         # the shared modes are slow: in even steps they move once in several of them, with the mean power
         even = h == h_even
         part = 0.0
         if h_before > 0.0:
             part = 1.0 / many if even else h / h_before
-        local_step(w, n_l, n_h, part)
-        for i in range(U_N):
+        local_step(lanes, w, n_l, n_h, part)
+        for i in range(n_u):
             w[U_P_SUM + i] += w[U_P + i]
         since += 1
         if since == many or not even:
-            shared_step(w, n_s, 1.0 / since, t_cool, U_A_S_MANY if even else U_A_S, U_W_S_MANY if even else U_W_S)
+            shared_step(lanes, w, n_s, 1.0 / since, t_cool, U_A_S_MANY if even else U_A_S, U_W_S_MANY if even else U_W_S)
             h_before = h * since
             since = 0
         if even:
@@ -559,21 +540,21 @@ def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, leve
         else:
             used = used + h if left - h > 1e-12 * duration else duration
         count += 1
-        for i in range(U_N):
+        for i in range(n_u):
             w[U_ENERGY + i] += w[U_P + i] * h
             t_buffer[n_t, i] = w[U_T + i]
         t_time[n_t] = start + used
         n_t += 1
         if not turning or count % 8 == 0 or used >= duration:
-            case_points(w, n_l, n_s, t_cool)
-            for i in range(N):
+            case_points(lanes, w, n_l, n_s, t_cool)
+            for i in range(n):
                 c_buffer[n_c, i] = w[CASE + i]
             c_time[n_c] = start + used
             n_c += 1
         if n_t == CHUNK or used >= duration:
             if regime == MEAN:
                 for j in range(n_t):
-                    for i in range(N):
+                    for i in range(n):
                         v = t_buffer[j, i]
                         if v < extreme[0, i]:
                             extreme[0, i] = v
@@ -583,20 +564,20 @@ def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, leve
                             extreme[3, i] = t_time[j]
             else:
                 for j in range(n_t):
-                    for i in range(N):
+                    for i in range(n):
                         v = t_buffer[j, i]
                         extreme[0, i] = v if v < extreme[0, i] else extreme[0, i]
                         extreme[2, i] = v if v > extreme[2, i] else extreme[2, i]
             hot = 0.0
-            for i in range(N):
+            for i in range(n):
                 hot = max(hot, t_buffer[n_t - 1, i]) if t_buffer[n_t - 1, i] == t_buffer[n_t - 1, i] else np.inf
             for j in range(n_c):
-                for i in range(N):
+                for i in range(n):
                     envelope[2, i] = min(envelope[2, i], c_buffer[j, i])
                     envelope[3, i] = max(envelope[3, i], c_buffer[j, i])
             if regime != MEAN:
                 feed(0, n_t, t_buffer, t_time, 0.0, no_ripple, phase, last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
-            feed(N, n_c, c_buffer, c_time, 0.0, no_ripple, phase, last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
+            feed(n, n_c, c_buffer, c_time, 0.0, no_ripple, phase, last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
             n_t, n_c = 0, 0
             if not hot < settings[T_STOP]:
                 now[TIME] = start + used
@@ -604,7 +585,7 @@ def cross(row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, leve
     now[TIME] = start + duration
     now[THETA] = wrap(now[THETA] + omega * duration)
     if regime != MEAN:
-        for i in range(N):
+        for i in range(n):
             envelope[0, i] = min(envelope[0, i], extreme[0, i])
             envelope[1, i] = max(envelope[1, i], extreme[2, i])
     return OK
@@ -615,7 +596,7 @@ def close_window(now, op, window, pair, pair_time, pair_ripple,
                  last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count, rip, rip_row, rip_count):
     """Hand over the lowest and highest point since the window opened, and count the ripple beyond one cycle.
 
-    ``window`` (5, N): lowest, its time, highest, its time, ripple range times cycles.
+    ``window`` (5, n): lowest, its time, highest, its time, ripple range times cycles.
     """
     cycles = now[WINDOW_CYCLES]
     if cycles <= 0.0:
@@ -623,7 +604,7 @@ def close_window(now, op, window, pair, pair_time, pair_ripple,
     half = 0.5 / op[FREQ]
     phase = now[WINDOW_PHASE]
     r = rip_count[0]
-    for i in range(N):
+    for i in range(pair.shape[1]):
         rising = window[1, i] <= window[3, i]
         pair[0, i] = window[0, i] if rising else window[2, i]
         pair[1, i] = window[2, i] if rising else window[0, i]
@@ -644,27 +625,32 @@ def close_window(now, op, window, pair, pair_time, pair_ripple,
 
 
 @njit(cache=True)
-def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_local, levels, odd,
-               group, group_kind, group_lam, group_rho,
-               knot_c, i_step, conduction, energy_mean, voltage, energy, order, amount, modulation,
+def march_rows(lanes, begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_local, levels, odd,
+               group, group_position, flows, group_lam, group_rho,
+               drive, conduction, switching, knot_c, i_step, voltage, energy, v_ref, exponent, gate, derate_c, derate_hz,
                settings, now, old, ripple_op, ripple, nodes, window, last, heading,
                p_value, p_time, p_half, p_ripple, p_phase, p_count, rip, rip_row, rip_count, row_temps, row_loss):
     """March rows from ``begin`` until the end of the block or until the point buffers are nearly full.
 
-    ``row_temps`` (rows, 4, N): junction minimum, maximum, case minimum, maximum;
-    ``row_loss`` (rows, N) [J]. Returns (row to go on with, OK or RUNAWAY).
+    ``row_temps`` (rows, 4, n): junction minimum, maximum, case minimum, maximum;
+    ``row_loss`` (rows, n) [J]. Returns (row to go on with, OK or RUNAWAY).
     """
+    n = len(lanes)
     cap = p_value.shape[1]
     n_h = max(knot_c.size - 1, 1)
-    t_buffer, t_time = np.empty((CHUNK, N)), np.empty(CHUNK)
-    c_buffer, c_time = np.empty((CHUNK, N)), np.empty(CHUNK)
-    no_ripple = np.zeros(N)
-    extreme = np.empty((4, N))
-    pair, pair_time, pair_ripple = np.empty((2, N)), np.empty(2), np.empty(N)
+    t_buffer, t_time = np.empty((CHUNK, n)), np.empty(CHUNK)
+    c_buffer, c_time = np.empty((CHUNK, n)), np.empty(CHUNK)
+    no_ripple = np.zeros(n)
+    extreme = np.empty((4, n))
+    pair, pair_time, pair_ripple = np.empty((2, n)), np.empty(2), np.empty(n)
     fresh = np.zeros(ripple.shape)
     fresh_nodes = np.zeros(nodes.shape)
-    half_nodes = np.zeros((NODES + 1, 2, max(knot_c.size, 2)))
-    fine = False  # whether every node stands for the latest operating point
+    n_positions = flows.size
+    fine = np.zeros((NODES + 1, n_positions, max(knot_c.size, 2)))
+    coarse = np.zeros((RIPPLE_NODES + 1, n_positions, max(knot_c.size, 2)))
+    means, corner, border = np.empty((n_positions, knot_c.size)), np.empty((n_positions, knot_c.size)), np.empty(MOST_BORDERS)
+    point = np.zeros(SCALE + v_ref.size)
+    fine_made = coarse_made = means_made = False  # whether the nodes stand for the latest operating point
     for row in range(begin, table.shape[0]):
         op = table[row]
         f = op[FREQ]
@@ -675,7 +661,7 @@ def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_l
             most = 64 + int(left / settings[H_MAX]) + int(settings[STEPS] * (settings[SETTLE_PERIODS] + 2.0))
             if op[I_PEAK] > 0.0 and 0.0 < f < settings[F_SLOW]:
                 most += int(left * max(f * settings[STEPS], 50.0))
-            for signal in range(2 * N):
+            for signal in range(2 * n):
                 fullest = max(fullest, p_count[signal])
             if fullest + most > cap or rip_count[0] + 3 > rip.shape[0]:
                 return row, OK
@@ -685,14 +671,26 @@ def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_l
             for s in range(n_s):
                 w[X_S + s] -= g_cool[s] * change
             for k in range(n_l):
-                for i in range(N):
-                    w[X_L + k * N + i] -= g_local[k, i] * change
+                for i in range(n):
+                    w[X_L + k * LANE + i] -= g_local[k, i] * change
             now[COOLANT] = op[T_COOLANT]
-            shared_part(w, n_s, now[COOLANT])
+            shared_part(lanes, w, n_s, now[COOLANT])
+        if derate_c.size > 0:
+            hot = w[T]
+            for i in range(group.size):
+                high = w[T + i]
+                if now[REGIME] == MEAN:
+                    high += ripple_share(w, n_h, i, ripple[group[i]]) * ripple[group[i], 2]
+                hot = max(hot, high)
+            op[FSW] = min(op[FSW], np.interp(hot, derate_c, derate_hz))
         changed = False
         for k in range(FREQ, N_ROW):
             if k != T_COOLANT and op[k] != old[k]:
                 changed = True
+        if changed or row == begin:
+            set_point(point, drive, op[I_PEAK], op[MOD], op[PHI], op[DIRECTION], op[CLIP_FIRST], op[CLIP_LAST], op[FSW], op[FREQ], op[V_DC],
+                      v_ref, exponent, gate)
+            fine_made = coarse_made = means_made = False
         before = int(now[REGIME])
         want = ANGLE
         if op[I_PEAK] <= 0.0:
@@ -709,18 +707,19 @@ def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_l
         if before == MEAN and want != MEAN:
             close_window(now, old, window, pair, pair_time, pair_ripple,
                          last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count, rip, rip_row, rip_count)
-            add_ripple(1.0, old, now[THETA], w, n_l, n_h, group, group_lam, group_rho, ripple, nodes)
+            add_ripple(1.0, old, now[THETA], w, n_l, n_h, group, flows, group_lam, group_rho, ripple, nodes)
             before = ANGLE
         renew = False
         if want == MEAN:
             renew = before != MEAN or (changed and not small)
             if not renew:
-                for i in range(N):
+                for i in range(group.size):
                     renew = renew or abs(w[T + i] - ripple[group[i], 4]) > 8.0
         if renew:
-            fine = False
-            half_wave(op, NODES // RIPPLE_NODES, i_step, voltage, energy, modulation, knot_c, half_nodes)
-            ripples(op, w, group, group_kind, group_lam, group_rho, half_nodes, knot_c, fresh_nodes, fresh)
+            if not coarse_made:
+                angle_nodes(RIPPLE_NODES, point, drive, conduction, switching, knot_c, i_step, voltage, energy, corner, border, coarse)
+                coarse_made = True
+            ripples(op, w, group, group_position, flows, group_lam, group_rho, coarse, knot_c, fresh_nodes, fresh)
             if changed and before != ANGLE:
                 # a jump is first marched by angle, from the temperatures that really stand there
                 jump, largest = 0.0, 0.0
@@ -732,7 +731,7 @@ def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_l
                     if before == MEAN:
                         close_window(now, old, window, pair, pair_time, pair_ripple,
                                      last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count, rip, rip_row, rip_count)
-                        add_ripple(1.0, old, now[THETA], w, n_l, n_h, group, group_lam, group_rho, ripple, nodes)
+                        add_ripple(1.0, old, now[THETA], w, n_l, n_h, group, flows, group_lam, group_rho, ripple, nodes)
                     before = ANGLE
                     now[SETTLE] = settings[SETTLE_PERIODS] / f
             for g in range(fresh.shape[0]):
@@ -745,7 +744,7 @@ def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_l
                 ripple_op[k] = op[k]
         for k in range(N_ROW):
             old[k] = op[k]
-        for i in range(N):
+        for i in range(n):
             w[ENERGY + i] = 0.0
         status = OK
         by_angle = left if want == ANGLE else min(left, now[SETTLE])
@@ -754,31 +753,37 @@ def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_l
             if part == 0:
                 if want == IDLE:
                     regime, length = IDLE, left
-                    for j in range(16 * K_MAX):
+                    for j in range(LANE * K_MAX):
                         w[HINGE + j] = 0.0
                 else:
                     regime, length = ANGLE, by_angle
-                    if length > 0.0 and (changed or not fine):
-                        half_wave(op, 1, i_step, voltage, energy, modulation, knot_c, half_nodes)
-                        fine = True
+                    if length > 0.0 and not fine_made:
+                        angle_nodes(NODES, point, drive, conduction, switching, knot_c, i_step, voltage, energy, corner, border, fine)
+                        fine_made = True
             else:
                 regime, length = MEAN, left
                 if want != MEAN:
                     length = 0.0
                 if length > 0.0:
                     if by_angle > 0.0:
-                        ripples(op, w, group, group_kind, group_lam, group_rho, half_nodes, knot_c, nodes, ripple)
+                        if not coarse_made:
+                            angle_nodes(RIPPLE_NODES, point, drive, conduction, switching, knot_c, i_step, voltage, energy, corner, border, coarse)
+                            coarse_made = True
+                        ripples(op, w, group, group_position, flows, group_lam, group_rho, coarse, knot_c, nodes, ripple)
                     if changed or renew or before == ANGLE:
-                        mean_hinges(op, w, i_step, conduction, energy_mean, order, amount, knot_c, group, ripple)
+                        if not means_made:
+                            period_means(point, drive, conduction, switching, i_step, voltage, energy, corner, border, means)
+                            means_made = True
+                        mean_hinges(w, means, knot_c, group, ripple)
                     if before == ANGLE:
-                        add_ripple(-1.0, op, now[THETA], w, n_l, n_h, group, group_lam, group_rho, ripple, nodes)
+                        add_ripple(-1.0, op, now[THETA], w, n_l, n_h, group, flows, group_lam, group_rho, ripple, nodes)
             if length <= 0.0 or status != OK:
                 continue
             opened = now[WINDOW_CYCLES] == 0.0
             if regime == MEAN and opened:
                 now[WINDOW_START] = now[TIME]
             now[REGIME] = regime
-            status = cross(row, length, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, levels, odd, half_nodes,
+            status = cross(lanes, row, length, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, levels, odd, fine,
                            knot_c, settings, now, t_buffer, t_time, c_buffer, c_time, no_ripple, extreme, row_temps[row],
                            last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
             if regime == ANGLE:
@@ -790,7 +795,7 @@ def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_l
                     now[SETTLE] = now[SETTLE] - length if now[SETTLE] - length >= 1e-9 / f else 0.0
             elif regime == MEAN:
                 cycles = f * length
-                for i in range(N):
+                for i in range(group.size):
                     g = group[i]
                     share = ripple_share(w, n_h, i, ripple[g])
                     lo = extreme[0, i] + share * ripple[g, 1]
@@ -810,7 +815,7 @@ def march_rows(begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_l
                 if now[WINDOW_CYCLES] >= 1.0:
                     close_window(now, op, window, pair, pair_time, pair_ripple,
                                  last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count, rip, rip_row, rip_count)
-        for i in range(N):
+        for i in range(n):
             row_loss[row, i] = w[ENERGY + i]
         if status != OK:
             return row, status

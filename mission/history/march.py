@@ -13,13 +13,14 @@ from dataclasses import dataclass
 import numpy as np
 
 from ..errors import InputError, NoStableTemperature
-from ..losses import LossTables
+from ..losses import LossTables, reference_for
 from ..machine import OperatingPoints
 from ..thermal import ReducedNetwork
 
-CHIP_NAMES = tuple(f"{kind}-{leg}-{side}" for kind in "SD" for leg in "abc" for side in ("up", "lo"))
 _POINT_CAPACITY = 32768
 _LEVELS = 19
+#: A switching frequency that follows the temperature is set anew this often [s].
+DERATE_EVERY_S = 0.1
 
 
 @dataclass(frozen=True)
@@ -96,19 +97,25 @@ class ElectrothermalMarch:
     ----------
     tables : LossTables
     network : ReducedNetwork
-        For twelve chips: six switches, then six diodes, a-upper, a-lower, b-upper ...
+        For the six chips of every pair of the leg's positions: a-upper, a-lower, b-upper ...
     settings : MarchSettings
+    derating : tuple of ndarray, optional
+        Junction temperatures of the hottest chip, rising [degC], and the switching frequencies that they allow
+        at most [Hz]; read at the start of every row (long rows are cut into pieces).
     on_points, on_ripple : callable, optional
         Receive :class:`PointBlock` and :class:`RippleBlock` as they arise.
     """
 
-    def __init__(self, tables: LossTables, network: ReducedNetwork, settings: MarchSettings | None = None, *,
+    def __init__(self, tables: LossTables, network: ReducedNetwork, settings: MarchSettings | None = None, *, derating=None,
                  on_points: Callable[[PointBlock], None] | None = None,
                  on_ripple: Callable[[RippleBlock], None] | None = None):
         from . import kernels as k
 
-        if network.n_chips != k.N:
-            raise InputError("thermal network", f"{network.n_chips} chips", "twelve: six switches and six diodes")
+        n_chips = 3 * len(tables.plan.positions)
+        if network.n_chips != n_chips:
+            raise InputError("thermal network", f"{network.n_chips} chips", f"{n_chips}: six for every pair of positions of the leg")
+        self.n_chips = n_chips
+        self.chip_names = _chip_names(tables.plan.positions)
         self._k = k
         self.tables, self.network = tables, network
         self.settings = settings or MarchSettings()
@@ -120,21 +127,27 @@ class ElectrothermalMarch:
         s = self.settings
         self._settings = np.array([s.f_slow_hz, s.steps_per_period, s.first_step_s, s.longest_step_s, s.settle_periods, s.settle_above_k,
                                    s.t_stop_c], float)
-        lam, rho, lam_s = network.lam_local_per_s, network.rho_local, network.lam_shared_per_s
+        lanes = self._lanes = next(n for n in k.LANES if n >= n_chips)
+        lam, rho = _padded(network.lam_local_per_s, lanes, 1.0), _padded(network.rho_local, lanes, 0.0)
+        lam_s = network.lam_shared_per_s
         n_l, n_s = lam.shape[0], lam_s.size
-        levels = np.empty((_LEVELS, 2 * n_l * k.N + k.N + 2 * n_s))
+        levels = np.empty((_LEVELS, 2 * n_l * lanes + lanes + 2 * n_s))
         for v in range(_LEVELS):
             k.step_factors(s.first_step_s * 2.0**v, lam, rho, lam_s, levels[v])
-        group, group_kind, group_lam, group_rho = _ripple_groups(lam, rho, np.array([0] * 6 + [1] * 6))
-        self._net = (n_l, n_s, np.ascontiguousarray(lam), np.ascontiguousarray(rho), np.ascontiguousarray(lam_s),
-                     np.ascontiguousarray(network.g_coolant), np.ascontiguousarray(network.g_coolant_local), levels, np.empty(levels.shape[1]))
-        self._groups = (group, group_kind, group_lam, group_rho)
-        self._tables = (tables.knot_c, float(tables.i_step_a), tables.conduction_w, tables.energy_mean_j, tables.voltage_v,
-                        tables.energy_j, tables.order, tables.amount, tables.modulation.code)
+        position = 2 * (np.arange(n_chips) // 6) + np.arange(n_chips) % 2
+        like = position if not tables.modulation.half_wave_symmetric else position - position % 2
+        group, members, group_lam, group_rho = _ripple_groups(network.lam_local_per_s, network.rho_local, like)
+        self._net = (n_l, n_s, lam, rho, np.ascontiguousarray(lam_s), np.ascontiguousarray(network.g_coolant),
+                     _padded(network.g_coolant_local, lanes, 0.0), levels, np.empty(levels.shape[1]))
+        self._groups = (group, position[members], tables.plan.flows, group_lam, group_rho)
+        derate = (np.empty(0), np.empty(0)) if derating is None else tuple(np.ascontiguousarray(v, float) for v in derating)
+        self._derates = derating is not None
+        self._tables = (*tables.kernel_arrays(), *derate)
+        self._lane_tuple = (0,) * lanes
         cap = _POINT_CAPACITY
-        self._count, self._rip_count = np.zeros(2 * k.N, np.int64), np.zeros(1, np.int64)
-        self._points = (*(np.empty((2 * k.N, cap)) for _ in range(4)), np.empty((2 * k.N, cap), np.int16), self._count)
-        self._ripple_out = (np.empty((cap // 2, k.N, 3)), np.empty((cap // 2, 4)), self._rip_count)
+        self._count, self._rip_count = np.zeros(2 * lanes, np.int64), np.zeros(1, np.int64)
+        self._points = (*(np.empty((2 * lanes, cap)) for _ in range(4)), np.empty((2 * lanes, cap), np.int16), self._count)
+        self._ripple_out = (np.empty((cap // 2, lanes, 3)), np.empty((cap // 2, 4)), self._rip_count)
 
     def start(self, coolant_c: float, *, theta_rad: float = 0.0, states=None) -> None:
         """Begin a mission with everything at the coolant's temperature, or with the modes ``states`` of an earlier end."""
@@ -142,19 +155,27 @@ class ElectrothermalMarch:
         n_l, n_s = self._net[:2]
         w = np.zeros(k.W_SIZE)
         self._coolant_start = float(coolant_c)
+        n = self.n_chips
+
+        def local(place):
+            return w[place:place + n_l * k.LANE].reshape(n_l, k.LANE)[:, :n]
+
+        def shared(place):
+            return w[place:place + n_s * k.LANE].reshape(n_s, k.LANE)[:, :n]
+
         if states is not None:
             x_l, x_s, coolant_then = states
-            w[k.X_L:k.X_L + n_l * k.N] = x_l - net.g_coolant_local.ravel() * (coolant_c - coolant_then)
             # the coolant may start elsewhere than it ended: temperatures stay
+            local(k.X_L)[:] = x_l.reshape(n_l, n) - net.g_coolant_local * (coolant_c - coolant_then)
             w[k.X_S:k.X_S + n_s] = x_s - net.g_coolant * (coolant_c - coolant_then)
         for s in range(n_s):
-            w[k.B_S + s:k.B_S + k.N * k.S_MAX:k.S_MAX] = net.b_shared[s]
-        w[k.C_S:k.C_S + n_s * k.N] = net.c_shared.T.ravel()
-        w[k.CASE_S:k.CASE_S + n_s * k.N] = net.c_case_shared.T.ravel()
+            w[k.B_S + s:k.B_S + n * k.S_MAX:k.S_MAX] = net.b_shared[s]
+        shared(k.C_S)[:] = net.c_shared.T
+        shared(k.CASE_S)[:] = net.c_case_shared.T
         own = net.rho_local != 0.0
-        w[k.CASE_L:k.CASE_L + n_l * k.N] = np.where(own, net.rho_case_local / np.where(own, net.rho_local, 1.0), 0.0).ravel()
+        local(k.CASE_L)[:] = np.where(own, net.rho_case_local / np.where(own, net.rho_local, 1.0), 0.0)
         w[k.KNOT:k.KNOT + self.tables.knot_c.size] = self.tables.knot_c
-        k.junctions(w, n_l, n_s, coolant_c)
+        k.junctions(self._lane_tuple, w, n_l, n_s, coolant_c)
         self._w = w
         self._now = np.zeros(k.N_NOW)
         self._now[k.COOLANT], self._now[k.THETA] = coolant_c, theta_rad
@@ -163,16 +184,16 @@ class ElectrothermalMarch:
         self._ripple_op = np.zeros(k.N_ROW)
         groups = self._groups[1].size
         self._ripple, self._nodes = np.zeros((groups, 5)), np.zeros((groups, k.RIPPLE_NODES + 1, n_l))
-        self._window = np.zeros((5, k.N))
-        self._last, self._heading = np.zeros((2 * k.N, 5)), np.full(2 * k.N, 2, np.int64)
+        self._window = np.zeros((5, self._lanes))
+        self._last, self._heading = np.zeros((2 * self._lanes, 5)), np.full(2 * self._lanes, 2, np.int64)
         self._count[:] = 0
         self._rip_count[0] = 0
         self._before_first = True
 
     @property
     def junction_c(self) -> np.ndarray:
-        """Junction temperatures now, shape (12,) [degC] (in fast rotation: their mean over a period)."""
-        return self._w[self._k.T:self._k.T + self._k.N].copy()
+        """Junction temperatures now, shape (chips,) [degC] (in fast rotation: their mean over a period)."""
+        return self._w[self._k.T:self._k.T + self.n_chips].copy()
 
     def periodic_start(self, states_before, duration_s: float):
         """States that a mission would start with if it were repeated for ever, judged from one pass.
@@ -181,7 +202,7 @@ class ElectrothermalMarch:
         from the pass. Exact for losses that do not depend on temperature, otherwise a
         step of a quickly closing iteration.
         """
-        lam_l, lam_s = self._net[2].ravel(), self._net[4]
+        lam_l, lam_s = self._net[2][:, :self.n_chips].ravel(), self._net[4]
         x_l, x_s, coolant = self.states
         keep_l, keep_s = np.exp(-lam_l * duration_s), np.exp(-lam_s * duration_s)
         # the coolant may end elsewhere than it began; the next start takes its step again
@@ -196,9 +217,10 @@ class ElectrothermalMarch:
         """Modes and coolant now; give them to :meth:`start` to go on from here."""
         k = self._k
         n_l, n_s = self._net[:2]
-        return self._w[k.X_L:k.X_L + n_l * k.N].copy(), self._w[k.X_S:k.X_S + n_s].copy(), float(self._now[k.COOLANT])
+        local = self._w[k.X_L:k.X_L + n_l * k.LANE].reshape(n_l, k.LANE)[:, :self.n_chips].ravel()
+        return local, self._w[k.X_S:k.X_S + n_s].copy(), float(self._now[k.COOLANT])
 
-    def add_block(self, points: OperatingPoints, *, dt_s, phase_id, coolant_c, energy_scale) -> RowEnvelope:
+    def add_block(self, points: OperatingPoints, *, dt_s, phase_id, coolant_c, switching_frequency_hz, dc_voltage_v) -> RowEnvelope:
         """March one block.
 
         Parameters
@@ -207,8 +229,7 @@ class ElectrothermalMarch:
         dt_s : ndarray, shape (n,)
         phase_id : ndarray of int16, shape (n,)
         coolant_c : ndarray, shape (n,)
-        energy_scale : ndarray, shape (3, n)
-            From :meth:`LossTables.energy_scale`.
+        switching_frequency_hz, dc_voltage_v : float or ndarray, shape (n,)
 
         Raises
         ------
@@ -224,33 +245,36 @@ class ElectrothermalMarch:
         rows = np.repeat(np.arange(dt_s.size), pieces)
         table = np.empty((rows.size, k.N_ROW))
         table[:, k.DT] = (dt_s / pieces)[rows]
+        reference, clip_first, clip_last = reference_for(self.tables.modulation, points.mod_index)
         for column, values in ((k.FREQ, points.frequency_hz), (k.DIRECTION, points.direction), (k.I_PEAK, points.i_peak_a),
-                               (k.MOD, points.mod_index), (k.PHI, points.phi_rad), (k.ANGLE_OFFSET, points.current_angle_rad),
-                               (k.T_COOLANT, coolant_c), (k.S_ON, energy_scale[0]), (k.S_OFF, energy_scale[1]), (k.S_REC, energy_scale[2])):
+                               (k.MOD, reference), (k.PHI, points.phi_rad), (k.ANGLE_OFFSET, points.current_angle_rad),
+                               (k.T_COOLANT, coolant_c), (k.CLIP_FIRST, clip_first), (k.CLIP_LAST, clip_last),
+                               (k.FSW, switching_frequency_hz), (k.V_DC, dc_voltage_v)):
             table[:, column] = np.broadcast_to(np.asarray(values, float), dt_s.shape)[rows]
         phases = np.asarray(phase_id, np.int16)[rows]
-        temps = np.empty((rows.size, 4, k.N))
+        temps = np.empty((rows.size, 4, self._lanes))
         temps[:, (0, 2)], temps[:, (1, 3)] = np.inf, -np.inf
-        loss = np.zeros((rows.size, k.N))
+        loss = np.zeros((rows.size, self._lanes))
         if self._before_first:
             self._sample_start(float(phases[0]))
         start = self._now[k.TIME]
         at = 0
         while at < rows.size:
             at, status = k.march_rows(
-                at, table, phases, self._w, *self._net, *self._groups, *self._tables, self._settings, self._now, self._op,
+                self._lane_tuple, at, table, phases, self._w, *self._net, *self._groups, *self._tables, self._settings, self._now, self._op,
                 self._ripple_op, self._ripple, self._nodes, self._window, self._last, self._heading, *self._points, *self._ripple_out, temps, loss)
             if status == k.RUNAWAY:
                 now = self.junction_c
                 chip = int(np.argmax(np.where(np.isfinite(now), now, np.inf)))
                 raise NoStableTemperature(
-                    f"no stable temperature: {CHIP_NAMES[chip]} passes {self.settings.t_stop_c:g} degC at {self._now[k.TIME]:.6g} s "
+                    f"no stable temperature: {self.chip_names[chip]} passes {self.settings.t_stop_c:g} degC at {self._now[k.TIME]:.6g} s "
                     f"into the mission (coolant {table[at, k.T_COOLANT]:g} degC, peak current {table[at, k.I_PEAK]:.4g} A). The losses grow "
                     "faster with temperature than the cooling carries away: lower current, frequency or coolant, or cool better")
             self._hand_over()
         ends = start + np.cumsum(table[:, k.DT])
         first = np.concatenate([[0], np.cumsum(pieces)[:-1]])
         t_end = ends[np.cumsum(pieces) - 1]
+        temps, loss = temps[:, :, :self.n_chips], loss[:, :self.n_chips]
         return RowEnvelope(
             start_s=np.concatenate([[start], t_end[:-1]]), end_s=t_end, phase_id=np.asarray(phase_id),
             t_min_c=np.minimum.reduceat(temps[:, 0], first), t_max_c=np.maximum.reduceat(temps[:, 1], first),
@@ -261,12 +285,12 @@ class ElectrothermalMarch:
     def finish(self) -> None:
         """Close the mission: hand over what the turning-point filters still hold; states are physical afterwards."""
         k = self._k
-        k.close_window(self._now, self._op, self._window, np.empty((2, k.N)), np.empty(2), np.empty(k.N),
+        k.close_window(self._now, self._op, self._window, np.empty((2, self._lanes)), np.empty(2), np.empty(self._lanes),
                        self._last, self._heading, *self._points, *self._ripple_out)
         if self._now[k.REGIME] == k.MEAN:
             n_l = self._net[0]
-            group, _, group_lam, group_rho = self._groups
-            k.add_ripple(1.0, self._op, self._now[k.THETA], self._w, n_l, max(self.tables.knot_c.size - 1, 1), group, group_lam,
+            group, _, flows, group_lam, group_rho = self._groups
+            k.add_ripple(1.0, self._op, self._now[k.THETA], self._w, n_l, max(self.tables.knot_c.size - 1, 1), group, flows, group_lam,
                          group_rho, self._ripple, self._nodes)
             self._now[k.REGIME] = k.ANGLE
         k.flush_points(self._last, self._heading, *self._points)
@@ -275,9 +299,10 @@ class ElectrothermalMarch:
     def _sample_start(self, phase):
         k, w = self._k, self._w
         n_l, n_s = self._net[:2]
-        k.case_points(w, n_l, n_s, self._now[k.COOLANT])
-        for first, place in ((0, k.T), (k.N, k.CASE)):
-            k.feed(first, 1, w[place:place + k.N].reshape(1, k.N).copy(), np.zeros(1), 0.0, np.zeros(k.N), phase,
+        k.case_points(self._lane_tuple, w, n_l, n_s, self._now[k.COOLANT])
+        lanes = self._lanes
+        for first, place in ((0, k.T), (lanes, k.CASE)):
+            k.feed(first, 1, w[place:place + lanes].reshape(1, lanes).copy(), np.zeros(1), 0.0, np.zeros(lanes), phase,
                    self._last, self._heading, *self._points)
         self._before_first = False
 
@@ -288,7 +313,11 @@ class ElectrothermalMarch:
         pieces = np.maximum(1, np.ceil(steps / (0.5 * _POINT_CAPACITY)))
         # in fast rotation a long row is counted second by second, so that its ripple is charged at the temperature it has
         fast = (points.i_peak_a > 0.0) & (points.frequency_hz >= self.settings.f_slow_hz)
-        return np.where(fast, np.clip(np.ceil(dt_s - 1e-9), pieces, 20000), pieces).astype(int)
+        pieces = np.where(fast, np.clip(np.ceil(dt_s - 1e-9), pieces, 20000), pieces)
+        if self._derates:
+            # the switching frequency follows the temperature from piece to piece
+            pieces = np.where(points.i_peak_a > 0.0, np.maximum(pieces, np.clip(np.ceil(dt_s / DERATE_EVERY_S - 1e-9), 1, 200000)), pieces)
+        return pieces.astype(int)
 
     def _check_current(self, points):
         top = self.tables.i_max_a
@@ -301,21 +330,35 @@ class ElectrothermalMarch:
     def _hand_over(self):
         value, time, half, ripple, phase, count = self._points
         if self._on_points is not None:
-            for signal in np.flatnonzero(count):
-                m = count[signal]
-                self._on_points(PointBlock(int(signal), value[signal, :m], time[signal, :m], phase[signal, :m],
-                                           half[signal, :m], ripple[signal, :m]))
+            for lane in np.flatnonzero(count):
+                case, chip = divmod(int(lane), self._lanes)
+                if chip >= self.n_chips:
+                    continue
+                m, signal = count[lane], case * self.n_chips + chip
+                self._on_points(PointBlock(signal, value[lane, :m], time[lane, :m], phase[lane, :m],
+                                           half[lane, :m], ripple[lane, :m]))
         rip, rip_row, _ = self._ripple_out
         m = int(self._rip_count[0])
         if m and self._on_ripple is not None:
-            self._on_ripple(RippleBlock(rip[:m, :, 0], rip[:m, :, 1], rip[:m, :, 2], rip_row[:m, 0],
+            self._on_ripple(RippleBlock(*(rip[:m, :self.n_chips, column] for column in range(3)), rip_row[:m, 0],
                                         rip_row[:m, 1], rip_row[:m, 2], rip_row[:m, 3].astype(np.int16)))
         count[:] = 0
         self._rip_count[0] = 0
 
 
+def _chip_names(positions):
+    return tuple(f"{pair.removesuffix('-up')}-{leg}-{side}" for pair in positions[::2] for leg in "abc" for side in ("up", "lo"))
+
+
+def _padded(values, lanes, filler):
+    """Columns for the lanes that no chip uses."""
+    out = np.full((values.shape[0], lanes), filler)
+    out[:, :values.shape[1]] = values
+    return out
+
+
 def _ripple_groups(lam, rho, kind):
-    """Chips of one kind whose local response agrees within half a percent share one ripple calculation."""
+    """Chips of one ``kind`` (n,) whose local response agrees within half a percent share one ripple calculation."""
     time = np.geomspace(1e-4, 10.0, 60)
     response = np.stack([(rho[:, i] / lam[:, i] * -np.expm1(-np.outer(time, lam[:, i]))).sum(axis=1) for i in range(lam.shape[1])])
     group = np.full(kind.size, -1)
@@ -328,4 +371,4 @@ def _ripple_groups(lam, rho, kind):
         else:
             group[i] = len(members)
             members.append(i)
-    return group, kind[members].copy(), np.ascontiguousarray(lam[:, members].T), np.ascontiguousarray(rho[:, members].T)
+    return group, np.array(members), np.ascontiguousarray(lam[:, members].T), np.ascontiguousarray(rho[:, members].T)

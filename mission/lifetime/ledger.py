@@ -12,7 +12,10 @@ from ..device import FailureMode
 from ..errors import InputError, RangeError
 from .models import LifetimeModel, load_model, load_set
 
-N_CHIPS = 12
+#: Diodes among the chips of a two-level bridge with diodes of their own.
+TWO_LEVEL_DIODES = np.repeat([False, True], 6)
+#: Swings below this are rounding, not cycles [K].
+NOISE_K = 1e-6
 _NAN = float("nan")
 _CYCLE = ("range_k", "mean_c", "min_c", "max_c", "heating_s")
 #: Classes in which the ledger looks for the group of cycles that costs most [K], [degC].
@@ -30,14 +33,15 @@ class Mode:
     model: LifetimeModel
     threshold_k: float | None = None
 
-    def chip_numbers(self) -> np.ndarray:
-        """Chips that it concerns."""
-        return {"all": np.arange(12), "switches": np.arange(6), "diodes": np.arange(6, 12)}[self.chips]
+    def chip_numbers(self, diodes=TWO_LEVEL_DIODES) -> np.ndarray:
+        """Chips that it concerns; ``diodes`` (chips,): which of them are diodes only."""
+        return np.flatnonzero({"all": np.ones_like(diodes), "switches": ~diodes, "diodes": diodes}[self.chips])
 
-    def looks_at(self, table: CycleTable) -> np.ndarray:
+    def looks_at(self, table: CycleTable, diodes=TWO_LEVEL_DIODES) -> np.ndarray:
         """Which entries of a table concern this mode, shape (n,) of bool; the threshold is not applied."""
-        place = (table.signal < N_CHIPS) if self.acts_on == "junction" else (table.signal >= N_CHIPS)
-        return place & np.isin(table.signal % N_CHIPS, self.chip_numbers())
+        n = diodes.size
+        place = (table.signal < n) if self.acts_on == "junction" else (table.signal >= n)
+        return place & np.isin(table.signal % n, self.chip_numbers(diodes))
 
 
 def resolve_modes(own, module, *, folder=None, where: str = "study") -> tuple[Mode, ...]:
@@ -59,6 +63,8 @@ def resolve_modes(own, module, *, folder=None, where: str = "study") -> tuple[Mo
         here = f"{place}[{number}]"
         if spec.name in [m.name for m in out]:
             raise InputError(f"{here}, name", f"a second failure mode named '{spec.name}'", "a name of its own for every failure mode", "rename one")
+        if spec.chips == "diodes" and not module.diode_chips().any():
+            raise InputError(f"{here}, chips", "'diodes'", f"'all' or 'switches' with {module.name}, whose chips are switch and diode in one", "correct the entry")
         model = load_model(spec.model, _completed(spec, module, folder), folder=folder, where=here)
         out.append(Mode(spec.name, spec.acts_on, spec.chips, model, spec.threshold_k))
     return tuple(out)
@@ -134,8 +140,9 @@ class DamageLedger:
     Parameters
     ----------
     modes : sequence of Mode
-    chips : sequence of str, length 12
-        Names, in the order of the signals: 0 to 11 are junctions, 12 to 23 the case points under them.
+    chips : sequence of str, length n
+        Names, in the order of the signals: first n are junctions, then the n case points under them.
+        Names that begin with D are diodes.
     phases : sequence of str
         What ``phase_id`` counts.
     missions_per_year : float
@@ -149,21 +156,23 @@ class DamageLedger:
     def __init__(self, modes, chips, phases, *, missions_per_year: float):
         self.modes, self.chips, self.phases = tuple(modes), tuple(chips), tuple(phases)
         self.missions_per_year = float(require_range("missions_per_year", missions_per_year, low=0.0, low_open=True))
-        if len(self.chips) != N_CHIPS:
-            raise RangeError("chips", f"{len(self.chips)} names", f"{N_CHIPS} names")
+        if not self.chips:
+            raise RangeError("chips", "no names", "a name for every chip")
+        self.diodes = np.array([c.startswith("D") for c in self.chips])
+        n = len(self.chips)
         if not self.phases:
             raise RangeError("phases", "none", "at least one phase", "name the whole mission")
         m, p = len(self.modes), len(self.phases)
-        self._damage = np.zeros((m, N_CHIPS, p, len(KIND_WORDS)))
-        self._cycles = np.zeros((m, N_CHIPS))
-        self._outside = np.zeros((m, N_CHIPS))
-        self._outside_by = [{name: np.zeros(N_CHIPS) for name in mode.model.tested_range} for mode in self.modes]
-        self._left_out, self._left_out_cycles = np.zeros((m, N_CHIPS)), np.zeros((m, N_CHIPS))
+        self._damage = np.zeros((m, n, p, len(KIND_WORDS)))
+        self._cycles = np.zeros((m, n))
+        self._outside = np.zeros((m, n))
+        self._outside_by = [{name: np.zeros(n) for name in mode.model.tested_range} for mode in self.modes]
+        self._left_out, self._left_out_cycles = np.zeros((m, n)), np.zeros((m, n))
         # damage and number of cycles by class; (chip, range, mean)
-        self._by_class = np.zeros((2, m, N_CHIPS, CLASS_RANGE_K.size - 1, CLASS_MEAN_C.size - 1))
-        self._worst = np.zeros((m, N_CHIPS, 7))  # damage of one, range, min, max, heating, start, phase
+        self._by_class = np.zeros((2, m, n, CLASS_RANGE_K.size - 1, CLASS_MEAN_C.size - 1))
+        self._worst = np.zeros((m, n, 7))  # damage of one, range, min, max, heating, start, phase
         self._other = [{words: model for words, model in mode.model.alternatives().items()} for mode in self.modes]
-        self._other_damage = [np.zeros((len(o), N_CHIPS)) for o in self._other]
+        self._other_damage = [np.zeros((len(o), n)) for o in self._other]
 
     def add(self, table: CycleTable) -> np.ndarray:
         """Charge a block of cycles.
@@ -177,40 +186,42 @@ class DamageLedger:
         if not len(table):
             return out
         self._check(table)
-        chip_all = table.signal % N_CHIPS
+        n = len(self.chips)
+        chip_all = table.signal % n
         for number, mode in enumerate(self.modes):
-            at = np.flatnonzero(mode.looks_at(table))
+            at = np.flatnonzero(mode.looks_at(table, self.diodes))
             if not at.size:
                 continue
             chip = chip_all[at].astype(np.int64)
+            diode = self.diodes[chip]
             part = tuple(getattr(table, n)[at] for n in _CYCLE)
             count = table.count[at]
             if mode.threshold_k is not None and mode.model.outside_range == "refuse":
                 # what is left out is not refused; its damage is still told
                 kept = part[0] >= mode.threshold_k
-                mode.model.cycles_to_failure(*(v[kept] for v in part), diode=chip[kept] >= 6)
-                n_f, outside = mode.model.never_refusing().cycles_to_failure(*part, diode=chip >= 6)
+                mode.model.cycles_to_failure(*(v[kept] for v in part), diode=diode[kept])
+                n_f, outside = mode.model.never_refusing().cycles_to_failure(*part, diode=diode)
             else:
-                n_f, outside = mode.model.cycles_to_failure(*part, diode=chip >= 6)
-            each = 1.0 / n_f
+                n_f, outside = mode.model.cycles_to_failure(*part, diode=diode)
+            each = np.where(part[0] < NOISE_K, 0.0, 1.0 / n_f)
             if mode.threshold_k is not None:
                 small = part[0] < mode.threshold_k
-                self._left_out[number] += np.bincount(chip, weights=np.where(small, each * count, 0.0), minlength=N_CHIPS)
-                self._left_out_cycles[number] += np.bincount(chip, weights=np.where(small, count, 0.0), minlength=N_CHIPS)
+                self._left_out[number] += np.bincount(chip, weights=np.where(small, each * count, 0.0), minlength=n)
+                self._left_out_cycles[number] += np.bincount(chip, weights=np.where(small, count, 0.0), minlength=n)
                 each = np.where(small, 0.0, each)
             damage = each * count
             out[number, at] = damage
             place = (chip * len(self.phases) + table.phase_id[at]) * len(KIND_WORDS) + table.kind[at]
             self._damage[number] += np.bincount(place, weights=damage, minlength=self._damage[number].size).reshape(self._damage[number].shape)
-            self._cycles[number] += np.bincount(chip, weights=count, minlength=N_CHIPS)
-            self._outside[number] += np.bincount(chip, weights=damage * outside, minlength=N_CHIPS)
-            for name, mask in mode.model.outside_by(*part, diode=chip >= 6).items():
-                self._outside_by[number][name] += np.bincount(chip, weights=damage * mask, minlength=N_CHIPS)
+            self._cycles[number] += np.bincount(chip, weights=count, minlength=n)
+            self._outside[number] += np.bincount(chip, weights=damage * outside, minlength=n)
+            for name, mask in mode.model.outside_by(*part, diode=diode).items():
+                self._outside_by[number][name] += np.bincount(chip, weights=damage * mask, minlength=n)
             self._add_classes(number, chip, part, damage, count)
             for k, other in enumerate(self._other[number].values()):
-                n_other, _ = other.cycles_to_failure(*part, diode=chip >= 6)
+                n_other, _ = other.cycles_to_failure(*part, diode=diode)
                 weight = count / n_other if mode.threshold_k is None else np.where(part[0] < mode.threshold_k, 0.0, count / n_other)
-                self._other_damage[number][k] += np.bincount(chip, weights=weight, minlength=N_CHIPS)
+                self._other_damage[number][k] += np.bincount(chip, weights=weight, minlength=n)
             order = np.lexsort((each, chip))
             last = np.flatnonzero(np.append(np.diff(chip[order]) != 0, True))
             for j in order[last]:
@@ -222,7 +233,7 @@ class DamageLedger:
         """Refuse what would be booked in a wrong place, or vanish."""
         for name in (*_CYCLE, "count"):
             require_range(f"cycles.{name}", getattr(table, name), low=0.0 if name in ("range_k", "heating_s", "count") else None)
-        require_range("cycles.signal", table.signal, low=0, high=2 * N_CHIPS - 1)
+        require_range("cycles.signal", table.signal, low=0, high=2 * len(self.chips) - 1)
         require_range("cycles.phase_id", table.phase_id, low=0, high=len(self.phases) - 1)
         require_range("cycles.kind", table.kind, low=0, high=len(KIND_WORDS) - 1)
 
@@ -238,7 +249,7 @@ class DamageLedger:
         """All chips and modes, in the order of the file."""
         out = []
         for number, mode in enumerate(self.modes):
-            for chip in mode.chip_numbers():
+            for chip in mode.chip_numbers(self.diodes):
                 d = self._damage[number, chip]
                 total = float(d.sum())
                 missions = 1.0 / total if total > 0.0 else float("inf")
@@ -249,7 +260,7 @@ class DamageLedger:
                 out.append(LedgerRow(
                     chip=self.chips[chip], mode=mode.name, acts_on=mode.acts_on, model=mode.model.name, damage_per_mission=total,
                     life_missions=missions, life_years=missions / self.missions_per_year, cycles=float(self._cycles[number, chip]),
-                    outside_share=float(self._outside[number, chip] / total) if total > 0.0 else 0.0,
+                    outside_share=min(1.0, float(self._outside[number, chip] / total)) if total > 0.0 else 0.0,
                     worst_range_k=float(worst[1]), worst_min_c=float(worst[2]), worst_max_c=float(worst[3]), worst_heating_s=float(worst[4]),
                     worst_start_s=float(worst[5]), worst_phase="" if none else self.phases[int(worst[6])], worst_damage=float(worst[0]),
                     damage_by_phase=dict(zip(self.phases, d.sum(axis=1).tolist())), damage_by_kind=dict(zip(KIND_WORDS, d.sum(axis=0).tolist())),
@@ -324,7 +335,7 @@ class ChoiceEffect:
     damage_ratio: float
 
 
-def effect_of_choices(cycles: CycleTable, spec, *, folder=None) -> list[ChoiceEffect]:
+def effect_of_choices(cycles: CycleTable, spec, *, folder=None, diodes=TWO_LEVEL_DIODES) -> list[ChoiceEffect]:
     """Damage of the same cycles with each explicit choice of the model made otherwise, one at a time.
 
     Parameters
@@ -336,6 +347,8 @@ def effect_of_choices(cycles: CycleTable, spec, *, folder=None) -> list[ChoiceEf
         A ``FailureMode`` must hold all options that its model needs.
     folder : path-like, optional
         Where the relative path of a coefficient file counts from.
+    diodes : ndarray of bool, shape (chips,)
+        Which chips are diodes only; default: the last six of twelve.
 
     Returns
     -------
@@ -364,13 +377,13 @@ def effect_of_choices(cycles: CycleTable, spec, *, folder=None) -> list[ChoiceEf
     model = spec
     if isinstance(spec, Mode):
         model = spec.model
-        cycles = cycles.select(spec.looks_at(cycles))
+        cycles = cycles.select(spec.looks_at(cycles, diodes))
         if spec.threshold_k is not None:
             cycles = cycles.select(cycles.range_k >= spec.threshold_k)
     part = tuple(getattr(cycles, n) for n in _CYCLE)
     damage = {}
     for choice, one in {"as chosen": model, **model.alternatives()}.items():
-        n_f, _ = one.cycles_to_failure(*part, diode=cycles.signal % N_CHIPS >= 6)
+        n_f, _ = one.cycles_to_failure(*part, diode=diodes[cycles.signal % diodes.size])
         damage[choice] = miner_sum(cycles.count, n_f)
     base = damage["as chosen"]
     return [ChoiceEffect(choice, d, d / base if base > 0.0 else _NAN) for choice, d in damage.items()]

@@ -294,7 +294,9 @@ def angle_nodes(count, point, drive, conduction, switching, knot_c, i_step, volt
             away = abs(border[b] - middle)
             if away < spacing or _TURN - away < spacing:
                 broken = True
-        corner[:] = 0.0
+        for position in range(n_positions):
+            for k in range(n_k):
+                corner[position, k] = 0.0
         if not broken:
             add_losses(middle, 1.0, point, drive, conduction, switching, i_step, voltage, energy, corner)
         else:
@@ -315,7 +317,12 @@ def angle_nodes(count, point, drive, conduction, switching, knot_c, i_step, volt
                         add_losses(middle + side * d, weight, point, drive, conduction, switching, i_step, voltage, energy, corner)
                     at = until
         for position in range(n_positions):
-            to_hinges(corner[position], knot_c, n_k, nodes[j, position])
+            before = 0.0
+            nodes[j, position, 0] = corner[position, 0]
+            for k in range(1, n_k):
+                slope = (corner[position, k] - corner[position, k - 1]) / (knot_c[k] - knot_c[k - 1])
+                nodes[j, position, k] = slope - before
+                before = slope
     if symmetric:
         for j in range(many):
             for position in range(n_positions):

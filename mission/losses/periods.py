@@ -295,7 +295,7 @@ def _case(module, modulation, i_peak_a, mod_index, phi_rad, t_vj_c, fsw, v_dc_v,
     phi = require_range("phi_rad", np.atleast_1d(phi_rad))
     most = modulation.mod_index_max
     if not overmodulation:
-        require_range("mod_index", np.atleast_1d(mod_index), low=0.0, high=most * (1 + 1e-9))
+        require_range("mod_index", mod_index, low=0.0, high=most * (1 + 1e-9))
     reference, first, last = reference_for(modulation, mod_index)
     fsw = require_range("switching_frequency_hz", np.atleast_1d(fsw), low=0.0, unit="Hz")
     v = require_range("v_dc_v", np.atleast_1d(v_dc_v), low=0.0, low_open=True, unit="V")

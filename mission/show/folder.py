@@ -9,9 +9,6 @@ from pathlib import Path
 
 from ..cycles import CycleWriter
 from ..errors import InputError
-from ..history import CHIP_NAMES
-
-SIGNALS = CHIP_NAMES + tuple(f"case {c}" for c in CHIP_NAMES)
 
 
 class ResultFolder:
@@ -42,7 +39,8 @@ class ResultFolder:
     @contextlib.contextmanager
     def cycles(self, study):
         """Context with a sink for counted cycles, which become cycles.parquet."""
-        with CycleWriter(self.path / "cycles.parquet", SIGNALS, study.profile.phases) as writer:
+        chips = study.module.chip_names()
+        with CycleWriter(self.path / "cycles.parquet", chips + tuple(f"case {c}" for c in chips), study.profile.phases) as writer:
             yield writer
 
     def write(self, result) -> list[Path]:

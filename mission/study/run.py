@@ -10,7 +10,7 @@ import numpy as np
 
 from ..cycles import CycleCounter, CycleTable, RippleClasses
 from ..errors import MissionError
-from ..history import CHIP_NAMES, ElectrothermalMarch, EnvelopeBuilder, JunctionHistory, MarchSettings
+from ..history import ElectrothermalMarch, EnvelopeBuilder, JunctionHistory, MarchSettings
 from ..lifetime import DamageLedger
 from ..losses import LossTables, build_tables
 from ..machine import operating_points
@@ -130,7 +130,7 @@ def run(study: Study, *, progress: Progress | None = None, keep_cycles: bool = T
     """
     begin = time.perf_counter()
     spec = study.spec
-    tables = build_tables(study.module, spec.inverter.modulation)
+    tables = build_tables(study.module, spec.inverter.modulation, **spec.inverter.table_options())
     network = inverter_modes(study.module, spec.cooling, materials=study.materials(), relative_tolerance=spec.march.network_tolerance)
     settings = MarchSettings(f_slow_hz=spec.march.slow_below_hz, steps_per_period=spec.march.steps_per_period)
     states = None
@@ -160,12 +160,13 @@ class _Pass:
         self.study, self.tables, self.number = study, tables, number
         self._progress, self._states, self._keep, self._sink = progress, states, keep, sink
         profile = study.profile
-        self.counter = CycleCounter(24)
+        chips = self.chips = study.module.chip_names()
+        self.counter = CycleCounter(2 * len(chips))
         self.ripple = RippleClasses()
-        self.ledger = DamageLedger(study.modes, CHIP_NAMES, profile.phases, missions_per_year=study.spec.lifetime.missions_per_year)
-        self.cycle_map = CycleMap(study.modes)
-        self.envelope = EnvelopeBuilder(profile.duration_s, profile.phases, tables.temperature_data_c)
-        self.engine = ElectrothermalMarch(tables, network, settings, on_points=self._points, on_ripple=self._ripples)
+        self.ledger = DamageLedger(study.modes, chips, profile.phases, missions_per_year=study.spec.lifetime.missions_per_year)
+        self.cycle_map = CycleMap(study.modes, len(chips))
+        self.envelope = EnvelopeBuilder(profile.duration_s, chips, profile.phases, tables.temperature_data_c)
+        self.engine = ElectrothermalMarch(tables, network, settings, derating=study.spec.inverter.derating, on_points=self._points, on_ripple=self._ripples)
         self.i_peak_max = self.mod_index_max = self.frequency_max = 0.0
         self.complete, self.marched_s, self._tables_kept = True, 0.0, []
 
@@ -173,10 +174,11 @@ class _Pass:
         self.counter.push(p.signal, p.t_c, p.time_s, p.phase_id, p.half_period_s, p.ripple_k)
 
     def _ripples(self, r):
+        n = len(self.chips)
         table = CycleTable.ripple(
-            signal=np.tile(np.arange(12, dtype=np.int16), r.half_period_s.size), range_k=r.range_k.ravel(), mean_c=r.mean_c.ravel(),
-            heating_s=np.repeat(r.half_period_s, 12), start_s=np.repeat(r.start_s, 12), end_s=np.repeat(r.end_s, 12),
-            phase_id=np.repeat(r.phase_id, 12), count=r.count.ravel())
+            signal=np.tile(np.arange(n, dtype=np.int16), r.half_period_s.size), range_k=r.range_k.ravel(), mean_c=r.mean_c.ravel(),
+            heating_s=np.repeat(r.half_period_s, n), start_s=np.repeat(r.start_s, n), end_s=np.repeat(r.end_s, n),
+            phase_id=np.repeat(r.phase_id, n), count=r.count.ravel())
         self._account(table)
         self.ripple.add(table)
 
@@ -192,26 +194,26 @@ class _Pass:
 
     def march(self):
         spec, profile = self.study.spec, self.study.profile
-        fsw, v_study, coolant = spec.inverter.switching_frequency_hz, spec.inverter.dc_voltage_v, spec.cooling.coolant_c
+        v_study, coolant = spec.inverter.dc_voltage_v, spec.cooling.coolant_c
         first = True
         try:
             for block in profile.blocks(BLOCK_ROWS):
                 n = block.dt_s.size
                 v_dc = block.columns["dc_voltage_v"] if v_study is None else np.full(n, v_study)
                 t_cool = block.columns["coolant_c"] if coolant is None else np.full(n, coolant)
-                points = operating_points(block, spec.machine, dc_voltage_v=v_study, mod_index_max=spec.inverter.modulation.mod_index_max,
+                points = operating_points(block, spec.machine, dc_voltage_v=v_study, mod_index_max=spec.inverter.mod_index_max,
                                           where=profile.source)
                 if first:
                     self.engine.start(float(t_cool[0]), theta_rad=np.radians(spec.march.start_angle_deg), states=self._states)
                     self._start_states = self.engine.states
                     self._start_c = self.engine.junction_c
                     first = False
-                # hand the kernel pieces of a few seconds of work at most, so that a stop is heard
+                # hand the kernel a few thousand rows at a time, so that a stop is heard between them
                 for a in range(0, n, 8192):
                     b = slice(a, min(a + 8192, n))
                     part = points.rows(b)
                     rows = self.engine.add_block(part, dt_s=block.dt_s[b], phase_id=block.phase_id[b], coolant_c=t_cool[b],
-                                                 energy_scale=self.tables.energy_scale(v_dc[b], fsw))
+                                                 switching_frequency_hz=spec.inverter.switching_hz(part), dc_voltage_v=v_dc[b])
                     self.envelope.add(rows)
                     self.marched_s = float(rows.end_s[-1])
                     self._take(self.counter.drain())

@@ -15,7 +15,7 @@ from ..device import PowerModule, shipped_modules
 from ..duty import DutySpec, MissionProfile, read_profile
 from ..errors import InputError, RangeError, near_match
 from ..lifetime import FailureMode, resolve_modes
-from ..losses import Modulation
+from ..losses import MOD_INDEX_SIX_STEP, Modulation
 from ..machine import MachineSpec
 from ..thermal import CoolingSpec, load_materials
 from ..tomlfile import FileModel, parse_model, read_model, read_toml
@@ -40,12 +40,92 @@ class ModuleRef(FileModel):
         return self
 
 
+class ScheduleSpec(FileModel):
+    """Highest switching frequency over a quantity: straight between the points, constant beyond them.
+
+    ``over``: output frequency [Hz], phase current [A rms], or junction temperature of the hottest
+    chip [degC], which makes it a derating.
+    """
+
+    over: Literal["output-frequency", "current", "junction"]
+    at: tuple[float, ...]
+    hz: tuple[_Positive, ...]
+
+    @model_validator(mode="after")
+    def _sensible(self):
+        if len(self.at) < 2 or len(self.at) != len(self.hz):
+            raise RangeError("at", f"{len(self.at)} values in at beside {len(self.hz)} in hz", "at least two values, and a frequency for each",
+                             "complete the shorter list")
+        for k, (a, b) in enumerate(zip(self.at, self.at[1:]), 2):
+            if b <= a:
+                raise RangeError("at", f"{b:g} at point {k} after {a:g}", "values that rise from point to point", "sort the points")
+        if max(self.hz) > 200e3:
+            raise RangeError("hz", f"{max(self.hz):g} Hz", "at most 200000 Hz", "frequencies are in Hz")
+        return self
+
+
+class DriverSpec(FileModel):
+    """What the gate driver can deliver to one gate."""
+
+    power_w: _Positive
+    peak_current_a: _Positive
+
+
 class InverterSpec(FileModel):
     """How the bridge is driven."""
 
     switching_frequency_hz: float = Field(gt=0, le=200e3)
     modulation: Modulation
     dc_voltage_v: float | None = Field(default=None, gt=0, le=20e3)
+    overmodulation: bool = False
+    dead_time_us: float = Field(default=0.0, ge=0, le=50)
+    dead_time_compensated: bool = False
+    r_gate_on_ohm: float | None = Field(default=None, ge=0, le=1000)
+    r_gate_off_ohm: float | None = Field(default=None, ge=0, le=1000)
+    stray_inductance_nh: float | None = Field(default=None, ge=0, le=10e3)
+    driver: DriverSpec | None = None
+    schedule: tuple[ScheduleSpec, ...] = ()
+
+    @model_validator(mode="after")
+    def _together(self):
+        if self.overmodulation and self.modulation.holds:
+            raise RangeError("overmodulation", f"true with modulation = '{self.modulation.value}'", "false for modulations that hold a phase",
+                             "choose sine, third-harmonic, third-harmonic-quarter or space-vector")
+        if self.dead_time_us * 1e-6 * self.switching_frequency_hz > 0.1:
+            raise RangeError("dead_time_us", f"{self.dead_time_us:g} us at {self.switching_frequency_hz:g} Hz",
+                             "at most a tenth of the switching period", "dead time is in microseconds, the frequency in Hz")
+        names = [s.over for s in self.schedule]
+        for name in names:
+            if names.count(name) > 1:
+                raise RangeError("schedule", f"{names.count(name)} schedules over '{name}'", "one for each quantity", "join their points")
+        return self
+
+    @property
+    def mod_index_max(self) -> float:
+        """Largest modulation index that the bridge makes."""
+        return MOD_INDEX_SIX_STEP if self.overmodulation else self.modulation.mod_index_max
+
+    def switching_hz(self, points):
+        """Switching frequency of operating points: the fixed one, lowered by the schedules over output frequency and current [Hz]."""
+        out = np.full(points.frequency_hz.shape, self.switching_frequency_hz)
+        for one in self.schedule:
+            if one.over != "junction":
+                quantity = points.frequency_hz if one.over == "output-frequency" else points.i_peak_a / np.sqrt(2.0)
+                out = np.minimum(out, np.interp(quantity, one.at, one.hz))
+        return out
+
+    @property
+    def derating(self):
+        """Temperatures [degC] and highest switching frequencies [Hz] of the schedule over the junction, or None."""
+        for one in self.schedule:
+            if one.over == "junction":
+                return np.array(one.at), np.array(one.hz)
+        return None
+
+    def table_options(self) -> dict:
+        """What the loss tables need to know."""
+        return {"dead_time_s": 1e-6 * self.dead_time_us, "dead_time_compensated": self.dead_time_compensated,
+                "r_gate_on_ohm": self.r_gate_on_ohm, "r_gate_off_ohm": self.r_gate_off_ohm}
 
 
 class MarchSpec(FileModel):
@@ -227,25 +307,24 @@ def _check_together(study: Study) -> None:
     if extra:
         raise InputError(f"{study.source}, section duty.columns", f"a column for {', '.join(sorted(extra))}",
                          f"no such column with machine.kind = '{spec.machine.kind}', which would ignore it", "take it out of duty.columns")
-    if spec.machine.kind == "direct" and profile.ranges["mod_index"][1] > spec.inverter.modulation.mod_index_max * (1 + 1e-9):
+    if spec.machine.kind == "direct" and profile.ranges["mod_index"][1] > spec.inverter.mod_index_max * (1 + 1e-9):
         raise InputError(f"{profile.source}, column for mod_index", f"{profile.ranges['mod_index'][1]:.6g}",
-                         f"at most {spec.inverter.modulation.mod_index_max:.5g} with modulation = '{spec.inverter.modulation.value}'",
-                         "check the definition (peak phase voltage over half the DC voltage) or choose space-vector modulation")
+                         f"at most {spec.inverter.mod_index_max:.5g} with modulation = '{spec.inverter.modulation.value}'",
+                         "check the definition (peak phase voltage over half the DC voltage), choose space-vector modulation, or allow overmodulation")
 
 
 def check_rows(study: Study) -> None:
     """Turn every row into an operating point, so that one which the machine or the module cannot reach is found without a run."""
-    from ..losses import CURRENT_REACH
+    from ..losses import current_reach_a
     from ..machine import operating_points
 
     module, source = study.module, study.profile.source
-    every = [c for curves in (*module.on_state_curves().values(), *module.energy_curves().values()) for c in curves.curve]
-    reach = CURRENT_REACH * max(c.current_a[-1] for c in every)
+    reach = current_reach_a(module)
     inverter = study.spec.inverter
     for block in study.profile.blocks():
         try:
             points = operating_points(block, study.spec.machine, dc_voltage_v=inverter.dc_voltage_v,
-                                      mod_index_max=inverter.modulation.mod_index_max, where=source)
+                                      mod_index_max=inverter.mod_index_max, where=source)
         except InputError as err:
             row = re.match(r", row (\d+)", err.where.removeprefix(source))
             if row is None:
@@ -265,7 +344,7 @@ def check_parts(study: Study) -> None:
     from ..thermal import inverter_modes
 
     try:
-        build_tables(study.module, study.spec.inverter.modulation)
+        build_tables(study.module, study.spec.inverter.modulation, **study.spec.inverter.table_options())
         inverter_modes(study.module, study.spec.cooling, materials=study.materials(), relative_tolerance=study.spec.march.network_tolerance)
     except InputError as err:
         raise err.at(study.source) from None

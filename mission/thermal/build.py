@@ -43,14 +43,19 @@ _AT_ONCE_S = 1e-3
 
 def _lumped_modes(module: PowerModule, cooling) -> ReducedNetwork:
     """Data-sheet branches and sink branches side by side, each driven by the losses at once."""
-    for name, thermal in (("switch", module.switch.thermal), ("diode", module.diode.thermal)):
-        if thermal.layer:
-            raise InputError("cooling.sink_sees", "'chip-losses' with layers", "'heat-leaving' with layers", f"{name}.thermal has layers; their heat arrives later")
-    branches = [FosterNetwork(np.array(t.r_k_per_w), np.array(t.tau_s)) for t in (module.switch.thermal, module.diode.thermal)]
+    pairs = module.chip_pairs()
+    for pair in pairs:
+        if pair.thermal.layer:
+            raise InputError("cooling.sink_sees", "'chip-losses' with layers", "'heat-leaving' with layers", f"{pair.place}.thermal has layers; their heat arrives later")
+    if module.case_to_sink is not None and module.case_to_sink.per == "switch-and-diode":
+        raise InputError("cooling.sink_sees", "'chip-losses' beside a case_to_sink resistance of its own under every chip", "'heat-leaving'",
+                         "a resistance that meets the losses at once would show the whole ripple; only one per module can be joined this way")
+    n = 6 * len(pairs)
+    branches = [FosterNetwork(np.array(p.thermal.r_k_per_w), np.array(p.thermal.tau_s)) for p in pairs]
     most = max(b.tau_s.size for b in branches)
-    lam, rho, rho_case = np.ones((most, 12)), np.zeros((most, 12)), np.zeros((most, 12))
-    for chip in range(12):
-        b = branches[0] if chip < 6 else branches[1]
+    lam, rho, rho_case = np.ones((most, n)), np.zeros((most, n)), np.zeros((most, n))
+    for chip in range(n):
+        b = branches[chip // 6]
         lam[: b.tau_s.size, chip] = 1.0 / b.tau_s
         rho[: b.tau_s.size, chip] = b.r_k_per_w / b.tau_s
     sink = sink_ladder(cooling)
@@ -59,28 +64,24 @@ def _lumped_modes(module: PowerModule, cooling) -> ReducedNetwork:
         r_s, tau_s = found.r_k_per_w, found.tau_s
     else:
         r_s, tau_s = np.array([sink]), np.array([_AT_ONCE_S])
-    rows = [(np.ones(12), np.full(12, r / tau), np.full(12, r / tau), 1.0 / tau) for r, tau in zip(r_s, tau_s)]
-    legs = (np.arange(12) % 6) // 2
-    if module.case_to_sink is not None and module.case_to_sink.per == "module":
-        groups = [np.ones(12)] if module.arrangement == "six-pack" else [(legs == k).astype(float) for k in range(3)]
+    rows = [(np.ones(n), np.full(n, r / tau), np.full(n, r / tau), 1.0 / tau) for r, tau in zip(r_s, tau_s)]
+    legs = (np.arange(n) % 6) // 2
+    if module.case_to_sink is not None:
+        groups = [np.ones(n)] if module.arrangement == "six-pack" else [(legs == k).astype(float) for k in range(3)]
         rows += [(g, g * module.case_to_sink.r_th_k_per_w / _AT_ONCE_S, g * module.case_to_sink.r_th_k_per_w / _AT_ONCE_S, 1.0 / _AT_ONCE_S) for g in groups]
-    elif module.case_to_sink is not None:
-        own = np.array([module.case_to_sink.r_th_switch_k_per_w] * 6 + [module.case_to_sink.r_th_diode_k_per_w] * 6) / _AT_ONCE_S
-        lam, rho, rho_case = (np.vstack([a, b[None]]) for a, b in ((lam, np.full(12, 1.0 / _AT_ONCE_S)), (rho, own), (rho_case, own)))
-    zero = np.zeros((12, 12))
     return ReducedNetwork(
         lam, rho, rho_case, np.array([r[3] for r in rows]), np.array([r[0] for r in rows]), np.array([r[1] for r in rows]).T.copy(),
-        np.array([r[2] for r in rows]).T.copy(), np.zeros(len(rows)), np.zeros_like(lam), zero, 0.0, 0.0, 0.0, 0.0,
+        np.array([r[2] for r in rows]).T.copy(), np.zeros(len(rows)), np.zeros_like(lam), np.zeros((n, n)), 0.0, 0.0, 0.0, 0.0,
         sum(b.tau_s.size * 6 for b in branches) + len(rows))
 
 
 def inverter_network(module: PowerModule, cooling, *, materials=None) -> FullNetwork:
-    """All twelve chips on one sink.
+    """All chips of a bridge on one sink.
 
     The sink is one temperature for all chips; it takes the heat that leaves the
     ladders, not the heat that enters the chips. With a resistance per module the
     chips of a module share its case; with resistances per switch and diode every
-    chip has a case point of its own. A half-bridge file stands for three modules
+    chip has a case point of its own. A half-bridge or leg file stands for three modules
     on the sink.
 
     Parameters
@@ -107,13 +108,13 @@ def inverter_network(module: PowerModule, cooling, *, materials=None) -> FullNet
     else:
         surface = builder.node()
         builder.to_coolant(surface, sink)
-    switch = chip_ladder(module.switch.thermal, materials, "switch.thermal")
-    diode = chip_ladder(module.diode.thermal, materials, "diode.thermal")
+    pairs = module.chip_pairs()
+    stacks = [chip_ladder(pair.thermal, materials, f"{pair.place}.thermal") for pair in pairs]
     per = module.case_to_sink.per if module.case_to_sink is not None else None
     shared = {}
     heated, cases = [], []
-    for chip in range(12):
-        stack = switch if chip < 6 else diode
+    for chip in range(6 * len(pairs)):
+        pair, stack = pairs[chip // 6], stacks[chip // 6]
         if per is None:
             case = surface
         elif per == "module":
@@ -124,7 +125,7 @@ def inverter_network(module: PowerModule, cooling, *, materials=None) -> FullNet
             case = shared[number]
         else:
             case = builder.node()
-            r = module.case_to_sink.r_th_switch_k_per_w if chip < 6 else module.case_to_sink.r_th_diode_k_per_w
+            r = module.case_to_sink.r_th_diode_k_per_w if pair.is_diode else module.case_to_sink.r_th_switch_k_per_w
             builder.resistance(case, surface, r)
         if stack.c_end_j_per_k > 0.0:
             builder.add_capacity(case, stack.c_end_j_per_k)

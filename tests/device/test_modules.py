@@ -87,7 +87,7 @@ def test_first_branch_is_the_silicon(name):
 
 
 def test_shipped_names():
-    assert shipped_modules() == ("heron-300", "kite-300")
+    assert {"heron-300", "kite-300"} < set(shipped_modules())
     heron, kite = load_module("heron-300"), load_module("kite-300")
     assert (heron.switch.thermal.reference, kite.switch.thermal.reference) == ("case", "sink")
     assert heron.case_to_sink.per == "module" and kite.case_to_sink is None
@@ -99,7 +99,7 @@ def test_shipped_names():
 def test_wrong_name_offers_the_nearest():
     with pytest.raises(InputError, match="did you mean 'kite-300'"):
         load_module("kite300")
-    with pytest.raises(InputError, match="heron-300, kite-300, or the path of a .toml file"):
+    with pytest.raises(InputError, match="heron-300, kite-300, .*or the path of a .toml file"):
         load_module("zzzzzz")
 
 

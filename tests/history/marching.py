@@ -61,13 +61,12 @@ def march(op: OperatingPoints, dt_s, *, module="heron-300", modulation="space-ve
     dt_s = np.broadcast_to(np.asarray(dt_s, float), op.frequency_hz.shape)
     coolant = np.broadcast_to(np.asarray(coolant_c, float), dt_s.shape)
     engine.start(float(coolant[0]), theta_rad=theta_rad)
-    scale = table.energy_scale(np.full(dt_s.size, V_DC_V), F_SW_HZ)
     parts = []
     edges = [0, dt_s.size] if blocks is None else [0, *blocks, dt_s.size]
     for a, b in zip(edges[:-1], edges[1:]):
         if b > a:
             parts.append(engine.add_block(op.rows(slice(a, b)), dt_s=dt_s[a:b], phase_id=np.zeros(b - a, np.int16), coolant_c=coolant[a:b],
-                                          energy_scale=scale[:, a:b]))
+                                          switching_frequency_hz=F_SW_HZ, dc_voltage_v=V_DC_V))
     engine.finish()
     rows = type(parts[0])(*(np.concatenate([getattr(p, f.name) for p in parts]) for f in fields(parts[0])))
     joined = {k: tuple(np.concatenate(c) for c in zip(*v)) for k, v in turning.items() if v}

@@ -8,11 +8,14 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from mission.errors import InputError, NoStableTemperature
-from mission.history import CHIP_NAMES, EnvelopeBuilder
+from mission.device import load_module
+from mission.history import EnvelopeBuilder
 
 from .marching import march, network, points
 
 A_UP, A_LO, B_UP, B_LO, C_UP, C_LO = range(6)
+
+CHIP_NAMES = load_module("heron-300").chip_names()
 
 
 def test_the_hottest_chip_at_standstill_is_the_one_that_carries_the_peak():
@@ -140,7 +143,7 @@ def test_envelope_keeps_extremes_whatever_the_buckets():
     op, dt = random_duty(7)
     run = march(op, dt)
     for n in (5, 60, 4000):
-        builder = EnvelopeBuilder(float(run.rows.end_s[-1]), ("all",), (25.0, 150.0), n_buckets=n)
+        builder = EnvelopeBuilder(float(run.rows.end_s[-1]), CHIP_NAMES, ("all",), (25.0, 150.0), n_buckets=n)
         builder.add(run.rows)
         history = builder.finish()
         np.testing.assert_array_equal(history.t_max_c.max(axis=0), run.rows.t_max_c.max(axis=0))

@@ -40,7 +40,7 @@ def test_half_sine(parts, frequency_hz, regime):
     engine = ElectrothermalMarch(tables, network, MarchSettings(f_slow_hz=5.0 if regime == "as set" else 1e9, steps_per_period=256))
     op = points(10, frequency_hz=frequency_hz, i_peak_a=2.0 * P_PEAK_W / V0_V, mod_index=0.0, phi_rad=0.0)
     engine.start(0.0)
-    rows = engine.add_block(op, dt_s=np.full(10, 2.0), phase_id=np.zeros(10, np.int16), coolant_c=np.zeros(10), energy_scale=np.zeros((3, 10)))
+    rows = engine.add_block(op, dt_s=np.full(10, 2.0), phase_id=np.zeros(10, np.int16), coolant_c=np.zeros(10), switching_frequency_hz=0.0, dc_voltage_v=600.0)
     swing, high, low = SWING_MAX_MIN_K[frequency_hz]
     assert rows.loss_j[-1, 0] / 2.0 == pytest.approx(200.0, rel=1e-3)
     for chip in range(6):

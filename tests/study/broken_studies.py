@@ -94,7 +94,7 @@ BROKEN_STUDIES = [
     BrokenStudy("key of the other machine", ("field machine.pole_pairs", "belongs to kind = 'synchronous'", "remove it"),
                 direct_study(machine={"kind": "direct", "pole_pairs": 6}), DIRECT),
     # inverter and module
-    BrokenStudy("unknown modulation", ("field inverter.modulation", "'space vector'", "sine, third-harmonic, space-vector", "did you mean 'space-vector'?"),
+    BrokenStudy("unknown modulation", ("field inverter.modulation", "'space vector'", "sine, third-harmonic, third-harmonic-quarter, space-vector", "did you mean 'space-vector'?"),
                 part("inverter", modulation="space vector")),
     BrokenStudy("no DC voltage", ("study.toml, section inverter", "no DC-link voltage", "inverter.dc_voltage_v", "add dc_voltage_v"), part("inverter", dc_voltage_v=None)),
     BrokenStudy("DC voltage above the blocking voltage", ("field inverter.dc_voltage_v", "1500 V", "below the blocking voltage of Heron 300, 1200 V"), part("inverter", dc_voltage_v=1500)),
