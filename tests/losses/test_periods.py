@@ -168,11 +168,12 @@ def test_symmetries(i, m, phi, modulation):
     at = losses(module, modulation, i, m, phi)
     mirrored = losses(module, modulation, i, m, -phi)
     generating = losses(module, modulation, i, m, phi + np.pi)
-    rest = losses(module, modulation, i, 0.0, phi)
+    rest = losses(module, Modulation.SINE, i, 0.0, phi)
     for part in at:
         assert at[part] == pytest.approx(mirrored[part], rel=1e-9, abs=1e-9)
         assert at[part] >= 0.0
-    for part in ("switch_conduction", "diode_conduction"):
+    # a clamp that holds one rail only treats the two half waves differently
+    for part in ("switch_conduction", "diode_conduction") if modulation.half_wave_symmetric else ():
         # turning the voltage round swaps the conducting shares of one current: their mean is that at m = 0
         assert 0.5 * (at[part] + generating[part]) == pytest.approx(rest[part], rel=1e-9, abs=1e-9)
 
