@@ -179,10 +179,10 @@ def rests_on(result) -> list[str]:
     if history.beyond_data_s[worst] > 0.0:
         out.append(f"{history.chips[worst]} is under load for {history.beyond_data_s[worst]:.4g} s ({history.beyond_data_s[worst] / history.duration_s:.1%} of the mission) "
                    f"outside {low:g} to {high:g} degC, the temperatures of the data-sheet curves; losses are extended in a straight line there")
-    out.append(f"losses: {study.spec.inverter.modulation.value} modulation, linear range; dead time and current ripple are neglected; curves are linear between their points")
+    out.extend(_how_losses(study))
     if study.spec.cooling.sink_sees == "chip-losses":
         out.append("heat: the sink is driven by the chips' losses at once (cooling.sink_sees = chip-losses), not by the heat that leaves the module")
-    elif study.module.switch.thermal.layer or study.module.diode.thermal.layer:
+    elif any(pair.thermal.layer for pair in study.module.chip_pairs()):
         out.append("heat: layers under each chip with spreading at fixed angles (a shortcut of the trade); the sink takes the heat that leaves them")
     else:
         out.append("heat: data-sheet branches turned into ladders, so that case and sink take the heat that leaves the chips, not the heat that enters")
@@ -206,6 +206,25 @@ def rests_on(result) -> list[str]:
     out.extend(f"module: {note}" for note in study.module.notes)
     out.extend(f"duty: {note}" for note in study.profile.notes)
     return out
+
+
+def _how_losses(study):
+    """What the losses rest on, in sentences."""
+    inverter, module = study.spec.inverter, study.module
+    reach = "up to six-step" if inverter.overmodulation else "linear range"
+    if inverter.dead_time_us == 0.0:
+        dead = "dead time and current ripple are neglected"
+    else:
+        dead = (f"dead time of {inverter.dead_time_us:g} us, " + ("its voltage corrected by the control" if inverter.dead_time_compensated
+                                                                     else "which moves share from switches to diodes") + "; current ripple is neglected")
+    yield f"losses: {inverter.modulation.value} modulation, {reach}; {dead}; curves are linear between their points"
+    if inverter.schedule:
+        over = ", ".join({"output-frequency": "output frequency", "current": "phase current", "junction": "junction temperature"}[s.over] for s in inverter.schedule)
+        yield f"losses: the switching frequency follows {over}; straight between the points of the schedule, constant beyond them"
+    if module.levels == 3:
+        yield "losses: three-level legs with a balanced midpoint; each commutation sees half the DC voltage"
+    if module.kind == "reverse-conducting-igbt":
+        yield "losses: the gate does not change the reverse on-state of the reverse-conducting chips"
 
 
 def _end(value):

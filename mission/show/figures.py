@@ -104,7 +104,7 @@ def rows_by_mode(result) -> list[tuple[int, object, list]]:
     """(number, mode, its ledger rows with the worst first), shortest life first."""
     rows, out = iter(result.ledger.rows()), []
     for number_, mode in enumerate(result.study.modes):
-        mine = [next(rows) for _ in mode.chip_numbers()]
+        mine = [next(rows) for _ in mode.chip_numbers(result.ledger.diodes)]
         out.append((number_, mode, sorted(mine, key=lambda r: -r.damage_per_mission)))
     return sorted(out, key=lambda x: -x[2][0].damage_per_mission)
 
@@ -192,6 +192,16 @@ def _hottest_of(history, chips):
     return int(chips[np.argmax(history.peak_c[chips])])
 
 
+PAIR_WORDS = {"switch": "switch", "diode": "diode", "inner_switch": "inner switch", "inner_diode": "inner diode", "clamp_diode": "clamp diode"}
+
+
+def _kinds(result):
+    """What is told apart by colour: words, chip numbers, dark and pale."""
+    diodes = result.study.module.diode_chips()
+    out = [("switch" if diodes.any() else "chip", np.flatnonzero(~diodes), BLUE, LIGHT_BLUE)]
+    return out + ([("diode", np.flatnonzero(diodes), RED, LIGHT_RED)] if diodes.any() else [])
+
+
 # --- 1: temperatures ----------------------------------------------------------
 @_styled
 def temperature_figure(result) -> Figure:
@@ -205,17 +215,19 @@ def temperature_figure(result) -> Figure:
     unit, s = time_unit(history.duration_s)
     starts, edges = _columns(history)
     last = history.coolant_c.size
-    switch, diode, hot = _hottest_of(history, range(6)), _hottest_of(history, range(6, 12)), history.hottest
+    kinds, hot = _kinds(result), history.hottest
+    shown = [(_hottest_of(history, chips), dark, pale, words) for words, chips, dark, pale in kinds]
     here = np.unique(history.phase_id)
     lanes = here if here.size <= _LANES else None
     n_lanes = min(here.size, _LANES)
-    figure = Figure(figsize=(9.6, 5.6 + 0.17 * n_lanes), layout="constrained")
-    up, mid, low = figure.subplots(3, 1, sharex=True, gridspec_kw={"height_ratios": [2.2, 2.2, 0.17 * n_lanes + 0.12], "hspace": 0.03})
+    panels = len(shown)
+    figure = Figure(figsize=(9.6, 1.2 + 2.2 * panels + 0.17 * n_lanes), layout="constrained")
+    *tops, low = figure.subplots(panels + 1, 1, sharex=True, gridspec_kw={"height_ratios": [2.2] * panels + [0.17 * n_lanes + 0.12], "hspace": 0.03})
     x, coolant = _steps(edges / s, np.add.reduceat(history.coolant_c, starts) / np.diff(np.append(starts, last)))
-    bottom = min(history.lowest_c[[switch, diode]].min(), history.coolant_c.min())
+    bottom = min(history.lowest_c[[one[0] for one in shown]].min(), history.coolant_c.min())
     top = max(limit, history.peak_c.max())
     span = max(top - bottom, 1.0)
-    for ax, chip, dark, pale, kind in ((up, switch, BLUE, LIGHT_BLUE, "switch"), (mid, diode, RED, LIGHT_RED, "diode")):
+    for ax, (chip, dark, pale, kind) in zip(tops, shown, strict=True):
         y0 = _steps(edges, _low(history.t_min_c[:, chip], starts, last))[1]
         y1 = _steps(edges, _high(history.t_max_c[:, chip], starts, last))[1]
         case = _steps(edges, _high(history.case_max_c[:, chip], starts, last))[1]
@@ -234,7 +246,7 @@ def temperature_figure(result) -> Figure:
             (history.case_peak_c[chip], f"case {history.case_peak_c[chip]:.1f} °C", {"color": YELLOW, "lw": 1.3, "ls": (0, (4, 1.5))}),
             (history.coolant_c.max(), f"coolant {history.coolant_c.max():.1f} °C", {"color": GREY, "lw": 1.3, "ls": (0, (1, 1))}),
         ))
-    ax = up if hot < 6 else mid
+    ax = next(ax for ax, (chip, *_) in zip(tops, shown, strict=True) if chip == hot)
     _mark_peak(ax, history, hot, s, unit)
     _draw_lanes(low, history, starts, edges / s, lanes, here, n_lanes, int(history.peak_phase_id[hot]))
     low.set_xlabel(f"time from the start of the mission, {unit}")
@@ -291,7 +303,7 @@ def _draw_lanes(ax, history, starts, edges, lanes, here, n_lanes, peak_phase):
 # --- 2: the hot stretch ---------------------------------------------------------
 @_styled
 def hot_stretch_figure(result) -> Figure:
-    """All twelve chips around the highest temperature of the mission."""
+    """All chips around the highest temperature of the mission."""
     history = result.history
     hot = history.hottest
     at = history.peak_time_s[hot]
@@ -302,14 +314,16 @@ def hot_stretch_figure(result) -> Figure:
     last = int(np.clip(np.searchsorted(history.edge_s, begin + width, side="left"), first + 1, n))
     starts, edges = _columns(history, first, last, most=160)
     unit, s = time_unit(width)
-    figure = Figure(figsize=(9.6, 4.9), layout="constrained")
-    axes = figure.subplots(2, 6, sharex=True, sharey=True)
+    rows = len(history.chips) // 6
+    figure = Figure(figsize=(9.6, 0.9 + 2.0 * rows), layout="constrained")
+    axes = figure.subplots(rows, 6, sharex=True, sharey=True, squeeze=False)
+    diodes = result.study.module.diode_chips()
     x = np.repeat((edges - at) / s, 2)[1:-1]
     highest = np.repeat(_high(history.t_max_c, starts, last), 2, axis=0)
     lowest = np.repeat(_low(history.t_min_c, starts, last), 2, axis=0)
     for chip, ax in enumerate(axes.flat):
-        dark, pale = (BLUE, LIGHT_BLUE) if chip < 6 else (RED, LIGHT_RED)
-        kind = slice(0, 6) if chip < 6 else slice(6, 12)
+        dark, pale = (RED, LIGHT_RED) if diodes[chip] else (BLUE, LIGHT_BLUE)
+        kind = slice(chip - chip % 6, chip - chip % 6 + 6)
         ax.plot(x, highest[:, kind].max(axis=1), color=GREY, lw=0.6, zorder=1)
         ax.fill_between(x, lowest[:, chip], highest[:, chip], color=pale, linewidth=0, zorder=2)
         ax.plot(x, highest[:, chip], color=dark, lw=1.0, zorder=3)
@@ -317,10 +331,10 @@ def hot_stretch_figure(result) -> Figure:
         ax.set_title(f"{'▾ ' if chip == hot else ''}{history.chips[chip]}  {highest[:, chip].max():.1f} °C", fontsize=8.5)
         ax.xaxis.set_major_locator(MaxNLocator(4))
         ax.yaxis.set_major_locator(MaxNLocator(5))
-        if chip >= 6:
+        if chip >= 6 * (rows - 1):
             ax.set_xlabel(f"{unit} from the peak")
-    for row, kind in zip(axes, ("switches", "diodes"), strict=True):
-        row[0].set_ylabel(f"{kind}: junction, °C")
+    for row, pair in zip(axes, result.study.module.chip_pairs(), strict=True):
+        row[0].set_ylabel(f"{PAIR_WORDS[pair.place]}s: junction, °C")
     axes.flat[0].set_xlim(x[0], x[-1])
     _stopped(result, figure)
     return figure
@@ -337,7 +351,7 @@ def _centres(edges):
 def _class_shares(result, which, mode, row):
     """Cycles and share of the row's damage by class of swing and mean, shape (ranges, means) each."""
     chip = result.history.chips.index(row.chip)
-    count = result.cycle_map.count[chip + (0 if mode.acts_on == "junction" else 12)]
+    count = result.cycle_map.count[chip + (0 if mode.acts_on == "junction" else len(result.history.chips))]
     damage = result.cycle_map.damage[which, chip]
     total = damage.sum() if row.life_years <= BEYOND_YEARS else 0.0
     return count, damage / total if total > 0.0 else np.zeros_like(damage)
@@ -642,19 +656,29 @@ def loss_figure(result) -> Figure:
     history = result.history
     mean = history.energy_j / history.duration_s
     joule, unit = (3.6e6, "kWh") if history.energy_j.max() >= 3.6e5 else (1e3, "kJ") if history.energy_j.max() >= 1e3 else (1.0, "J")
-    figure = Figure(figsize=(8.6, 3.2), layout="constrained")
+    pairs = result.study.module.chip_pairs()
+    figure = Figure(figsize=(8.6 if len(pairs) < 3 else 9.6, 3.2 if len(pairs) < 3 else 4.2), layout="constrained")
     ax = figure.subplots()
     x = np.arange(6)
-    for offset, chips, dark, pale, hatch, word in ((-0.24, slice(0, 6), BLUE, LIGHT_BLUE, "", "switch"), (0.24, slice(6, 12), RED, LIGHT_RED, "////", "diode")):
-        ax.bar(x + offset, mean[chips], width=0.34, facecolor=pale, edgecolor=dark, hatch=hatch, linewidth=0.8)
+    pitch = {1: 0.5, 2: 0.48}.get(len(pairs), 0.86 / len(pairs))
+    for number_of, pair in enumerate(pairs):
+        offset = (number_of - 0.5 * (len(pairs) - 1)) * pitch
+        chips = slice(6 * number_of, 6 * number_of + 6)
+        dark, pale, hatch = (RED, LIGHT_RED, "////") if pair.is_diode else (BLUE, LIGHT_BLUE, "")
+        ax.bar(x + offset, mean[chips], width=0.71 * pitch, facecolor=pale, edgecolor=dark, hatch=hatch, linewidth=0.8)
         for k, (w, e) in enumerate(zip(mean[chips], history.energy_j[chips] / joule, strict=True)):
-            words = f"{_three(w)} W\n{_three(e)} {unit}"
-            ax.annotate(f"{word}\n{words}" if k == 0 else words, (k + offset, w), xytext=(0, 2), textcoords="offset points", ha="center", va="bottom",
-                        fontsize=7.5, color=dark)
-    ax.set_xticks(x, [c.removeprefix("S-") for c in history.chips[:6]])
+            if len(pairs) < 3:
+                words = f"{_three(w)} W\n{_three(e)} {unit}"
+                words = f"{PAIR_WORDS[pair.place]}\n{words}" if k == 0 else words
+            else:
+                words = f"{pair.name} {_three(w)}" if k == 0 else _three(w)
+            ax.annotate(words, (k + offset, w), xytext=(0, 2), textcoords="offset points", ha="center", va="bottom",
+                        fontsize=7.5, color=dark, rotation=0 if len(pairs) < 3 else 90)
+    ax.set_xticks(x, [c.split("-", 1)[1] for c in history.chips[:6]])
     ax.set_ylim(0.0, max(1.4 * mean.max(), 1e-6))
     ax.set_ylabel("mean loss over the mission, W")
-    ax.set_xlabel("place in the bridge (phase, upper or lower); above the bars: mean loss and energy a mission")
+    ax.set_xlabel("place in the bridge (phase, upper or lower); above the bars: mean loss" + (" and energy a mission" if len(pairs) < 3 else ", W; "
+                  + ", ".join(f"{p.name} {PAIR_WORDS[p.place]}" for p in pairs)))
     ax.grid(axis="x", visible=False)
     ax.tick_params(axis="x", length=0)
     ax.yaxis.set_major_locator(MaxNLocator(5) if mean.max() > 0 else FixedLocator([0.0]))
@@ -695,12 +719,12 @@ def captions(result) -> dict[str, str]:
     hot = history.hottest
     unit, s = time_unit(history.duration_s)
     out = {
-        "temperatures": f"Lowest to highest junction temperature of the hottest switch and the hottest diode over the mission, with the case below and "
+        "temperatures": f"Lowest to highest junction temperature of the hottest {' and the hottest '.join(k[0] for k in _kinds(result))} over the mission, with the case below and "
                         f"the coolant. The highest, {history.peak_c[hot]:.1f} °C, is that of {history.chips[hot]} at "
                         f"{number(history.peak_time_s[hot] / s)} {unit} in the phase ‘{history.phases[int(history.peak_phase_id[hot])]}’; "
                         f"the limit is {limit_c(result):g} °C. The lanes below say which phase of the duty runs when."
                         + ("" if np.unique(history.phase_id).size == len(history.phases) else " Phases too short for the width of the picture have no lane."),
-        "hot-stretch": "The stretch around the highest temperature, every chip in its own panel, switches above and diodes below; "
+        "hot-stretch": "The stretch around the highest temperature, every chip in its own panel, like chips in one row; "
                        "the band runs from the lowest to the highest temperature, the thin grey line follows the hottest chip of the same kind.",
         "losses": f"Mean loss of each chip. Together they turn {number(history.energy_j.sum() / 3.6e6)} kWh into heat in a mission.",
     }

@@ -246,20 +246,43 @@ def _coupling_directions(dc, n, allowed):
     free[idx[:n], idx[n:]] = True
     free[idx[n:], idx[:n]] = True
     diagonal = np.where(free, dc, 0.0)
-    for rank in range(0, n + 1):
+
+    def attempt(rank):
+        """Directions of a rank, whether they suffice."""
         own = diagonal
-        for _ in range(1 if rank == 0 else 40):
+        known = np.inf
+        for turn in range(1 if rank == 0 else 40):
             value, vector = np.linalg.eigh(dc - own)
             order = np.argsort(-np.abs(value))[:rank]
             fitted = (vector[:, order] * value[order]) @ vector[:, order].T
             left_over = np.where(free, 0.0, np.abs(dc - fitted)).sum(axis=1)
-            if np.all(left_over <= allowed):
-                return vector[:, order] * np.sqrt(np.abs(value[order])), np.sign(value[order])
+            found = vector[:, order] * np.sqrt(np.abs(value[order])), np.sign(value[order])
+            worst = (left_over / allowed).max()
+            if worst <= 1.0:
+                return found, True
             new = np.where(free, dc - fitted, 0.0)
-            if np.abs(new - own).max() < 0.01 * allowed.min():
+            # far off and no longer getting closer: this rank will not do
+            if np.abs(new - own).max() < 0.01 * allowed.min() or (turn % 5 == 4 and worst > 0.9 * known and worst > 1.5):
                 break
+            if turn % 5 == 4:
+                known = worst
             own = new
-    return vector[:, order] * np.sqrt(np.abs(value[order])), np.sign(value[order])
+        return found, False
+
+    # ranks 0, 1, 2, 4, 8 ... until one suffices, then the smallest by halving
+    low, high = -1, 0
+    found, good = attempt(0)
+    while not good and high < n:
+        low, high = high, min(max(1, 2 * high), n)
+        found, good = attempt(high)
+    while good and high - low > 1:
+        middle = (low + high) // 2
+        trial, fits = attempt(middle)
+        if fits:
+            found, high = trial, middle
+        else:
+            low = middle
+    return found
 
 
 def _local_modes(lam, junction, case, lam_s, left, right, time, allowed):
