@@ -9,7 +9,8 @@ from .curves import (
     temperature_coefficient_v_per_k,
 )
 from .files import load_module, module_from_dict, save_module, shipped_modules, to_toml
-from .gate import gate_drive_power_w, gate_peak_current_a
+from .gate import gate_drive_power_w, gate_peak_current_a, turn_off_peak_v
+from .parallel import CurrentSharing, current_sharing
 from .module import (
     CaseToSinkChips,
     CaseToSinkModule,
@@ -38,6 +39,7 @@ __all__ = [
     "CaseToSinkModule",
     "ChipPair",
     "ChipThermal",
+    "CurrentSharing",
     "DiodeData",
     "EnergyCurve",
     "EnergyCurves",
@@ -55,6 +57,7 @@ __all__ = [
     "SwitchData",
     "SwitchingData",
     "Wires",
+    "current_sharing",
     "gate_drive_power_w",
     "gate_peak_current_a",
     "load_module",
@@ -67,4 +70,5 @@ __all__ = [
     "switching_energy_j",
     "temperature_coefficient_v_per_k",
     "to_toml",
+    "turn_off_peak_v",
 ]

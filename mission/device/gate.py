@@ -73,6 +73,42 @@ def gate_peak_current_a(v_on_v, v_off_v, r_internal_ohm, r_external_ohm):
     return _swing_v(v_on_v, v_off_v) / total
 
 
+def turn_off_peak_v(dc_voltage_v, current_a, stray_inductance_h, fall_time_s):
+    """Peak voltage over a switch that turns off: the link plus L di/dt, with di/dt = 0.8 I/t_f.
+
+    Parameters
+    ----------
+    dc_voltage_v : array_like
+        Voltage that is commutated [V].
+    current_a : array_like
+        Current that is turned off [A].
+    stray_inductance_h : array_like
+        Of the whole commutation loop: link, bus bars and module [H].
+    fall_time_s : array_like
+        From 90 to 10 % of the current [s].
+
+    Returns
+    -------
+    ndarray or float
+        [V]. A straight fall between 90 and 10 %; snappy devices go higher.
+
+    Raises
+    ------
+    RangeError
+        Negative voltage, current or inductance; a fall time that is not above zero.
+
+    Examples
+    --------
+    >>> float(turn_off_peak_v(600.0, 500.0, 40e-9, 100e-9))
+    760.0
+    """
+    v = require_range("dc_voltage_v", dc_voltage_v, low=0.0, unit="V")
+    i = require_range("current_a", current_a, low=0.0, unit="A")
+    inductance = require_range("stray_inductance_h", stray_inductance_h, low=0.0, unit="H")
+    fall = require_range("fall_time_s", fall_time_s, low=0.0, low_open=True, unit="s")
+    return v + inductance * 0.8 * i / fall
+
+
 def _swing_v(v_on_v, v_off_v):
     on, off = require_range("v_on_v", v_on_v, unit="V"), require_range("v_off_v", v_off_v, unit="V")
     return require_range("v_on_v - v_off_v", on - off, low=0.0, low_open=True, unit="V")

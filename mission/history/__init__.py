@@ -2,5 +2,6 @@
 
 from .envelope import EnvelopeBuilder, JunctionHistory
 from .march import ElectrothermalMarch, MarchSettings, PointBlock, RippleBlock, RowEnvelope
+from .steady import HeldPoint, SteadyState
 
-__all__ = ["ElectrothermalMarch", "EnvelopeBuilder", "JunctionHistory", "MarchSettings", "PointBlock", "RippleBlock", "RowEnvelope"]
+__all__ = ["ElectrothermalMarch", "EnvelopeBuilder", "HeldPoint", "JunctionHistory", "MarchSettings", "PointBlock", "RippleBlock", "RowEnvelope", "SteadyState"]

@@ -26,6 +26,8 @@ class JunctionHistory:
     peak_c, peak_time_s, peak_phase_id, lowest_c, case_peak_c, energy_j : ndarray, shape (n,)
         Highest junction temperature, end of the row that holds it, its phase; lowest
         junction temperature; highest case temperature; loss energy of the mission.
+    above_s, longest_above_s : ndarray, shape (n,)
+        Time above the watched temperature in all and at a stretch, whole rows counted; zero if none is watched.
     beyond_data_s : ndarray, shape (n,)
         Time in which the junction stood outside the temperatures of the data-sheet
         curves, so that losses were extended in a straight line.
@@ -49,6 +51,8 @@ class JunctionHistory:
     case_peak_c: np.ndarray
     energy_j: np.ndarray
     beyond_data_s: np.ndarray
+    above_s: np.ndarray
+    longest_above_s: np.ndarray
 
     @property
     def hottest(self) -> int:
@@ -73,9 +77,11 @@ class JunctionHistory:
 class EnvelopeBuilder:
     """Gathers row envelopes into at most ``n_buckets`` equal stretches of time."""
 
-    def __init__(self, duration_s: float, chips, phases, data_c, *, n_buckets: int = 8640):
+    def __init__(self, duration_s: float, chips, phases, data_c, *, n_buckets: int = 8640, watch_c: float = np.inf):
         self.duration_s, self.chips, self.phases, self.data_c = float(duration_s), tuple(chips), tuple(phases), data_c
         n = len(self.chips)
+        self.watch_c = watch_c
+        self.above_s, self.longest_above_s, self._above_now = np.zeros(n), np.zeros(n), np.zeros(n)
         b = self._b = int(n_buckets)
         self._width = self.duration_s / b
         self._temps = np.empty((4, b, n))
@@ -101,6 +107,7 @@ class EnvelopeBuilder:
         low, high = self.data_c
         working = rows.loss_j > 1e-6 * np.maximum(span, 1e-12)[:, None]
         self.beyond_data_s += (((rows.t_min_c < low) | (rows.t_max_c > high)) & working).T @ span
+        self._watch(rows, span)
         first = np.minimum((rows.start_s / self._width + 1e-9).astype(int), self._b - 1)
         last = np.clip(np.ceil(rows.end_s / self._width - 1e-9).astype(int) - 1, first, self._b - 1)
         inside = first == last
@@ -111,6 +118,18 @@ class EnvelopeBuilder:
             part = edges[1] - edges[0]
             pick = np.full(here.size, r)
             self._gather(here, rows, pick, part, (part / span[r])[:, None])
+
+    def _watch(self, rows, span):
+        above = rows.t_max_c > self.watch_c
+        self.above_s += above.T @ span
+        for chip in np.flatnonzero(above.any(axis=0) | (self._above_now > 0.0)):
+            begins = np.concatenate([[True], above[1:, chip] != above[:-1, chip]])
+            stretch = np.add.reduceat(span, np.flatnonzero(begins))
+            hot = above[begins, chip]
+            if hot[0]:
+                stretch[0] += self._above_now[chip]
+            self.longest_above_s[chip] = max(self.longest_above_s[chip], stretch[hot].max(initial=0.0))
+            self._above_now[chip] = stretch[-1] if hot[-1] else 0.0
 
     def _gather(self, bucket, rows, pick, span, share):
         if bucket.size == 0:
@@ -137,4 +156,5 @@ class EnvelopeBuilder:
             self.chips, self.phases, float(end), edge, *(self._temps[k][used] for k in range(4)),
             self._loss[used] / time[used, None], self._coolant[used] / time[used], self._phase_time[used].argmax(axis=1),
             self.peak_c, self.peak_time_s, self.peak_phase_id, self.lowest_c, self.case_peak_c, self.energy_j, self.beyond_data_s,
+            self.above_s, self.longest_above_s,
         )

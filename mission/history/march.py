@@ -13,9 +13,10 @@ from dataclasses import dataclass
 import numpy as np
 
 from ..errors import InputError, NoStableTemperature
-from ..losses import LossTables, reference_for
+from ..losses import MOD_INDEX_SIX_STEP, LossTables, reference_for
 from ..machine import OperatingPoints
 from ..thermal import ReducedNetwork
+from .steady import HeldPoint
 
 _POINT_CAPACITY = 32768
 _LEVELS = 19
@@ -191,6 +192,16 @@ class ElectrothermalMarch:
         self._before_first = True
 
     @property
+    def angle_rad(self) -> float:
+        """Electrical angle of the rotor now, within a turn [rad]."""
+        return float(self._now[self._k.THETA])
+
+    @property
+    def loaded(self) -> bool:
+        """Whether current flows in the row just marched."""
+        return bool(self._op[self._k.I_PEAK] > 0.0)
+
+    @property
     def junction_c(self) -> np.ndarray:
         """Junction temperatures now, shape (chips,) [degC] (in fast rotation: their mean over a period)."""
         return self._w[self._k.T:self._k.T + self.n_chips].copy()
@@ -266,10 +277,7 @@ class ElectrothermalMarch:
             if status == k.RUNAWAY:
                 now = self.junction_c
                 chip = int(np.argmax(np.where(np.isfinite(now), now, np.inf)))
-                raise NoStableTemperature(
-                    f"no stable temperature: {self.chip_names[chip]} passes {self.settings.t_stop_c:g} degC at {self._now[k.TIME]:.6g} s "
-                    f"into the mission (coolant {table[at, k.T_COOLANT]:g} degC, peak current {table[at, k.I_PEAK]:.4g} A). The losses grow "
-                    "faster with temperature than the cooling carries away: lower current, frequency or coolant, or cool better")
+                raise NoStableTemperature(self._runaway_words(chip, table[at]))
             self._hand_over()
         ends = start + np.cumsum(table[:, k.DT])
         first = np.concatenate([[0], np.cumsum(pieces)[:-1]])
@@ -281,6 +289,23 @@ class ElectrothermalMarch:
             case_min_c=np.minimum.reduceat(temps[:, 2], first), case_max_c=np.maximum.reduceat(temps[:, 3], first),
             loss_j=np.add.reduceat(loss, first), coolant_c=np.broadcast_to(np.asarray(coolant_c, float), dt_s.shape),
         )
+
+    def _runaway_words(self, chip, op):
+        """Why a march ended beyond ``t_stop_c``: no stable temperature at all, or one that no chip survives."""
+        k, stop = self._k, self.settings.t_stop_c
+        held = HeldPoint(self.tables, self.network, i_peak_a=op[k.I_PEAK], mod_index=min(op[k.MOD], MOD_INDEX_SIX_STEP) if op[k.CLIP_FIRST] < 0.5 * np.pi
+                         else op[k.MOD], phi_rad=op[k.PHI], frequency_hz=op[k.FREQ], direction=op[k.DIRECTION], switching_frequency_hz=op[k.FSW],
+                         dc_voltage_v=op[k.V_DC])
+        state = held.settle(op[k.T_COOLANT])
+        where = (f"{self.chip_names[chip]} passes {stop:g} degC at {self._now[k.TIME]:.6g} s into the mission (coolant {op[k.T_COOLANT]:g} degC, "
+                 f"peak current {op[k.I_PEAK]:.4g} A, output frequency {op[k.FREQ]:.4g} Hz)")
+        if state.exists:
+            return (f"far too hot: {where}. Held for ever, this operating point would settle with a mean of {state.t_vj_c.max():.0f} degC in its hottest chip; "
+                    "no device lives there: lower current, frequency or coolant, or cool better")
+        limit = held.runaway_coolant_c(op[k.T_COOLANT])
+        known = "at no coolant temperature" if limit is None or limit < -200.0 else f"only with a coolant below {limit:.0f} degC"
+        return (f"no stable temperature exists: {where}. The losses grow faster with temperature than the cooling carries away (loop gain "
+                f"{state.loop_gain:.2f}, stable below 1); held for ever, this operating point is stable {known}: lower current, frequency or coolant, or cool better")
 
     def finish(self) -> None:
         """Close the mission: hand over what the turning-point filters still hold; states are physical afterwards."""

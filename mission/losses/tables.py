@@ -15,7 +15,7 @@ from ..device import PowerModule, on_state_voltage_v, switching_energy_j
 from ..device.notes import curve_name
 from ..errors import InputError, RangeError
 from .legs import LegPlan, leg_plan
-from .modulation import Modulation
+from .modulation import Modulation, reference_for
 from .periods import gate_factors
 
 #: Table range over the end of the data-sheet curves. Beyond that a straight-line
@@ -73,6 +73,29 @@ class LossTables:
         """What the kernels read, in their order."""
         return (self.drive, self.plan.conduction, self.plan.switching, self.knot_c, float(self.i_step_a), self.voltage_v, self.energy_j,
                 self.v_ref_v, self.voltage_exponent, self.gate_factor)
+
+    def _point(self, i_peak_a, mod_index, phi_rad, frequency_hz, switching_frequency_hz, dc_voltage_v, direction):
+        from . import kernels
+
+        point = np.zeros(kernels.SCALE + self.v_ref_v.size)
+        size, first, last = (v[0] for v in reference_for(self.modulation, mod_index))
+        kernels.set_point(point, self.drive, float(i_peak_a), size, float(phi_rad), float(direction), first, last, float(switching_frequency_hz),
+                          float(frequency_hz), float(dc_voltage_v), self.v_ref_v, self.voltage_exponent, self.gate_factor)
+        return kernels, point, np.zeros((len(self.plan.positions), self.knot_c.size))
+
+    def corner_means_w(self, *, i_peak_a, mod_index, phi_rad, frequency_hz, switching_frequency_hz, dc_voltage_v, direction=1.0) -> np.ndarray:
+        """Mean losses over a fundamental period of every position at the corner temperatures, shape (positions, k) [W]."""
+        kernels, point, out = self._point(i_peak_a, mod_index, phi_rad, frequency_hz, switching_frequency_hz, dc_voltage_v, direction)
+        kernels.period_means(point, self.drive, self.plan.conduction, self.plan.switching, self.i_step_a, self.voltage_v, self.energy_j,
+                             np.empty_like(out), np.empty(kernels.MOST_BORDERS), out)
+        return out
+
+    def corner_losses_w(self, theta_rad, *, i_peak_a, mod_index, phi_rad, frequency_hz, switching_frequency_hz, dc_voltage_v, direction=1.0) -> np.ndarray:
+        """Losses of every position of a leg at one angle of its current, at the corner temperatures, shape (positions, k) [W]."""
+        kernels, point, out = self._point(i_peak_a, mod_index, phi_rad, frequency_hz, switching_frequency_hz, dc_voltage_v, direction)
+        kernels.add_losses(float(theta_rad), 1.0, point, self.drive, self.plan.conduction, self.plan.switching, self.i_step_a, self.voltage_v,
+                           self.energy_j, out)
+        return out
 
 
 def build_tables(module: PowerModule, modulation: Modulation, *, dead_time_s: float = 0.0, dead_time_compensated: bool = False,

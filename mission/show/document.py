@@ -26,11 +26,11 @@ class LimitEntry(_Part):
     """A limit or the target, held against the result."""
 
     what: str
-    value: float | None = Field(description="null: without end (a life without damage)")
+    value: float | None = Field(description="null: without end (a life without damage), or not known when the limit is missed")
     limit: float
     unit: str
     met: bool
-    margin: float | None = Field(description="positive when met, in the same unit; null: without end")
+    margin: float | None = Field(description="positive when met, in the same unit; null: without end, or not known")
     where: str = Field(description="chip, time or failure mode that decides")
 
 
@@ -130,6 +130,16 @@ class DutyEntry(_Part):
     frequency_max_hz: float
 
 
+class StabilityEntry(_Part):
+    """Feedback of losses and temperature at the hottest point of the mission."""
+
+    loop_gain: float = Field(description="with the temperatures there; a disturbance dies out below 1")
+    settles_at_c: float | None = Field(description="hottest mean junction if that point lasted for ever [degC]; null: no stable temperature exists")
+    runaway_coolant_c: float | None = Field(description="coolant from which on that point, lasting for ever, runs away [degC]; null: never")
+    coolant_c: float
+    words: str
+
+
 class ResultDocument(_Part):
     """Everything a run says, apart from the long tables."""
 
@@ -151,6 +161,7 @@ class ResultDocument(_Part):
     network: NetworkEntry
     gate_power_per_switch_w: float
     gate_peak_current_a: float
+    thermal_stability: StabilityEntry
     rests_on: list[str] = Field(description="what the numbers rest on: extrapolation, choices, simplifications")
     cautions: list[str]
     inputs: dict = Field(description="the study file as it was understood")
@@ -233,10 +244,11 @@ def _end(value):
 
 def build_document(result) -> ResultDocument:
     """The account of a result."""
-    from ..device import gate_drive_power_w, gate_peak_current_a
+    from ..study.verdicts import gate_figures, stability
 
     study, history, net = result.study, result.history, result.network
-    gate = study.module.gate
+    gate_w, gate_a = gate_figures(result)
+    steady = stability(result)
     mean_loss = history.energy_j / history.duration_s
     peak_loss = history.loss_w.max(axis=0)
     chips = [ChipEntry(
@@ -253,7 +265,6 @@ def build_document(result) -> ResultDocument:
     models = [ModelEntry(
         mode=m.name, acts_on=m.acts_on, chips=m.chips, model=m.model.name, source=m.model.source, life_means=m.model.life_means,
         tested_range=m.model.tested_range, options=dict(m.model.options), threshold_k=m.threshold_k) for m in study.modes]
-    fsw = study.spec.inverter.switching_frequency_hz
     return ResultDocument(
         program=f"kelvinledger {__version__}", study=study.name, study_file=study.source, complete=result.complete, passes=result.passes,
         closes_within_k=_end(result.closes_within_k), ok=result.ok,
@@ -270,8 +281,9 @@ def build_document(result) -> ResultDocument:
             relative_bound=net.relative_bound, error_bound_k=float(net.error_bound_k(peak_loss).max()), coolant_bound=net.coolant_bound,
             case_bound=net.case_bound, case_coolant_bound=net.case_coolant_bound,
             r_th_k_per_w=net.r_th_k_per_w().tolist()),
-        gate_power_per_switch_w=float(gate_drive_power_w(gate.charge_c, gate.v_on_v, gate.v_off_v, fsw)),
-        gate_peak_current_a=float(gate_peak_current_a(gate.v_on_v, gate.v_off_v, gate.r_internal_ohm, min(gate.r_on_ohm, gate.r_off_ohm))),
+        gate_power_per_switch_w=gate_w, gate_peak_current_a=gate_a,
+        thermal_stability=StabilityEntry(loop_gain=steady.loop_gain, settles_at_c=steady.settles_at_c, runaway_coolant_c=steady.runaway_coolant_c,
+                                         coolant_c=steady.coolant_c, words=steady.words),
         rests_on=rests_on(result), cautions=list(CAUTIONS),
         inputs=study.spec.model_dump(mode="json", exclude_none=True), versions=_versions(),
     )

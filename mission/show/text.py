@@ -30,11 +30,13 @@ def number(value: float, digits: int = 4) -> str:
 
 def result_text(result) -> str:
     """Verdicts, the worst rows of the ledger and what to know about them."""
+    from ..study.verdicts import stability
+
     history, study = result.history, result.study
     lines = [f"{study.name}", f"{study.module.name}; {study.profile.name}, {_span(history.duration_s)}; losses {number(history.energy_j.sum() / 3.6e6)} kWh a mission", ""]
     for v in result.verdicts:
         mark = "met   " if v.met else "MISSED"
-        lines.append(f"  {mark}  {v.what:<28} {number(v.value):>10} {v.unit:<6} limit {number(v.limit):>8}   {v.where}")
+        lines.append(f"  {mark}  {v.what:<38} {number(v.value):>10} {v.unit:<6} limit {number(v.limit):>8}   {v.where}")
     lines += ["", f"  {'failure mode':<28} {'worst chip':<11} {'life, years':>12} {'damage/mission':>15} {'outside range':>14}   most damage in"]
     for mode in study.modes:
         row = result.ledger.worst(mode.name)
@@ -43,9 +45,7 @@ def result_text(result) -> str:
                      + (f"{phase} ({share:.0%})" if phase else "-"))
     if not study.modes:
         lines.append("  no failure mode given: temperatures only")
-    warnings = result.ledger.warnings()
-    if warnings:
-        lines += ["", "  to know:"] + [f"  - {w}" for w in warnings]
+    lines += ["", "  to know:"] + [f"  - {w}" for w in (stability(result).words, *result.ledger.warnings())]
     lines += ["", "  An estimate; verify on the real device. High voltage, stored energy and hot surfaces: see the cautions in the report."]
     return "\n".join(lines)
 

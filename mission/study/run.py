@@ -10,7 +10,7 @@ import numpy as np
 
 from ..cycles import CycleCounter, CycleTable, RippleClasses
 from ..errors import MissionError
-from ..history import ElectrothermalMarch, EnvelopeBuilder, JunctionHistory, MarchSettings
+from ..history import ElectrothermalMarch, EnvelopeBuilder, HeldPoint, JunctionHistory, MarchSettings
 from ..lifetime import DamageLedger
 from ..losses import LossTables, build_tables
 from ..machine import operating_points
@@ -31,6 +31,32 @@ class Stopped(MissionError):
 
 
 @dataclass(frozen=True)
+class HotPoint:
+    """The row with the highest junction temperature, as an operating point; n chips.
+
+    ``t_vj_c`` and ``case_c`` (n,): highest temperatures in that row. ``end_s``: its end in the mission.
+    """
+
+    i_peak_a: float
+    mod_index: float
+    phi_rad: float
+    frequency_hz: float
+    direction: float
+    switching_frequency_hz: float
+    dc_voltage_v: float
+    coolant_c: float
+    end_s: float
+    phase_id: int
+    t_vj_c: np.ndarray
+    case_c: np.ndarray
+
+    def held(self, tables, network):
+        """The point on a network, as if it lasted for ever: a :class:`mission.history.HeldPoint`."""
+        return HeldPoint(tables, network, i_peak_a=self.i_peak_a, mod_index=self.mod_index, phi_rad=self.phi_rad, frequency_hz=self.frequency_hz,
+                         direction=self.direction, switching_frequency_hz=self.switching_frequency_hz, dc_voltage_v=self.dc_voltage_v)
+
+
+@dataclass(frozen=True)
 class MissionResult:
     """Everything that a run leaves.
 
@@ -45,8 +71,11 @@ class MissionResult:
     tables : LossTables
     cycles : CycleTable or None
         Every counted cycle, if they were kept in memory.
+    hot_point : HotPoint
+        Operating point of the row that holds the highest junction temperature.
     i_peak_max_a : float
         Highest peak phase current of the duty.
+    dc_voltage_max_v, switching_frequency_max_hz, coolant_max_c : float
     mod_index_max, frequency_max_hz : float
     complete : bool
         False when the run was stopped before the mission's end.
@@ -65,7 +94,11 @@ class MissionResult:
     network: ReducedNetwork
     tables: LossTables
     cycles: CycleTable | None
+    hot_point: HotPoint
     i_peak_max_a: float
+    dc_voltage_max_v: float
+    switching_frequency_max_hz: float
+    coolant_max_c: float
     mod_index_max: float
     frequency_max_hz: float
     complete: bool
@@ -133,15 +166,18 @@ def run(study: Study, *, progress: Progress | None = None, keep_cycles: bool = T
     tables = build_tables(study.module, spec.inverter.modulation, **spec.inverter.table_options())
     network = inverter_modes(study.module, spec.cooling, materials=study.materials(), relative_tolerance=spec.march.network_tolerance)
     settings = MarchSettings(f_slow_hz=spec.march.slow_below_hz, steps_per_period=spec.march.steps_per_period)
-    states = None
+    states, theta = None, np.radians(spec.march.start_angle_deg)
     known = None
     for passes in range(1, MAX_PASSES + 1):
-        one = _Pass(study, tables, network, settings, states, progress, passes, keep_cycles, cycle_sink)
+        one = _Pass(study, tables, network, settings, states, theta, progress, passes, keep_cycles, cycle_sink)
         one.march()
         swing = float((one.envelope.peak_c - one.envelope.lowest_c).max())
         if not one.complete or spec.march.start == "coolant" or one.closes_within_k <= max(PERIODIC_WITHIN_K, PERIODIC_WITHIN_SHARE * swing):
             break
         states = one.next_start()
+        if one.loaded_joint:
+            # the current goes on through the joint, and so does its angle
+            theta = one.engine.angle_rad
         # with losses that hardly depend on temperature the closing value falls fast; stop when it no longer does
         if known is not None and passes > 4 and one.closes_within_k > 0.9 * known:
             break
@@ -149,25 +185,27 @@ def run(study: Study, *, progress: Progress | None = None, keep_cycles: bool = T
     one.close(spec.lifetime.residue)
     return MissionResult(
         study, one.envelope.finish(one.marched_s), one.ledger, one.cycle_map, network, tables, one.kept(),
-        one.i_peak_max, one.mod_index_max, one.frequency_max, one.complete, passes, one.closes_within_k, time.perf_counter() - begin,
+        one.hot_point, one.i_peak_max, one.dc_voltage_max, one.fsw_max, one.coolant_max, one.mod_index_max, one.frequency_max, one.complete, passes, one.closes_within_k, time.perf_counter() - begin,
     )
 
 
 class _Pass:
     """One march over the mission with everything that is recorded on the way."""
 
-    def __init__(self, study, tables, network, settings, states, progress, number, keep, sink):
+    def __init__(self, study, tables, network, settings, states, theta, progress, number, keep, sink):
         self.study, self.tables, self.number = study, tables, number
-        self._progress, self._states, self._keep, self._sink = progress, states, keep, sink
+        self._progress, self._states, self._theta, self._keep, self._sink = progress, states, theta, keep, sink
         profile = study.profile
         chips = self.chips = study.module.chip_names()
         self.counter = CycleCounter(2 * len(chips))
         self.ripple = RippleClasses()
         self.ledger = DamageLedger(study.modes, chips, profile.phases, missions_per_year=study.spec.lifetime.missions_per_year)
         self.cycle_map = CycleMap(study.modes, len(chips))
-        self.envelope = EnvelopeBuilder(profile.duration_s, chips, profile.phases, tables.temperature_data_c)
+        self.envelope = EnvelopeBuilder(profile.duration_s, chips, profile.phases, tables.temperature_data_c,
+                                        watch_c=study.module.ratings.t_vj_op_max_c)
         self.engine = ElectrothermalMarch(tables, network, settings, derating=study.spec.inverter.derating, on_points=self._points, on_ripple=self._ripples)
-        self.i_peak_max = self.mod_index_max = self.frequency_max = 0.0
+        self.i_peak_max = self.mod_index_max = self.frequency_max = self.dc_voltage_max = self.fsw_max = 0.0
+        self.coolant_max, self.hot_c, self.hot_point, self.loaded_joint = -np.inf, -np.inf, None, False
         self.complete, self.marched_s, self._tables_kept = True, 0.0, []
 
     def _points(self, p):
@@ -204,7 +242,8 @@ class _Pass:
                 points = operating_points(block, spec.machine, dc_voltage_v=v_study, mod_index_max=spec.inverter.mod_index_max,
                                           where=profile.source)
                 if first:
-                    self.engine.start(float(t_cool[0]), theta_rad=np.radians(spec.march.start_angle_deg), states=self._states)
+                    self.engine.start(float(t_cool[0]), theta_rad=self._theta, states=self._states)
+                    starts_loaded = bool(points.i_peak_a[0] > 0.0)
                     self._start_states = self.engine.states
                     self._start_c = self.engine.junction_c
                     first = False
@@ -212,14 +251,18 @@ class _Pass:
                 for a in range(0, n, 8192):
                     b = slice(a, min(a + 8192, n))
                     part = points.rows(b)
+                    fsw = spec.inverter.switching_hz(part)
                     rows = self.engine.add_block(part, dt_s=block.dt_s[b], phase_id=block.phase_id[b], coolant_c=t_cool[b],
-                                                 switching_frequency_hz=spec.inverter.switching_hz(part), dc_voltage_v=v_dc[b])
+                                                 switching_frequency_hz=fsw, dc_voltage_v=v_dc[b])
+                    self._note_hottest(rows, part, fsw, v_dc[b])
                     self.envelope.add(rows)
                     self.marched_s = float(rows.end_s[-1])
                     self._take(self.counter.drain())
                     if self._progress is not None:
                         self._progress(self.marched_s / profile.duration_s, f"pass {self.number}")
                 self.i_peak_max = max(self.i_peak_max, float(points.i_peak_a.max()))
+                self.dc_voltage_max = max(self.dc_voltage_max, float(v_dc.max()))
+                self.coolant_max = max(self.coolant_max, float(t_cool.max()))
                 self.mod_index_max = max(self.mod_index_max, float(points.mod_index.max()))
                 self.frequency_max = max(self.frequency_max, float(points.frequency_hz.max()))
         except (KeyboardInterrupt, Stopped):
@@ -227,7 +270,22 @@ class _Pass:
                 raise
             self.complete = False
         self.engine.finish()
-        self.closes_within_k = float(np.abs(self.engine.junction_c - self._start_c).max()) if self.complete else float("nan")
+        self.loaded_joint = starts_loaded and self.engine.loaded
+        ends, began = self.engine.junction_c, self._start_c
+        if self.loaded_joint:
+            # the angle is another one at the next start: only the mean of the three legs can agree
+            ends, began = (t.reshape(-1, 3, 2).mean(axis=1) for t in (ends, began))
+        self.closes_within_k = float(np.abs(ends - began).max()) if self.complete else float("nan")
+
+    def _note_hottest(self, rows, points, fsw, v_dc):
+        self.fsw_max = max(self.fsw_max, float(fsw.max()))
+        hot = rows.t_max_c.max(axis=1)
+        k = int(np.argmax(hot))
+        if hot[k] > self.hot_c:
+            self.hot_c = float(hot[k])
+            self.hot_point = HotPoint(*(float(v[k]) for v in (points.i_peak_a, points.mod_index, points.phi_rad, points.frequency_hz, points.direction,
+                                                               fsw, v_dc, rows.coolant_c, rows.end_s)),
+                                      int(rows.phase_id[k]), rows.t_max_c[k].copy(), rows.case_max_c[k].copy())
 
     def next_start(self):
         return self.engine.periodic_start(self._start_states, self.marched_s)

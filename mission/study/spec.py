@@ -287,9 +287,10 @@ def _check_together(study: Study) -> None:
                          "one of the two", "remove one of them")
     from_duty = "dc_voltage_v" in has
     top = profile.ranges["dc_voltage_v"][1] if from_duty else spec.inverter.dc_voltage_v
-    if top >= module.ratings.v_ces_v:
+    # the switches of a midpoint-clamped leg share the link between them
+    if top >= module.ratings.v_ces_v * (2.0 if module.arrangement == "npc-leg" else 1.0):
         where = f"{profile.source}, column '{spec.duty.columns.dc_voltage.column}'" if from_duty and spec.duty.columns.dc_voltage else f"{study.source}, field inverter.dc_voltage_v"
-        raise InputError(where, f"{top:g} V", f"below the blocking voltage of {module.name}, {module.ratings.v_ces_v:g} V",
+        raise InputError(where, f"{top:g} V", f"below {'twice ' if module.arrangement == 'npc-leg' else ''}the blocking voltage of {module.name}, {module.ratings.v_ces_v:g} V",
                          "check the unit, or choose a module of a higher voltage class")
     needs = {"synchronous": ("speed_rad_s",), "direct": ("frequency_hz", "mod_index", "phi_rad", "current_a")}[spec.machine.kind]
     words = {"speed_rad_s": "speed", "frequency_hz": "frequency", "mod_index": "mod_index", "phi_rad": "displacement or power_factor", "current_a": "current"}

@@ -4,6 +4,10 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+import numpy as np
+
+from ..device import current_sharing, gate_drive_power_w, gate_peak_current_a, turn_off_peak_v
+
 
 @dataclass(frozen=True)
 class Verdict:
@@ -13,6 +17,7 @@ class Verdict:
     ----------
     what : str
     value, limit : float
+        NaN for a value that could not be reckoned; the limit then counts as missed.
     unit : str
     met : bool
     margin : float
@@ -30,21 +35,147 @@ class Verdict:
     where: str
 
 
+def _at_most(what, value, limit, unit, where):
+    return Verdict(what, float(value), float(limit), unit, bool(value <= limit), float(limit - value), where)
+
+
+def _at_least(what, value, limit, unit, where):
+    return Verdict(what, float(value), float(limit), unit, bool(value >= limit), float(value - limit), where)
+
+
 def verdicts(result) -> tuple[Verdict, ...]:
-    """Junction limit, peak current and life target of a result."""
-    study, history = result.study, result.history
-    ratings, limits = study.module.ratings, study.spec.limits
-    t_max = ratings.t_vj_op_max_c if limits.t_vj_max_c is None else limits.t_vj_max_c
-    hot = history.hottest
-    peak = float(history.peak_c[hot])
-    out = [Verdict("highest junction temperature", peak, t_max, "degC", peak <= t_max, t_max - peak,
-                   f"{history.chips[hot]} at {history.peak_time_s[hot]:.6g} s in '{history.phases[history.peak_phase_id[hot]]}'")]
+    """Every limit and the target of a result: junction, current, voltage, gate, stability, life."""
+    study, ratings, limits = result.study, result.study.module.ratings, result.study.spec.limits
+    out = [*_junction(result), *_parallel(result)]
     i_max = ratings.i_peak_repetitive_a if limits.i_peak_max_a is None else limits.i_peak_max_a
-    out.append(Verdict("highest peak phase current", result.i_peak_max_a, i_max, "A", result.i_peak_max_a <= i_max, i_max - result.i_peak_max_a, "duty"))
+    out.append(_at_most("highest peak phase current", result.i_peak_max_a, i_max, "A", "duty"))
+    out += [*_overshoot(result), *_gate(result), *_stability(result)]
     target = study.spec.lifetime.target_years
     if target is not None:
         worst = result.ledger.worst()
-        if worst is not None:
-            out.append(Verdict("life", worst.life_years, target, "years", worst.life_years >= target, worst.life_years - target,
-                               f"{worst.chip}, {worst.mode}"))
+        if worst is None:
+            out.append(Verdict("life", float("nan"), target, "years", False, float("nan"), "no failure mode, in the study or in the module, to judge by"))
+        else:
+            out.append(_at_least("life", worst.life_years, target, "years", f"{worst.chip}, {worst.mode}"))
     return tuple(out)
+
+
+def _junction(result):
+    """Continuous limit, overload where the module permits one, and the coldest junction where it matters."""
+    history, ratings, own = result.history, result.study.module.ratings, result.study.spec.limits.t_vj_max_c
+    hot = history.hottest
+    peak = history.peak_c[hot]
+    where = f"{history.chips[hot]} at {history.peak_time_s[hot]:.6g} s in '{history.phases[history.peak_phase_id[hot]]}'"
+    if own is not None or ratings.t_vj_overload_c is None or peak <= ratings.t_vj_op_max_c:
+        yield _at_most("highest junction temperature", peak, ratings.t_vj_op_max_c if own is None else own, "degC", where)
+    else:
+        yield _at_most("highest junction temperature (overload)", peak, ratings.t_vj_overload_c, "degC", where)
+        long, often = int(np.argmax(history.longest_above_s)), int(np.argmax(history.above_s))
+        above = f"above {ratings.t_vj_op_max_c:g} degC"
+        yield _at_most(f"longest time {above}", history.longest_above_s[long], ratings.overload_longest_s, "s", history.chips[long])
+        yield _at_most(f"share of the time {above}", 100.0 * history.above_s[often] / history.duration_s, 100.0 * ratings.overload_share, "%",
+                       history.chips[often])
+    cold = int(np.argmin(history.lowest_c))
+    if history.lowest_c[cold] < ratings.t_vj_op_min_c:
+        yield _at_least("lowest junction temperature", history.lowest_c[cold], ratings.t_vj_op_min_c, "degC", history.chips[cold])
+
+
+def _parallel(result):
+    """The favoured one of parallel chips, where the module file states a spread."""
+    module, point = result.study.module, result.hot_point
+    own = result.study.spec.limits.t_vj_max_c
+    limit = own if own is not None else module.ratings.t_vj_overload_c or module.ratings.t_vj_op_max_c
+    for number, pair in enumerate(module.chip_pairs()):
+        part = getattr(module, pair.place)
+        if part.parallel is None:
+            continue
+        chips = slice(6 * number, 6 * number + 6)
+        hot = 6 * number + int(np.argmax(point.t_vj_c[chips]))
+        t, rise = point.t_vj_c[hot], max(point.t_vj_c[hot] - point.case_c[hot], 0.0)
+        sharing = current_sharing(part.on_state, part.parallel.chips, part.parallel.on_state_spread_v, current_a=point.i_peak_a, t_vj_c=t, local_rise_k=rise)
+        where = f"{result.history.chips[hot]}: {sharing.share:.2f} of an equal share" + ("" if sharing.settles else ", and drawing more and more")
+        one = _at_most(f"favoured parallel chip ({pair.place.replace('_', ' ')})", t + sharing.hotter_k, limit, "degC", where)
+        yield one if sharing.settles else Verdict(one.what, one.value, one.limit, one.unit, False, one.margin, where)
+
+
+def _overshoot(result):
+    """Peak voltage at turn-off, where stray inductance and fall time are known."""
+    module, inverter = result.study.module, result.study.spec.inverter
+    if module.switching is None or inverter.stray_inductance_nh is None:
+        return
+    loop_h = module.switching.stray_inductance_h + 1e-9 * inverter.stray_inductance_nh
+    commutated = result.dc_voltage_max_v / (module.levels - 1)
+    peak = turn_off_peak_v(commutated, result.i_peak_max_a, loop_h, module.switching.fall_time_s)
+    if module.arrangement == "t-type-leg":
+        # an outer switch blocks the whole link while its counterpart conducts
+        peak = max(peak, result.dc_voltage_max_v)
+    yield _at_most("turn-off peak voltage", peak, module.ratings.v_ces_v, "V", f"{1e9 * loop_h:.4g} nH, {result.i_peak_max_a:.4g} A, link {result.dc_voltage_max_v:g} V")
+
+
+def gate_figures(result) -> tuple[float, float]:
+    """Mean power [W] and peak current [A] that one gate asks of its driver, at the highest switching frequency of the duty."""
+    gate, inverter = result.study.module.gate, result.study.spec.inverter
+    r_on = gate.r_on_ohm if inverter.r_gate_on_ohm is None else inverter.r_gate_on_ohm
+    r_off = gate.r_off_ohm if inverter.r_gate_off_ohm is None else inverter.r_gate_off_ohm
+    return (float(gate_drive_power_w(gate.charge_c, gate.v_on_v, gate.v_off_v, result.switching_frequency_max_hz)),
+            float(gate_peak_current_a(gate.v_on_v, gate.v_off_v, gate.r_internal_ohm, min(r_on, r_off))))
+
+
+def _gate(result):
+    """What a gate asks against what the study's driver can deliver."""
+    driver = result.study.spec.inverter.driver
+    if driver is None:
+        return
+    power, current = gate_figures(result)
+    yield _at_most("gate power", power, driver.power_w, "W", f"one gate at {result.switching_frequency_max_hz:g} Hz")
+    yield _at_most("peak gate current", current, driver.peak_current_a, "A", "upper bound: voltage swing over all gate resistors")
+
+
+@dataclass(frozen=True)
+class Stability:
+    """Feedback of losses and temperature at the hottest point of the mission.
+
+    Attributes
+    ----------
+    loop_gain : float
+        With the temperatures that the chips really had there; a disturbance dies out below 1.
+    settles_at_c : float or None
+        Hottest mean junction if that point lasted for ever; None if no stable temperature exists.
+    runaway_coolant_c : float or None
+        Coolant from which on that point, lasting for ever, runs away; None if it never does.
+    coolant_c : float
+        Coolant at that point.
+    """
+
+    loop_gain: float
+    settles_at_c: float | None
+    runaway_coolant_c: float | None
+    coolant_c: float
+
+    @property
+    def words(self) -> str:
+        """One sentence."""
+        if self.settles_at_c is None:
+            fate = "held for ever, no stable temperature exists"
+        else:
+            fate = f"held for ever, its hottest chip settles with a mean of {self.settles_at_c:.0f} degC"
+        if self.runaway_coolant_c is None:
+            coolant = "no coolant temperature makes it run away"
+        else:
+            coolant = f"it runs away with a coolant above {self.runaway_coolant_c:.0f} degC (now {self.coolant_c:.0f} degC)"
+        return f"thermal stability at the hottest point of the mission: loop gain {self.loop_gain:.2f} (stable below 1); {fate}; {coolant}"
+
+
+def stability(result) -> Stability:
+    """Thermal stability at the hottest point of a result."""
+    point = result.hot_point
+    held = point.held(result.tables, result.network)
+    state = held.settle(point.coolant_c)
+    return Stability(held.loop_gain(point.t_vj_c), float(state.t_vj_c.max()) if state.exists else None, held.runaway_coolant_c(point.coolant_c), point.coolant_c)
+
+
+def _stability(result):
+    point = result.hot_point
+    gain = point.held(result.tables, result.network).loop_gain(point.t_vj_c)
+    one = _at_most("loop gain of losses and temperature", gain, 1.0, "", f"hottest point of the mission, at {point.end_s:.6g} s")
+    yield Verdict(one.what, one.value, one.limit, one.unit, gain < 1.0, one.margin, one.where)
