@@ -12,9 +12,10 @@ from importlib import import_module as _import_module
 __version__ = "0.1.0"
 
 _WHERE = {
-    "load_study": "study", "run": "study", "Study": "study", "MissionResult": "study",
+    "load_study": "study", "run": "study", "compare": "study", "RatingBench": "study", "rating_point": "study", "Study": "study", "MissionResult": "study",
     "read_profile": "duty", "profile_from_frame": "duty", "MissionProfile": "duty",
-    "load_module": "device", "PowerModule": "device",
+    "load_module": "device", "PowerModule": "device", "save_module": "device",
+    "Modulation": "losses", "leg_losses_w": "losses",
     "load_model": "lifetime",
     "InputError": "errors", "RangeError": "errors", "MissionError": "errors", "NoStableTemperature": "errors",
 }

@@ -1,4 +1,4 @@
-"""The command line: ``mission run``, ``mission check``, ``mission schema``.
+"""The command line: ``mission run``, ``check``, ``compare``, ``rating``, ``module``, ``sheet``, ``schema``.
 
 Exit codes: 0 fine, 1 a limit or the target is missed (or no stable temperature
 exists), 2 the input cannot be used.
@@ -17,6 +17,10 @@ FINE, MISSED, BAD_INPUT = 0, 1, 2
 _EXAMPLES = """examples:
   mission check profiles/ferry-heron.toml           is everything the study names usable?
   mission run profiles/ferry-heron.toml --out out   run it; look at out/report.html
+  mission compare profiles/ferry-heron.toml profiles/ferry-swift.toml --out vs   one duty on two modules, side by side
+  mission rating profiles/ferry-hour.toml --out rating   largest current over switching and output frequency
+  mission module heron-300 --out heron              curves, energies and loss split of a module in pictures
+  mission sheet profiles/swift-400-sheet/sheet.toml --out swift.toml   module file from digitised data-sheet curves
   mission schema                                    what result.json holds
 
 A study is a TOML file; the ones in profiles/ are meant to be copied.
@@ -71,6 +75,40 @@ def _parser():
                                 description="Validate a study, its duty file, module and lifetime sets, every row of them. Computes no temperatures.")
     check.add_argument("study", type=Path, metavar="STUDY.toml")
     check.set_defaults(action=_check)
+    side = commands.add_parser("compare", help="run several studies of one duty and set them side by side",
+                               description="Run studies of the same duty. Writes comparison.csv, comparison.json and a picture. "
+                                           "Exit code 1 when one of them misses a limit.")
+    side.add_argument("studies", type=Path, nargs="+", metavar="STUDY.toml")
+    side.add_argument("--out", type=Path, required=True, metavar="DIR")
+    side.add_argument("--names", metavar="A,B,...", help="what to call them; default: their modules")
+    side.add_argument("--quiet", action="store_true", help="no progress, no table")
+    side.set_defaults(action=_compare)
+    rating = commands.add_parser("rating", help="largest current of a study's module on its cooling",
+                                 description="Largest phase current that the module carries for ever: over switching frequency, and over output "
+                                             "frequency down to standstill. Takes module, modulation, cooling and limits from the study, not its duty.")
+    rating.add_argument("study", type=Path, metavar="STUDY.toml")
+    rating.add_argument("--out", type=Path, required=True, metavar="DIR")
+    rating.add_argument("--coolant", type=float, metavar="DEGC", help="default: the study's, or the warmest of its duty")
+    rating.add_argument("--power-factor", type=float, metavar="COS", help="default 0.85; negative: generating")
+    rating.add_argument("--mod-index", type=float, metavar="M", help="modulation index from the base frequency on; default 0.9")
+    rating.add_argument("--base-frequency", type=float, metavar="HZ", help="below it the modulation index falls with the output frequency; default 50")
+    rating.add_argument("--quiet", action="store_true", help="no table")
+    rating.set_defaults(action=_rating)
+    module = commands.add_parser("module", help="a module in pictures and figures",
+                                 description="On-state curves with their crossing, energies, loss split over current, frequency and modulation.")
+    module.add_argument("module", metavar="NAME|FILE.toml", help="a shipped module or a module file")
+    module.add_argument("--out", type=Path, metavar="DIR", help="folder for the pictures; without it the text only")
+    module.add_argument("--dc-voltage", type=float, metavar="V", help="default: the reference voltage of the energies")
+    module.add_argument("--switching-frequency", type=float, metavar="HZ", default=8000.0, help="default 8000")
+    module.add_argument("--modulation", default="space-vector", metavar="WORD", help="default space-vector")
+    module.set_defaults(action=_module)
+    sheet = commands.add_parser("sheet", help="make a module file from digitised data-sheet curves",
+                                description="Read a sheet description with its CSV curves, clean them, fit what must be fitted, and write a module file. "
+                                            "Every point that was changed is told.")
+    sheet.add_argument("sheet", type=Path, metavar="SHEET.toml")
+    sheet.add_argument("--out", type=Path, required=True, metavar="MODULE.toml")
+    sheet.add_argument("--quiet", action="store_true", help="no report")
+    sheet.set_defaults(action=_sheet)
     schema = commands.add_parser("schema", help="print the JSON schema of result.json")
     schema.set_defaults(action=_schema)
     return parser
@@ -119,10 +157,93 @@ def _run(args) -> int:
     return FINE if result.ok else MISSED
 
 
+def _compare(args) -> int:
+    from .errors import InputError
+    from .show.folder import ResultFolder, write_figures
+    from .show.study_figures import comparison_figure, comparison_text
+    from .study import check_rows, compare, load_study, run
+
+    if len(args.studies) < 2:
+        raise InputError("mission compare", f"{len(args.studies)} study", "two or more studies of one duty")
+    names = None if args.names is None else [n.strip() for n in args.names.split(",")]
+    if names is not None and len(names) != len(args.studies):
+        raise InputError("--names", f"{len(names)} names", f"{len(args.studies)}, one for every study")
+    studies = [load_study(path) for path in args.studies]
+    for study in studies:
+        check_rows(study)
+    folder = ResultFolder(args.out)
+    results = []
+    for number, study in enumerate(studies, 1):
+        with _Bar(quiet=args.quiet, before=f"{number}/{len(studies)} ") as bar:
+            results.append(run(study, progress=bar, keep_cycles=False))
+    found = compare(results, names)
+    paths = [folder.text("comparison.csv", found.to_frame().to_csv(index=False, lineterminator="\n")),
+             folder.text("comparison.json", found.to_json() + "\n"), *write_figures(folder, {"comparison": comparison_figure(found)})]
+    if not args.quiet:
+        print(comparison_text(found))
+        print(f"\nwritten to {args.out}: " + ", ".join(p.name for p in paths))
+    return FINE if all(r.ok for r in results) else MISSED
+
+
+#: What ``mission rating`` sweeps.
+_SWITCHING_HZ = (1000.0, 1500.0, 2000.0, 3000.0, 4000.0, 6000.0, 8000.0, 10000.0, 12000.0, 16000.0, 20000.0, 30000.0)
+_OUTPUT_HZ = (0.0, 0.05, 0.1, 0.2, 0.5, 1.0, 2.0, 3.0, 5.0, 10.0, 20.0, 50.0, 100.0)
+
+
+def _rating(args) -> int:
+    from .show.folder import ResultFolder, write_figures
+    from .show.study_figures import rating_figure, rating_frame, rating_text
+    from .study import RatingBench, load_study, rating_point
+
+    study = load_study(args.study)
+    point = rating_point(study, coolant_c=args.coolant, power_factor=args.power_factor, mod_index=args.mod_index, base_frequency_hz=args.base_frequency)
+    folder = ResultFolder(args.out)
+    bench = RatingBench(study)
+    switching = bench.over_switching_frequency(point, _SWITCHING_HZ)
+    output = bench.over_output_frequency(point, _OUTPUT_HZ)
+    paths = [folder.text("rating.csv", rating_frame(switching + output).to_csv(index=False, lineterminator="\n")),
+             *write_figures(folder, {"rating": rating_figure(switching, output, title=study.module.name)})]
+    if not args.quiet:
+        print(rating_text(switching, f"{study.module.name}: largest current over switching frequency"))
+        print(rating_text(output, f"{study.module.name}: largest current over output frequency"))
+        print(f"\nwritten to {args.out}: " + ", ".join(p.name for p in paths))
+    return FINE
+
+
+def _module(args) -> int:
+    from .device import load_module
+    from .errors import InputError, near_match
+    from .losses import Modulation
+    from .show.module_figures import module_text, write_module
+
+    words = [m.value for m in Modulation]
+    if args.modulation not in words:
+        raise InputError("--modulation", f"'{args.modulation}'", "one of " + ", ".join(words), near_match(args.modulation, words))
+    module = load_module(args.module)
+    print(module_text(module))
+    if args.out is not None:
+        v_dc = args.dc_voltage if args.dc_voltage is not None else module.switch.turn_on.v_ref_v * (module.levels - 1)
+        paths = write_module(module, args.out, modulation=Modulation(args.modulation), dc_voltage_v=v_dc, switching_frequency_hz=args.switching_frequency)
+        print(f"\nwritten to {args.out}: " + ", ".join(p.name for p in paths))
+    return FINE
+
+
+def _sheet(args) -> int:
+    from .device.sheet import sheet_to_module
+
+    result = sheet_to_module(args.sheet)
+    result.write(args.out)
+    if not args.quiet:
+        print(result.report.to_text())
+        print(f"\nwritten: {args.out}")
+    return FINE
+
+
 class _Bar:
     """Progress on the terminal; silent when the error stream is not one."""
 
-    def __init__(self, *, quiet: bool):
+    def __init__(self, *, quiet: bool, before: str = ""):
+        self._before = before
         self._quiet = quiet or not sys.stderr.isatty()
         self._bar = None
 
@@ -135,7 +256,7 @@ class _Bar:
 
     def __call__(self, share, words):
         if self._bar is not None:
-            self._bar.set_description_str(words)
+            self._bar.set_description_str(self._before + words)
             self._bar.n = round(100 * share)
             self._bar.refresh()
 

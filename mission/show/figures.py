@@ -183,8 +183,9 @@ def _spread(levels, gap, low=0.0, high=1.0):
 
 def limit_c(result) -> float:
     """Junction limit that the result is held against [degC]."""
-    own = result.study.spec.limits.t_vj_max_c
-    return float(result.study.module.ratings.t_vj_op_max_c if own is None else own)
+    from ..study.verdicts import junction_limit_c
+
+    return junction_limit_c(result.study)
 
 
 def _hottest_of(history, chips):

@@ -51,27 +51,29 @@ class ResultFolder:
         from .tables import ledger_frame
 
         document = build_document(result)
-        written = [self._text("result.json", document.model_dump_json(indent=1) + "\n")]
-        written.append(self._text("ledger.csv", ledger_frame(result).to_csv(index=False, lineterminator="\n")))
+        written = [self.text("result.json", document.model_dump_json(indent=1) + "\n")]
+        written.append(self.text("ledger.csv", ledger_frame(result).to_csv(index=False, lineterminator="\n")))
         if (self.path / "cycles.parquet").exists():
             written.append(self.path / "cycles.parquet")
-        written.append(self._whole("history.parquet", lambda p: result.history.to_frame().to_parquet(p, index=False)))
+        written.append(self.whole("history.parquet", lambda p: result.history.to_frame().to_parquet(p, index=False)))
         figures, drawn = all_figures(result), {}
         for name, figure in figures.items():
             # lay out once, not anew each time that a figure is drawn
             figure.draw_without_rendering()
             figure.set_layout_engine(None)
-            written.append(self._whole(f"{name}.png", lambda p, f=figure: f.savefig(p, format="png", dpi=150)))
+            written.append(self.whole(f"{name}.png", lambda p, f=figure: f.savefig(p, format="png", dpi=150)))
             drawn[name] = svg_text(figure, name)
-            written.append(self._text(f"{name}.svg", drawn[name]))
+            written.append(self.text(f"{name}.svg", drawn[name]))
         page = report_html(result, figures, document.model_dump(mode="json"), date=date.today().isoformat(), drawn_svg=drawn)
-        written.append(self._text("report.html", page))
+        written.append(self.text("report.html", page))
         return written
 
-    def _text(self, name, text):
-        return self._whole(name, lambda p: p.write_text(text, encoding="utf-8"))
+    def text(self, name, text) -> Path:
+        """Write a text file."""
+        return self.whole(name, lambda p: p.write_text(text, encoding="utf-8"))
 
-    def _whole(self, name, write):
+    def whole(self, name, write) -> Path:
+        """Write a file with ``write(path)``, whole or not at all."""
         path = self.path / name
         part = path.with_name(path.name + ".part")
         try:
@@ -80,6 +82,20 @@ class ResultFolder:
         finally:
             part.unlink(missing_ok=True)
         return path
+
+
+def write_figures(folder, figures) -> list[Path]:
+    """Write figures as PNG and SVG into a :class:`ResultFolder`; returns the paths."""
+    from .report import svg_text
+
+    written = []
+    for name, figure in figures.items():
+        # lay out once, not anew each time that a figure is drawn
+        figure.draw_without_rendering()
+        figure.set_layout_engine(None)
+        written.append(folder.whole(f"{name}.png", lambda p, f=figure: f.savefig(p, format="png", dpi=150)))
+        written.append(folder.text(f"{name}.svg", svg_text(figure, name)))
+    return written
 
 
 def save_result(result, folder) -> list[Path]:

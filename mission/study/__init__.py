@@ -1,7 +1,12 @@
 """A study file put to work: read it, run it, judge the result."""
 
-from .run import MissionResult, Stopped, run
+from .compare import Comparison, compare
+from .rating import Rating, RatingBench, RatingPoint, rating_point
+from .run import HotPoint, MissionResult, Stopped, run
 from .spec import Study, StudySpec, check_parts, check_rows, load_study
-from .verdicts import Verdict, verdicts
+from .verdicts import Stability, Verdict, stability, verdicts
 
-__all__ = ["MissionResult", "Stopped", "Study", "StudySpec", "Verdict", "check_parts", "check_rows", "load_study", "run", "verdicts"]
+__all__ = [
+    "Comparison", "HotPoint", "MissionResult", "Rating", "RatingBench", "RatingPoint", "Stability", "Stopped", "Study", "StudySpec", "Verdict",
+    "check_parts", "check_rows", "compare", "load_study", "rating_point", "run", "stability", "verdicts",
+]

@@ -60,6 +60,12 @@ def verdicts(result) -> tuple[Verdict, ...]:
     return tuple(out)
 
 
+def junction_limit_c(study) -> float:
+    """Junction limit that a study is held against: its own, else the module's continuous one [degC]."""
+    own = study.spec.limits.t_vj_max_c
+    return float(study.module.ratings.t_vj_op_max_c if own is None else own)
+
+
 def _junction(result):
     """Continuous limit, overload where the module permits one, and the coldest junction where it matters."""
     history, ratings, own = result.history, result.study.module.ratings, result.study.spec.limits.t_vj_max_c
@@ -67,7 +73,7 @@ def _junction(result):
     peak = history.peak_c[hot]
     where = f"{history.chips[hot]} at {history.peak_time_s[hot]:.6g} s in '{history.phases[history.peak_phase_id[hot]]}'"
     if own is not None or ratings.t_vj_overload_c is None or peak <= ratings.t_vj_op_max_c:
-        yield _at_most("highest junction temperature", peak, ratings.t_vj_op_max_c if own is None else own, "degC", where)
+        yield _at_most("highest junction temperature", peak, junction_limit_c(result.study), "degC", where)
     else:
         yield _at_most("highest junction temperature (overload)", peak, ratings.t_vj_overload_c, "degC", where)
         long, often = int(np.argmax(history.longest_above_s)), int(np.argmax(history.above_s))

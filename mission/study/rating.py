@@ -1,0 +1,202 @@
+"""Largest current that a module carries for ever on a given cooling: over switching frequency, over output frequency, at standstill."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from ..checks import require_range
+from ..errors import InputError, NoStableTemperature
+from ..history import ElectrothermalMarch, HeldPoint, MarchSettings
+from ..losses import build_tables, current_reach_a
+from ..machine import OperatingPoints
+from ..thermal import inverter_modes
+from .verdicts import junction_limit_c
+
+#: The current is found within this share of the module's peak rating.
+WITHIN = 1e-4
+JUNCTION, PEAK = "junction temperature", "peak current rating"
+
+
+@dataclass(frozen=True)
+class RatingPoint:
+    """What the load looks like where a current is rated.
+
+    Attributes
+    ----------
+    mod_index, base_frequency_hz : float
+        Modulation index at and above the base frequency; below it falls in proportion to the output
+        frequency, down to ``mod_index_low`` at standstill.
+    power_factor : float
+        Cosine of the displacement; negative: generating.
+    coolant_c, dc_voltage_v, frequency_hz, switching_frequency_hz : float
+        ``frequency_hz`` = 0 is a standstill with phase a at its peak.
+    """
+
+    frequency_hz: float
+    switching_frequency_hz: float
+    coolant_c: float
+    dc_voltage_v: float
+    mod_index: float = 0.9
+    base_frequency_hz: float = 50.0
+    mod_index_low: float = 0.02
+    power_factor: float = 0.85
+
+    def modulation_index(self) -> float:
+        """Modulation index at the output frequency."""
+        return max(self.mod_index * min(1.0, self.frequency_hz / self.base_frequency_hz), min(self.mod_index_low, self.mod_index))
+
+
+@dataclass(frozen=True)
+class Rating:
+    """Largest current at one point.
+
+    Attributes
+    ----------
+    current_a : float
+        [A rms]; zero if even no load is too hot.
+    limited_by : str
+        ``"junction temperature"`` or ``"peak current rating"``.
+    chip : str
+        Hottest chip at that current.
+    t_vj_max_c : float
+        Its highest temperature in the periodic state, ripple included [degC].
+    point : RatingPoint
+    """
+
+    current_a: float
+    limited_by: str
+    chip: str
+    t_vj_max_c: float
+    point: RatingPoint
+
+
+class RatingBench:
+    """A study's module, modulation and cooling, ready to find largest currents.
+
+    Parameters
+    ----------
+    study : Study
+        Its duty and machine are not used; its junction and current limits are.
+
+    Examples
+    --------
+    >>> import mission
+    >>> bench = RatingBench(mission.load_study("profiles/ferry-hour.toml"))
+    >>> point = RatingPoint(frequency_hz=0.0, switching_frequency_hz=5000.0, coolant_c=40.0, dc_voltage_v=600.0)
+    >>> still, turning = bench.largest_current(point), bench.largest_current(replace(point, frequency_hz=50.0))
+    >>> still.current_a < turning.current_a
+    True
+    """
+
+    def __init__(self, study):
+        self.study = study
+        spec, module = study.spec, study.module
+        self.tables = build_tables(module, spec.inverter.modulation, **spec.inverter.table_options())
+        self.network = inverter_modes(module, spec.cooling, materials=study.materials(), relative_tolerance=spec.march.network_tolerance)
+        self.limit_c = junction_limit_c(study)
+        peak = module.ratings.i_peak_repetitive_a if spec.limits.i_peak_max_a is None else spec.limits.i_peak_max_a
+        self.peak_a = min(peak, current_reach_a(module))
+        settings = MarchSettings(f_slow_hz=spec.march.slow_below_hz, steps_per_period=spec.march.steps_per_period, t_stop_c=1000.0)
+        self._engine = ElectrothermalMarch(self.tables, self.network, settings)
+
+    def periodic_peak_c(self, point: RatingPoint, i_peak_a: float) -> np.ndarray:
+        """Highest temperature of every chip in the periodic state, shape (n,) [degC]; infinite where none is stable."""
+        phi = float(np.arccos(point.power_factor))
+        m = point.modulation_index()
+        held = HeldPoint(self.tables, self.network, i_peak_a=i_peak_a, mod_index=m, phi_rad=phi, frequency_hz=point.frequency_hz,
+                         switching_frequency_hz=point.switching_frequency_hz, dc_voltage_v=point.dc_voltage_v)
+        state = held.settle(point.coolant_c)
+        n = self.network.n_chips
+        if not state.exists:
+            return np.full(n, np.inf)
+        if point.frequency_hz == 0.0 or i_peak_a == 0.0:
+            return state.t_vj_c
+        net, f = self.network, point.frequency_hz
+        states = (net.rho_local / net.lam_local_per_s * state.loss_w).ravel(), net.b_shared @ state.loss_w / net.lam_shared_per_s, point.coolant_c
+        # whole periods, long enough for the local modes to feel their own swing
+        periods = max(1, round(0.2 * f)) if f < self._engine.settings.f_slow_hz else max(4, round(f))
+        row = OperatingPoints(*(np.array([v]) for v in (f, 1.0, i_peak_a, m, phi, 0.0, np.nan, np.nan, np.nan, np.nan)))
+        peak = state.t_vj_c
+        for _ in range(12):
+            self._engine.start(point.coolant_c, states=states)
+            before = self._engine.states
+            try:
+                rows = self._engine.add_block(row, dt_s=[periods / f], phase_id=[0], coolant_c=point.coolant_c,
+                                              switching_frequency_hz=point.switching_frequency_hz, dc_voltage_v=point.dc_voltage_v)
+            except NoStableTemperature:
+                return np.full(n, np.inf)
+            self._engine.finish()
+            new = rows.t_max_c[0]
+            if np.abs(new - peak).max() < 0.02:
+                return new
+            peak, states = new, self._engine.periodic_start(before, periods / f)
+        return peak
+
+    def largest_current(self, point: RatingPoint) -> Rating:
+        """Largest rms current for which every chip stays at or below the junction limit for ever.
+
+        Raises
+        ------
+        RangeError
+            A frequency, modulation index or power factor outside its range.
+        """
+        self._check(point)
+        low, high = 0.0, self.peak_a
+        peak = self.periodic_peak_c(point, high)
+        if peak.max() <= self.limit_c:
+            return self._rating(point, high, PEAK, peak)
+        peak_low = self.periodic_peak_c(point, 0.0)
+        if peak_low.max() > self.limit_c:
+            return self._rating(point, 0.0, JUNCTION, peak_low)
+        while high - low > WITHIN * self.peak_a:
+            middle = 0.5 * (low + high)
+            peak = self.periodic_peak_c(point, middle)
+            if peak.max() <= self.limit_c:
+                low, peak_low = middle, peak
+            else:
+                high = middle
+        return self._rating(point, low, JUNCTION, peak_low)
+
+    def over_switching_frequency(self, point: RatingPoint, hz) -> list[Rating]:
+        """Largest currents over the switching frequency."""
+        return [self.largest_current(replace(point, switching_frequency_hz=float(f))) for f in np.atleast_1d(hz)]
+
+    def over_output_frequency(self, point: RatingPoint, hz) -> list[Rating]:
+        """Largest currents over the output frequency; 0 is the standstill."""
+        return [self.largest_current(replace(point, frequency_hz=float(f))) for f in np.atleast_1d(hz)]
+
+    def _rating(self, point, i_peak, why, peak):
+        hot = int(np.argmax(peak))
+        return Rating(i_peak / np.sqrt(2.0), why, self.study.module.chip_names()[hot], float(peak[hot]), point)
+
+    def _check(self, point):
+        require_range("frequency_hz", point.frequency_hz, low=0.0, high=2000.0, unit="Hz")
+        require_range("switching_frequency_hz", point.switching_frequency_hz, low=0.0, high=200e3, unit="Hz")
+        require_range("base_frequency_hz", point.base_frequency_hz, low=0.0, low_open=True, unit="Hz")
+        require_range("power_factor", point.power_factor, low=-1.0, high=1.0)
+        require_range("mod_index", point.mod_index, low=0.0, high=self.study.spec.inverter.mod_index_max * (1 + 1e-9))
+        require_range("dc_voltage_v", point.dc_voltage_v, low=0.0, low_open=True, unit="V")
+        require_range("coolant_c", point.coolant_c, low=-60.0, high=250.0, unit="degC")
+
+
+def rating_point(study, **given) -> RatingPoint:
+    """A point from what a study states, the rest from ``given`` (fields of :class:`RatingPoint`).
+
+    Raises
+    ------
+    InputError
+        The study states no coolant or link voltage, and ``given`` neither.
+    """
+    spec = study.spec
+    values = {"frequency_hz": 50.0, "switching_frequency_hz": spec.inverter.switching_frequency_hz, "coolant_c": spec.cooling.coolant_c,
+              "dc_voltage_v": spec.inverter.dc_voltage_v, "mod_index": min(0.9, spec.inverter.mod_index_max)}
+    values |= {k: v for k, v in given.items() if v is not None}
+    for name, words in (("coolant_c", "coolant temperature"), ("dc_voltage_v", "DC-link voltage")):
+        if values[name] is None:
+            # the profile has it as a column: its highest value is the hard case
+            if name not in study.profile.ranges:
+                raise InputError(f"{study.source}", f"no {words}", f"a {words}", f"give {name}")
+            values[name] = float(study.profile.ranges[name][1])
+    return RatingPoint(**values)
