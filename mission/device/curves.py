@@ -117,7 +117,7 @@ def on_state_crossing_a(curves) -> float | None:
     --------
     >>> from mission.device import load_module
     >>> round(on_state_crossing_a(load_module("heron-300").switch.on_state))
-    112
+    113
     """
     first, last = curves.current_data_a
     _, current, values = curves.on_grid()
