@@ -46,7 +46,7 @@ QUANTITIES: dict[str, Quantity] = {
                                       "Hz": (2.0 * math.pi, 0.0)},
                       -2e4, 2e4, "check the unit (rpm, rad/s, 1/s)"),
     "frequency": Quantity("frequency_hz", {"Hz": (1.0, 0.0), "kHz": (1e3, 0.0)}, 0.0, 5e3, "output frequencies are not negative; the sign of the current says where energy flows"),
-    "mod_index": Quantity("mod_index", {}, 0.0, 2.0 / math.sqrt(3.0) * (1 + 1e-9), "peak phase voltage over half the DC voltage; beyond 1.1547 is overmodulation"),
+    "mod_index": Quantity("mod_index", {}, 0.0, 4.0 / math.pi * (1 + 1e-9), "peak phase voltage over half the DC voltage; 1.2732 is six-step, the most a bridge makes"),
     "displacement": Quantity("phi_rad", {"deg": (math.pi / 180.0, 0.0), "rad": (1.0, 0.0)}, -2.0 * math.pi, 2.0 * math.pi, "check the unit (deg, rad)"),
     "power_factor": Quantity("power_factor", {}, -1.0, 1.0, "cos(phi): positive motoring, negative generating"),
     "coolant": Quantity("coolant_c", {"degC": (1.0, 0.0), "K": (1.0, -273.15)}, -60.0, 150.0, "check the unit (degC, K)"),

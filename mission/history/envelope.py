@@ -27,7 +27,7 @@ class JunctionHistory:
         Highest junction temperature, end of the row that holds it, its phase; lowest
         junction temperature; highest case temperature; loss energy of the mission.
     above_s, longest_above_s : ndarray, shape (n,)
-        Time above the watched temperature in all and at a stretch, whole rows counted; zero if none is watched.
+        Time above the watched temperature in all and at a stretch, in steps of up to a second; zero if none is watched.
     beyond_data_s : ndarray, shape (n,)
         Time in which the junction stood outside the temperatures of the data-sheet
         curves, so that losses were extended in a straight line.
@@ -77,10 +77,9 @@ class JunctionHistory:
 class EnvelopeBuilder:
     """Gathers row envelopes into at most ``n_buckets`` equal stretches of time."""
 
-    def __init__(self, duration_s: float, chips, phases, data_c, *, n_buckets: int = 8640, watch_c: float = np.inf):
+    def __init__(self, duration_s: float, chips, phases, data_c, *, n_buckets: int = 8640):
         self.duration_s, self.chips, self.phases, self.data_c = float(duration_s), tuple(chips), tuple(phases), data_c
         n = len(self.chips)
-        self.watch_c = watch_c
         self.above_s, self.longest_above_s, self._above_now = np.zeros(n), np.zeros(n), np.zeros(n)
         b = self._b = int(n_buckets)
         self._width = self.duration_s / b
@@ -107,7 +106,7 @@ class EnvelopeBuilder:
         low, high = self.data_c
         working = rows.loss_j > 1e-6 * np.maximum(span, 1e-12)[:, None]
         self.beyond_data_s += (((rows.t_min_c < low) | (rows.t_max_c > high)) & working).T @ span
-        self._watch(rows, span)
+        self._watch(rows)
         first = np.minimum((rows.start_s / self._width + 1e-9).astype(int), self._b - 1)
         last = np.clip(np.ceil(rows.end_s / self._width - 1e-9).astype(int) - 1, first, self._b - 1)
         inside = first == last
@@ -119,12 +118,12 @@ class EnvelopeBuilder:
             pick = np.full(here.size, r)
             self._gather(here, rows, pick, part, (part / span[r])[:, None])
 
-    def _watch(self, rows, span):
-        above = rows.t_max_c > self.watch_c
-        self.above_s += above.T @ span
+    def _watch(self, rows):
+        above = rows.above_s > 0.0
+        self.above_s += rows.above_s.sum(axis=0)
         for chip in np.flatnonzero(above.any(axis=0) | (self._above_now > 0.0)):
             begins = np.concatenate([[True], above[1:, chip] != above[:-1, chip]])
-            stretch = np.add.reduceat(span, np.flatnonzero(begins))
+            stretch = np.add.reduceat(rows.above_s[:, chip], np.flatnonzero(begins))
             hot = above[begins, chip]
             if hot[0]:
                 stretch[0] += self._above_now[chip]

@@ -40,6 +40,8 @@ class MarchSettings:
         A jump is a change of the ripple by more than this.
     t_stop_c : float
         A junction above this is taken as runaway, not as a result.
+    watch_c : float
+        Time above this junction temperature is counted.
     """
 
     f_slow_hz: float = 5.0
@@ -49,6 +51,7 @@ class MarchSettings:
     settle_periods: float = 2.0
     settle_above_k: float = 0.3
     t_stop_c: float = 500.0
+    watch_c: float = np.inf
 
 
 @dataclass(frozen=True)
@@ -78,7 +81,7 @@ class RippleBlock:
 
 @dataclass(frozen=True)
 class RowEnvelope:
-    """Extremes and heat of every row of a block; r rows, n chips."""
+    """Extremes and heat of every row of a block; r rows, n chips. ``above_s``: time above the watched temperature, in steps of up to a second."""
 
     start_s: np.ndarray
     end_s: np.ndarray
@@ -89,6 +92,7 @@ class RowEnvelope:
     case_max_c: np.ndarray
     loss_j: np.ndarray
     coolant_c: np.ndarray
+    above_s: np.ndarray
 
 
 class ElectrothermalMarch:
@@ -283,11 +287,13 @@ class ElectrothermalMarch:
         first = np.concatenate([[0], np.cumsum(pieces)[:-1]])
         t_end = ends[np.cumsum(pieces) - 1]
         temps, loss = temps[:, :, :self.n_chips], loss[:, :self.n_chips]
+        above = np.where(temps[:, 1] > self.settings.watch_c, table[:, k.DT, None], 0.0)
         return RowEnvelope(
             start_s=np.concatenate([[start], t_end[:-1]]), end_s=t_end, phase_id=np.asarray(phase_id),
             t_min_c=np.minimum.reduceat(temps[:, 0], first), t_max_c=np.maximum.reduceat(temps[:, 1], first),
             case_min_c=np.minimum.reduceat(temps[:, 2], first), case_max_c=np.maximum.reduceat(temps[:, 3], first),
             loss_j=np.add.reduceat(loss, first), coolant_c=np.broadcast_to(np.asarray(coolant_c, float), dt_s.shape),
+            above_s=np.add.reduceat(above, first),
         )
 
     def _runaway_words(self, chip, op):
@@ -342,6 +348,8 @@ class ElectrothermalMarch:
         if self._derates:
             # the switching frequency follows the temperature from piece to piece
             pieces = np.where(points.i_peak_a > 0.0, np.maximum(pieces, np.clip(np.ceil(dt_s / DERATE_EVERY_S - 1e-9), 1, 200000)), pieces)
+        if np.isfinite(self.settings.watch_c):
+            pieces = np.maximum(pieces, np.clip(np.ceil(dt_s - 1e-9), 1, 20000))
         return pieces.astype(int)
 
     def _check_current(self, points):

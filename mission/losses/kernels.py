@@ -25,7 +25,8 @@ _PHASE_30 = np.array([2, 0, 1, 2, 0, 1, 2, 0, 1, 2, 0, 1])
 _RAIL_30 = np.array([1.0, 1.0, -1.0, -1.0, 1.0, 1.0, -1.0, -1.0, 1.0, 1.0, -1.0, -1.0])
 _GAUSS, _GAUSS_WEIGHT = np.polynomial.legendre.leggauss(5)
 _PAIR = 0.5 / np.sqrt(3.0)
-MOST_BORDERS = 64
+_TOP_QUARTER = np.arcsin(np.sqrt(7.0 / 12.0))  # highest point of the reference with a quarter of third harmonic
+MOST_BORDERS = 128
 
 
 @njit(cache=True, inline="always")
@@ -125,6 +126,14 @@ def add_losses(theta, weight, point, drive, conduction, switching, i_step, volta
     active = not held and abs(r) < 1.0
     r = min(max(r, -1.0), 1.0)
     dead = drive[DEAD_S] * point[FSW] if active else 0.0
+    both_off_for = 2.0 * dead
+    if dead > 0.0 and drive[COMPENSATED] == 0.0:
+        above = 0.5 * (1.0 + r) if drive[LEVELS] == 2.0 else (r if r >= 0.0 else 1.0 + r)
+        taking = above if flow == 0 else 1.0 - above
+        if taking <= dead:
+            # a pulse of the switch that takes the current over never comes if it is shorter than the dead time
+            active = False
+            both_off_for = taking + dead
     move = 0.0
     if drive[COMPENSATED] == 0.0:
         move = dead if flow == 1 else -dead
@@ -138,7 +147,7 @@ def add_losses(theta, weight, point, drive, conduction, switching, i_step, volta
     else:
         at_z = min(max(1.0 + r + move, 0.0), 1.0)
         at_n = 1.0 - at_z
-    both_off = min(2.0 * dead, at_n if flow == 0 else at_p)
+    both_off = min(both_off_for, at_n if flow == 0 else at_p)
     cell = size / i_step
     j = int(cell)
     last = voltage.shape[1] - 2
@@ -186,6 +195,36 @@ def add_losses(theta, weight, point, drive, conduction, switching, i_step, volta
 
 
 @njit(cache=True)
+def _crossings(level, code, point, out, n):
+    """Angles of the voltage where the reference passes ``level``, into ``out`` from place ``n`` on; returns the next place."""
+    size, shift = point[SIZE], point[SHIFT]
+    for k in range(12):
+        begin, middle_cut, end = shift + k * _TWELFTH, -1.0, shift + (k + 1) * _TWELFTH
+        if code == 2:
+            # the only one that turns inside a piece of 30 degrees
+            for top in (_TOP_QUARTER, np.pi - _TOP_QUARTER, np.pi + _TOP_QUARTER, _TURN - _TOP_QUARTER):
+                if begin < top < end:
+                    middle_cut = top
+        for half in range(2 if middle_cut > 0.0 else 1):
+            low = begin if half == 0 else middle_cut
+            high = end if half == 1 or middle_cut < 0.0 else middle_cut
+            low, high = low + 1e-9, high - 1e-9
+            begins = reference_at(code, low, size, shift)[0] >= level
+            if begins == (reference_at(code, high, size, shift)[0] >= level):
+                continue
+            for _ in range(40):
+                middle = 0.5 * (low + high)
+                if (reference_at(code, middle, size, shift)[0] >= level) == begins:
+                    low = middle
+                else:
+                    high = middle
+            if n < MOST_BORDERS - 24:
+                out[n] = 0.5 * (low + high)
+                n += 1
+    return n
+
+
+@njit(cache=True)
 def jumps(point, drive, out):
     """Angles of the current within a turn where a loss jumps, into ``out``; returns how many."""
     code = int(drive[CODE])
@@ -208,24 +247,23 @@ def jumps(point, drive, out):
         if clip < _HALF:
             out[n], out[n + 1], out[n + 2], out[n + 3] = clip, np.pi - clip, np.pi + clip, _TURN - clip
             n += 4
-    if drive[LEVELS] == 3.0:
+    three = drive[LEVELS] == 3.0
+    if three:
         if code < 4:
             out[n], out[n + 1] = 0.0, np.pi
             n += 2
         else:
-            for k in range(12):
-                low, high = shift + k * _TWELFTH + 1e-9, shift + (k + 1) * _TWELFTH - 1e-9
-                begins = reference_at(code, low, point[SIZE], shift)[0] >= 0.0
-                if begins == (reference_at(code, high, point[SIZE], shift)[0] >= 0.0):
-                    continue
-                for _ in range(40):
-                    middle = 0.5 * (low + high)
-                    if (reference_at(code, middle, point[SIZE], shift)[0] >= 0.0) == begins:
-                        low = middle
-                    else:
-                        high = middle
-                out[n] = 0.5 * (low + high)
-                n += 1
+            n = _crossings(0.0, code, point, out, n)
+    if drive[DEAD_S] > 0.0 and drive[COMPENSATED] == 0.0 and point[FSW] > 0.0:
+        dead = drive[DEAD_S] * point[FSW]
+        if three:
+            n = _crossings(dead, code, point, out, n)
+            n = _crossings(-dead, code, point, out, n)
+            n = _crossings(1.0 - dead, code, point, out, n)
+            n = _crossings(dead - 1.0, code, point, out, n)
+        else:
+            n = _crossings(1.0 - 2.0 * dead, code, point, out, n)
+            n = _crossings(2.0 * dead - 1.0, code, point, out, n)
     for k in range(n):
         out[k] = wrap(out[k] - point[PHI])
     if drive[AT_ZERO] > 0.0:

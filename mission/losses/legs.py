@@ -12,7 +12,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from ..device import EnergyCurves, OnStateCurve, OnStateCurves, PowerModule
+from ..device import EnergyCurves, OnStateCurves, PowerModule, on_state_voltage_v
 from ..device.curves import broken_line
 
 # shares of the time
@@ -32,7 +32,7 @@ class LegPlan:
     ----------
     positions : tuple of str
         Names, e.g. S-up, S-lo, D-up, D-lo.
-    voltages : tuple of OnStateCurves
+    voltages : tuple of OnStateCurves or ChannelWithBody
     energies : tuple of EnergyCurves
     energy_places : tuple of str
         Where the energies stand in the module file.
@@ -89,7 +89,7 @@ def leg_plan(module: PowerModule) -> LegPlan:
     if module.levels == 2:
         other = 0 if module.one_chip else 2  # where the diodes' positions begin
         if module.kind == "mosfet":
-            voltages.append(module.switch.reverse or _both_in_parallel(module.switch.on_state, module.diode.on_state))
+            voltages.append(module.switch.reverse or ChannelWithBody(module.switch.on_state, module.diode.on_state))
             r = len(voltages) - 1
             conduction = _mirrored([(0, s, FLOW_OUT, P), (1, r, FLOW_OUT, N_GATED), (1, d, FLOW_OUT, DEAD)])
         else:
@@ -133,25 +133,55 @@ def _plan(module, voltages, energies, places, conduction, switching):
     return LegPlan(names, tuple(voltages), tuple(energies), tuple(places), conduction, switching, module.levels)
 
 
-def _both_in_parallel(channel: OnStateCurves, body: OnStateCurves) -> OnStateCurves:
-    """Curves of a channel with its body diode beside it: at every voltage the two currents add."""
-    curves = []
-    t_all = np.unique(np.concatenate([channel.t_vj_c, body.t_vj_c]))
-    t_all = t_all[(t_all >= max(channel.t_vj_c[0], body.t_vj_c[0])) & (t_all <= min(channel.t_vj_c[-1], body.t_vj_c[-1]))]
-    (t_c, i_c, v_c), (t_d, i_d, v_d) = channel.on_grid(), body.on_grid()
-    if t_all.size < 2:
-        t_all = t_c
-    for t in t_all:
-        along_c = np.array([np.interp(t, t_c, column) for column in v_c.T])
-        along_d = np.array([np.interp(t, t_d, column) for column in v_d.T])
-        start = float(broken_line(i_d, along_d, np.array([0.0]))[0])  # below it the diode carries nothing
-        v = np.unique(np.concatenate([along_c, along_d[along_d > start], [start]]))
-        v = v[(v > 0.0) & (v <= max(along_c[-1], start))]
-        total = _current_at(i_c, along_c, v) + np.where(v > start, _current_at(i_d, along_d, v), 0.0)
+def voltage_v(curves, current_a, t_vj_c: float):
+    """On-state voltage of one entry of ``LegPlan.voltages`` at one temperature [V]."""
+    if isinstance(curves, ChannelWithBody):
+        return curves.voltage_v(current_a, t_vj_c)
+    return on_state_voltage_v(curves, current_a, t_vj_c)
+
+
+def current_knots_a(curves, t_vj_c) -> np.ndarray:
+    """Currents where a voltage or energy curve has a corner, at the given temperatures [A]."""
+    if isinstance(curves, ChannelWithBody):
+        return np.unique(np.concatenate([curves.at(t)[0] for t in np.unique(t_vj_c)]))
+    return np.unique(np.concatenate([c.current_a for c in curves.points]))
+
+
+@dataclass(frozen=True)
+class ChannelWithBody:
+    """A channel with its body diode beside it: at every voltage the two currents add, at the temperature of the chip.
+
+    Each of the two follows its own curves over temperature; the sum is not straight over it.
+    The diode carries nothing below the voltage at which its curve starts.
+    """
+
+    channel: OnStateCurves
+    body: OnStateCurves
+
+    @property
+    def points(self):
+        """The curves behind it."""
+        return self.channel.points + self.body.points
+
+    @property
+    def t_vj_c(self) -> np.ndarray:
+        """Temperatures of all curves [degC]."""
+        return np.unique(np.concatenate([self.channel.t_vj_c, self.body.t_vj_c]))
+
+    def at(self, t_vj_c: float):
+        """Currents and voltages of the broken line at one temperature."""
+        i_c, i_d = (np.unique(np.concatenate([[0.0], *(c.current_a for c in curves.points)])) for curves in (self.channel, self.body))
+        v_c, v_d = on_state_voltage_v(self.channel, i_c, t_vj_c), on_state_voltage_v(self.body, i_d, t_vj_c)
+        start = v_d[0]
+        v = np.unique(np.concatenate([v_c, v_d]))
+        total = _current_at(i_c, v_c, v) + np.where(v > start, _current_at(i_d, v_d, v), 0.0)
         rising = np.concatenate([[True], np.diff(total) > 0.0])
-        total, v = total[rising], v[rising]
-        curves.append(OnStateCurve(t_vj_c=float(t), current_a=tuple(total.tolist()), voltage_v=tuple(v.tolist())))
-    return OnStateCurves(curve=tuple(curves))
+        return total[rising], v[rising]
+
+    def voltage_v(self, current_a, t_vj_c: float):
+        """Voltage at a current [A] and one temperature."""
+        i, v = self.at(t_vj_c)
+        return broken_line(i, v, np.asarray(current_a, float))
 
 
 def _current_at(current, voltage, v):

@@ -320,7 +320,7 @@ def _case(module, modulation, i_peak_a, mod_index, phi_rad, t_vj_c, fsw, v_dc_v,
 def _period_points(case, part):
     """Gauss-Legendre points of a whole period between everything that has a kink or a jump, (n, p)."""
     i, phi = case.i_peak[part, None], case.phi[part, None]
-    knots = np.unique(np.concatenate([c.current_a for curves in (*case.plan.voltages, *case.plan.energies) for c in curves.points]))
+    knots = np.unique(np.concatenate([legs.current_knots_a(curves, case.t_c) for curves in (*case.plan.voltages, *case.plan.energies)]))
     quarter = _knot_angles(i, knots)
     from_current = np.concatenate([quarter, np.pi - quarter, np.pi + quarter, 2.0 * np.pi - quarter], axis=1)
     shift = case.modulation.shift_rad(phi)
@@ -328,8 +328,16 @@ def _period_points(case, part):
     x = np.concatenate([shift + np.arange(12) * np.pi / 6, np.broadcast_to(np.arange(12) * np.pi / 6, (i.shape[0], 12))]
                        + [s * a + b for a in (first, last) for s, b in ((1, 0), (-1, np.pi), (1, np.pi), (-1, 2 * np.pi))], axis=1)
     x = np.mod(x, 2.0 * np.pi)
+    if case.modulation is Modulation.THIRD_HARMONIC_QUARTER:
+        top = np.arcsin(np.sqrt(7.0 / 12.0))  # between two of its highest points the reference only rises or only falls
+        x = np.concatenate([x, np.broadcast_to([top, np.pi - top, np.pi + top, 2 * np.pi - top], (i.shape[0], 4))], axis=1)
+    pieces = np.sort(x, axis=1)
     if case.plan.levels == 3:
-        x = np.concatenate([x, _sign_changes(case, part, np.sort(x, axis=1))], axis=1)
+        x = np.concatenate([x, _crossings(case, part, pieces, np.zeros((i.shape[0], 1)))], axis=1)
+    if case.dead > 0.0 and not case.compensated:
+        dead = case.dead * case.fsw[part, None]
+        for level in (1.0 - 2.0 * dead, 2.0 * dead - 1.0) if case.plan.levels == 2 else (dead, -dead, 1.0 - dead, dead - 1.0):
+            x = np.concatenate([x, _crossings(case, part, pieces, level)], axis=1)
     ends = np.broadcast_to([0.0, np.pi, 2.0 * np.pi], (i.shape[0], 3))
     borders = np.sort(np.concatenate([from_current, np.mod(x - phi, 2.0 * np.pi), ends], axis=1), axis=1)
     half = 0.5 * np.diff(borders, axis=1)[..., None]
@@ -337,14 +345,14 @@ def _period_points(case, part):
     return (middle + half * _FEW).reshape(i.shape[0], -1), (half * _FEW_WEIGHTS).reshape(i.shape[0], -1)
 
 
-def _sign_changes(case, part, x):
-    """Where the reference changes its sign inside the pieces between sorted angles ``x``; other pieces give their middle."""
+def _crossings(case, part, x, level):
+    """Where the reference passes a level (n, 1) inside the pieces between sorted angles ``x``; other pieces give their end."""
     low, high = x, np.concatenate([x[:, 1:], x[:, :1] + 2.0 * np.pi], axis=1)
     span = high - low
     low, high = low + 1e-9 * span, high - 1e-9 * span
 
     def positive(at):
-        return phase_reference(case.modulation, at, case.reference[part, None], case.phi[part, None]) >= 0.0
+        return phase_reference(case.modulation, at, case.reference[part, None], case.phi[part, None]) >= level
 
     begins = positive(low)
     for _ in range(50):
@@ -358,7 +366,7 @@ def _at_angles(case, part, theta):
     """Conduction and switching losses of every position, each (positions, n, angles) [W]."""
     plan = case.plan
     col = (slice(None), None)
-    i_peak, phi, fsw, f = case.i_peak[part][col], case.phi[part][col], case.fsw[part][col], case.f[part][col]
+    i_peak, phi, fsw = case.i_peak[part][col], case.phi[part][col], case.fsw[part][col]
     current = i_peak * np.sin(theta)
     size = np.abs(current)
     flow = np.where(np.sin(theta) >= 0.0, legs.FLOW_OUT, legs.FLOW_IN)
@@ -368,7 +376,13 @@ def _at_angles(case, part, theta):
     switches = np.abs(wanted) < 1.0
     if case.modulation.holds:
         switches = held_phase(case.modulation, x, phi)[0] != 0
-    dead = case.dead * fsw * switches
+    # a pulse of the switch that takes the current over never comes if it is shorter than the dead time
+    dead = case.dead * fsw
+    above = 0.5 * (1.0 + r) if plan.levels == 2 else np.where(r >= 0.0, r, 1.0 + r)
+    taking = np.where(flow == legs.FLOW_OUT, above, 1.0 - above)
+    gone = switches & (taking <= dead) & (dead > 0.0) & (not case.compensated)
+    dead = dead * switches
+    switches = switches & ~gone
     move = 0.0 if case.compensated else np.where(flow == legs.FLOW_OUT, -dead, dead)  # to the upper state of the pair
     if plan.levels == 2:
         upper = np.clip(0.5 * (1.0 + r) + move, 0.0, 1.0)
@@ -377,13 +391,13 @@ def _at_angles(case, part, theta):
         upper = np.clip(np.where(r >= 0.0, r, 1.0 + r) + move, 0.0, 1.0)
         share = {legs.P: np.where(r >= 0.0, upper, 0.0), legs.Z: np.where(r >= 0.0, 1.0 - upper, upper), legs.N: np.where(r >= 0.0, 0.0, 1.0 - upper)}
     idle = np.where(flow == legs.FLOW_OUT, share[legs.N], share[legs.P])
-    share[legs.DEAD] = np.minimum(2.0 * dead, idle)
+    share[legs.DEAD] = np.minimum(np.where(gone, taking + dead, 2.0 * dead), idle)
     share[legs.N_GATED] = share[legs.N] - share[legs.DEAD]
     share[legs.P_GATED] = share[legs.P] - share[legs.DEAD]
     conduction = np.zeros((len(plan.positions), *theta.shape))
     switching = np.zeros_like(conduction)
     for position, curve, way, where in plan.conduction:
-        v = on_state_voltage_v(plan.voltages[curve], size, case.t_c[position])
+        v = legs.voltage_v(plan.voltages[curve], size, case.t_c[position])
         conduction[position] += np.where(flow == way, share[where] * v * size, 0.0)
     rising, falling = _edges(case, part, x)
     above = r >= 0.0

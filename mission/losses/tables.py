@@ -11,10 +11,10 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from ..device import PowerModule, on_state_voltage_v, switching_energy_j
+from ..device import PowerModule, switching_energy_j
 from ..device.notes import curve_name
 from ..errors import InputError, RangeError
-from .legs import LegPlan, leg_plan
+from .legs import ChannelWithBody, LegPlan, leg_plan, voltage_v
 from .modulation import Modulation, reference_for
 from .periods import gate_factors
 
@@ -22,6 +22,8 @@ from .periods import gate_factors
 #: extrapolation is no estimate any more and a run is refused.
 CURRENT_REACH = 2.0
 CELLS = 600
+#: Corner temperatures that the march has room for.
+MOST_CORNERS = 8
 #: Longest dead time as a share of the switching period.
 DEAD_SHARE_MAX = 0.1
 
@@ -120,9 +122,12 @@ def build_tables(module: PowerModule, modulation: Modulation, *, dead_time_s: fl
     plan = leg_plan(module)
     every = plan.voltages + plan.energies
     knots = np.unique([c.t_vj_c for curves in every for c in curves.points]).astype(float)
+    if any(isinstance(c, ChannelWithBody) for c in plan.voltages):
+        # a channel with its body diode beside it is not straight between the temperatures of the data sheet
+        knots = _filled(knots, MOST_CORNERS)
     end = min(c.current_a[-1] for curves in (*module.on_state_curves().values(), *plan.energies) for c in curves.points)
     current = np.linspace(0.0, current_reach_a(module), CELLS + 1)
-    voltage = np.stack([np.stack([on_state_voltage_v(c, current, t) for t in knots], axis=1) for c in plan.voltages])
+    voltage = np.stack([np.stack([voltage_v(c, current, t) for t in knots], axis=1) for c in plan.voltages])
     energy = np.stack([np.stack([switching_energy_j(c, current, t) for t in knots], axis=1) for c in plan.energies])
     places = {id(c): p for p, c in (module.on_state_curves() | module.energy_curves()).items()}
     for curves, table in zip(every, (*voltage, *energy)):
@@ -143,6 +148,15 @@ def build_tables(module: PowerModule, modulation: Modulation, *, dead_time_s: fl
         modulation=modulation, drive=drive, current_data_end_a=float(end),
         temperature_data_c=(float(max(curves.points[0].t_vj_c for curves in every)), float(min(curves.points[-1].t_vj_c for curves in every))),
     )
+
+
+def _filled(knots, most):
+    """More corner temperatures where they lie far apart, up to ``most``."""
+    knots = knots.tolist()
+    while len(knots) < most:
+        k = int(np.argmax(np.diff(knots)))
+        knots.insert(k + 1, 0.5 * (knots[k] + knots[k + 1]))
+    return np.array(knots)
 
 
 def current_reach_a(module: PowerModule) -> float:

@@ -169,7 +169,7 @@ class RatingBench:
 
     def _rating(self, point, i_peak, why, peak):
         hot = int(np.argmax(peak))
-        return Rating(i_peak / np.sqrt(2.0), why, self.study.module.chip_names()[hot], float(peak[hot]), point)
+        return Rating(float(i_peak / np.sqrt(2.0)), why, self.study.module.chip_names()[hot], float(peak[hot]), point)
 
     def _check(self, point):
         require_range("frequency_hz", point.frequency_hz, low=0.0, high=2000.0, unit="Hz")

@@ -165,7 +165,8 @@ def run(study: Study, *, progress: Progress | None = None, keep_cycles: bool = T
     spec = study.spec
     tables = build_tables(study.module, spec.inverter.modulation, **spec.inverter.table_options())
     network = inverter_modes(study.module, spec.cooling, materials=study.materials(), relative_tolerance=spec.march.network_tolerance)
-    settings = MarchSettings(f_slow_hz=spec.march.slow_below_hz, steps_per_period=spec.march.steps_per_period)
+    settings = MarchSettings(f_slow_hz=spec.march.slow_below_hz, steps_per_period=spec.march.steps_per_period,
+                             watch_c=np.inf if study.module.ratings.t_vj_overload_c is None else study.module.ratings.t_vj_op_max_c)
     states, theta = None, np.radians(spec.march.start_angle_deg)
     known = None
     for passes in range(1, MAX_PASSES + 1):
@@ -201,8 +202,7 @@ class _Pass:
         self.ripple = RippleClasses()
         self.ledger = DamageLedger(study.modes, chips, profile.phases, missions_per_year=study.spec.lifetime.missions_per_year)
         self.cycle_map = CycleMap(study.modes, len(chips))
-        self.envelope = EnvelopeBuilder(profile.duration_s, chips, profile.phases, tables.temperature_data_c,
-                                        watch_c=study.module.ratings.t_vj_op_max_c)
+        self.envelope = EnvelopeBuilder(profile.duration_s, chips, profile.phases, tables.temperature_data_c)
         self.engine = ElectrothermalMarch(tables, network, settings, derating=study.spec.inverter.derating, on_points=self._points, on_ripple=self._ripples)
         self.i_peak_max = self.mod_index_max = self.frequency_max = self.dc_voltage_max = self.fsw_max = 0.0
         self.coolant_max, self.hot_c, self.hot_point, self.loaded_joint = -np.inf, -np.inf, None, False

@@ -215,8 +215,8 @@ BROKEN_PROFILES = [
     # impossible values
     BrokenProfile("power factor of 2", ("duty.csv, line 3, column 'cos_phi'", "value 2", "-1 to 1"), changed("0.5,0.85", "0.5,2", DIRECT_CSV), direct_duty()),
     BrokenProfile("negative frequency", ("duty.csv, line 3, column 'f'", "value -30 Hz", "0 to 5000 Hz", "not negative"), changed("30", "-30", DIRECT_CSV), direct_duty()),
-    BrokenProfile("modulation index of 3", ("duty.csv, line 4, column 'm'", "value 3", "0 to 1.1547", "overmodulation"), changed("0.8,", "3,", DIRECT_CSV), direct_duty()),
-    BrokenProfile("negative modulation index", ("duty.csv, line 4, column 'm'", "value -0.8", "0 to 1.1547"), changed("0.8,", "-0.8,", DIRECT_CSV), direct_duty()),
+    BrokenProfile("modulation index of 3", ("duty.csv, line 4, column 'm'", "value 3", "0 to 1.27324", "six-step"), changed("0.8,", "3,", DIRECT_CSV), direct_duty()),
+    BrokenProfile("negative modulation index", ("duty.csv, line 4, column 'm'", "value -0.8", "0 to 1.27324"), changed("0.8,", "-0.8,", DIRECT_CSV), direct_duty()),
     BrokenProfile("coolant of 400 degC", ("duty.csv, line 5, column 'T_in'", "value 400 degC", "-60 to 150 degC", "check the unit (degC, K)"), changed("400,41", "400,400")),
     BrokenProfile("degrees Celsius said to be kelvin", ("duty.csv, line 2, column 'T_in'", "value 40 K", "213.15 to 423.15 K"),
                   duty=with_duty(columns={"coolant": {"column": "T_in", "unit": "K"}})),
