@@ -157,17 +157,20 @@ def _verdict(document, worst, hot):
     parts = []
     for e in document["limits"]:
         unit = unit_words(e["unit"])
-        if e["what"] == "life":
+        if e["what"] == "life" and e["value"] is None and not e["met"]:
+            parts.append(f"A life of {_number(e['limit'])} years is asked for, but cannot be judged: {e['where']}.")
+        elif e["what"] == "life":
             value = "without end" if e["value"] is None else f"{life_words(e['value'])} years"
             parts.append(f"The shortest life is {value} ({e['where']}) against a target of {_number(e['limit'])} years.")
-        elif e["what"] == "highest junction temperature":
+        elif e["what"].startswith("highest junction temperature"):
             side = "below" if e["met"] else "above"
             parts.append(f"The hottest junction reaches {e['value']:.1f} {unit}, {abs(e['margin']):.1f} K {side} its limit "
                          f"({hot['chip']} at {clock_words(hot['peak_time_s'])}, {hot['peak_phase']}).")
         elif not e["met"]:
-            parts.append(f"The {e['what']} is {_number(e['value'])} {unit} against a limit of {_number(e['limit'])} {unit}.")
+            value = "not known" if e["value"] is None else f"{_number(e['value'])} {unit}".strip()
+            parts.append(f"The {e['what']} is {value} against a limit of {_number(e['limit'])} {unit}".rstrip() + ".")
     has_target = any(e["what"] == "life" for e in document["limits"])
-    if not document["models"]:
+    if not document["models"] and not has_target:
         parts.append("No failure mode is given, so nothing is said about life.")
     elif not has_target and worst:
         first = worst[0]

@@ -129,7 +129,7 @@ def test_short_rows_share_a_period():
 
 
 def test_runaway_is_said_not_marched():
-    with pytest.raises(NoStableTemperature, match=r"no stable temperature: \S+ passes 500 degC at .* \(coolant 140 degC"):
+    with pytest.raises(NoStableTemperature, match=r"no stable temperature exists: \S+ passes 500 degC at .* \(coolant 140 degC"):
         march(points(200, frequency_hz=30.0, i_peak_a=1100.0, mod_index=0.9, phi_rad=0.2), 1.0, coolant_c=140.0)
 
 
