@@ -55,6 +55,28 @@ def test_study_of_the_readme_reads_an_own_csv(tmp_path):
     assert main(["check", str(tmp_path / "study.toml")]) == 0
 
 
+def test_inverter_of_the_readme_reads(tmp_path):
+    """The section with everything in it, in the study that the README shows, on a module with data over the gate resistor."""
+    study, inverter = (next(c for c in code("toml") if words in c) for words in ("[duty.columns]", "[[inverter.schedule]]"))
+    text = re.sub(r"\[inverter\].*?(?=\n\[cooling\])", lambda _: inverter, study, flags=re.S).replace('"heron-300"', '"swift-400"')
+    (tmp_path / "study.toml").write_text(text, encoding="utf-8")
+    (tmp_path / "log.csv").write_text("t;I_mot;n;T_in;what\n0;80,5;120;30;up\n10;0;0;30;stop\n30;0;0;30;stop\n", encoding="utf-8")
+    from mission.study import load_study, run
+
+    spec = load_study(tmp_path / "study.toml").spec.inverter
+    assert len(spec.schedule) == 2 and spec.dead_time_us == 1.5 and spec.driver.power_w == 2.0
+    assert {"turn-off peak voltage", "gate power"} <= {v.what for v in run(load_study(tmp_path / "study.toml")).verdicts}
+
+
+def test_every_command_of_the_readme_is_one(capsys):
+    from mission.cli import main
+
+    for words in re.findall(r"^\| `mission (\w+)", README, re.M):
+        with pytest.raises(SystemExit) as ended:
+            main([words, "--help"])
+        assert ended.value.code == 0 and "usage: mission " + words in capsys.readouterr().out
+
+
 def test_layers_of_the_readme_make_a_module(tmp_path):
     from mission.device import load_module, to_toml
 
@@ -69,7 +91,7 @@ def test_layers_of_the_readme_make_a_module(tmp_path):
 @pytest.mark.slow
 def test_python_of_the_readme_runs(tmp_path):
     (tmp_path / "profiles").symlink_to(ROOT / "profiles")
-    done = subprocess.run([sys.executable, "-W", "error::DeprecationWarning", "-c", code("python")[0]], capture_output=True, text=True, cwd=tmp_path,
+    done = subprocess.run([sys.executable, "-W", "error::DeprecationWarning", "-c", "\n".join(code("python"))], capture_output=True, text=True, cwd=tmp_path,
                           env={**os.environ, "PYTHONPATH": str(ROOT)})
     assert done.returncode == 0, done.stderr
     assert (tmp_path / "out-hour" / "report.html").exists()
