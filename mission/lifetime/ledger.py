@@ -199,9 +199,11 @@ class DamageLedger:
             if mode.threshold_k is not None and mode.model.outside_range == "refuse":
                 # what is left out is not refused; its damage is still told
                 kept = part[0] >= mode.threshold_k
-                mode.model.cycles_to_failure(*(v[kept] for v in part), diode=diode[kept])
+                self._refuse_outside(mode, tuple(v[kept] for v in part), chip[kept], table.start_s[at[kept]])
                 n_f, outside = mode.model.never_refusing().cycles_to_failure(*part, diode=diode)
             else:
+                if mode.model.outside_range == "refuse":
+                    self._refuse_outside(mode, part, chip, table.start_s[at])
                 n_f, outside = mode.model.cycles_to_failure(*part, diode=diode)
             each = np.where(part[0] < NOISE_K, 0.0, 1.0 / n_f)
             if mode.threshold_k is not None:
@@ -228,6 +230,18 @@ class DamageLedger:
                 if each[j] > self._worst[number, chip[j], 0]:
                     self._worst[number, chip[j]] = (each[j], part[0][j], part[2][j], part[3][j], part[4][j], table.start_s[at[j]], table.phase_id[at[j]])
         return out
+
+    def _refuse_outside(self, mode, part, chip, start_s):
+        """Say which chip does what the model was not tested for, and when."""
+        _, outside = mode.model.never_refusing().cycles_to_failure(*part, diode=self.diodes[chip])
+        if not outside.any():
+            return
+        k = int(np.flatnonzero(outside)[0])
+        try:
+            mode.model.cycles_to_failure(*(v[k:k + 1] for v in part), diode=self.diodes[chip[k:k + 1]])
+        except RangeError as err:
+            where = f"failure mode '{mode.name}', {self.chips[chip[k]]}, cycle that begins at {start_s[k]:.6g} s"
+            raise RangeError(where, err.found, err.allowed, err.advice) from None
 
     def _check(self, table):
         """Refuse what would be booked in a wrong place, or vanish."""

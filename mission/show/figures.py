@@ -44,13 +44,13 @@ _COLUMNS = 720
 _LANES = 16
 
 
-def _styled(draw):
+def styled(draw):
     """Draw in our style, whatever style the caller has set, and leave the caller's as it was."""
 
     @functools.wraps(draw)
-    def inner(result) -> Figure:
+    def inner(*args, **named) -> Figure:
         with style.context(str(STYLE_FILE)):
-            figure = draw(result)
+            figure = draw(*args, **named)
             _fix_ticks(figure)
         return figure
 
@@ -204,7 +204,7 @@ def _kinds(result):
 
 
 # --- 1: temperatures ----------------------------------------------------------
-@_styled
+@styled
 def temperature_figure(result) -> Figure:
     """Junction, case and coolant over the mission, with the phases of the duty below.
 
@@ -302,7 +302,7 @@ def _draw_lanes(ax, history, starts, edges, lanes, here, n_lanes, peak_phase):
 
 
 # --- 2: the hot stretch ---------------------------------------------------------
-@_styled
+@styled
 def hot_stretch_figure(result) -> Figure:
     """All chips around the highest temperature of the mission."""
     history = result.history
@@ -358,7 +358,7 @@ def _class_shares(result, which, mode, row):
     return count, damage / total if total > 0.0 else np.zeros_like(damage)
 
 
-@_styled
+@styled
 def cycle_figure(result) -> Figure:
     """Cycles by swing and mean temperature with their damage, for the worst chip of the two failure modes with the shortest lives."""
     from ..study.cyclemap import MEAN_EDGE_C, RANGE_EDGE_K
@@ -454,7 +454,7 @@ def _tested_outline(ax, tested):
 
 
 # --- 4: damage by phase -------------------------------------------------------------
-@_styled
+@styled
 def damage_phase_figure(result) -> Figure:
     """Share of time and share of damage of every phase; the worst chip for each failure mode."""
     labels = ("share, %", "phase of the duty")
@@ -525,7 +525,7 @@ def half_damage_k(edges, damage) -> float | None:
     return float(edges[k - 1] + (0.5 - total[k - 1]) / (total[k] - total[k - 1]) * (edges[k] - edges[k - 1]))
 
 
-@_styled
+@styled
 def damage_swing_figure(result) -> Figure:
     """Which swings do the damage of the worst chip of the two most pressing failure modes: by class, and added up from small to large."""
     labels = ("swing of the cycle, K", "share, %")
@@ -590,7 +590,7 @@ def _tested_swings(axes, tested):
 
 
 # --- 6: lives ---------------------------------------------------------------------------
-@_styled
+@styled
 def life_figure(result) -> Figure:
     """Life of every chip under every failure mode, on a logarithmic axis.
 
@@ -651,7 +651,7 @@ def life_figure(result) -> Figure:
 
 
 # --- 7: losses -----------------------------------------------------------------------------
-@_styled
+@styled
 def loss_figure(result) -> Figure:
     """Mean loss of every chip over the mission, with its energy."""
     history = result.history

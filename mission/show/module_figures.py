@@ -6,14 +6,12 @@ of each line; drawn lines go through the points of the data sheet, dotted ones a
 
 from __future__ import annotations
 
-import functools
 import math
 import unicodedata
 from dataclasses import dataclass
 from pathlib import Path
 
 import numpy as np
-from matplotlib import style
 from matplotlib.colors import to_hex, to_rgb
 from matplotlib.figure import Figure
 from matplotlib.layout_engine import ConstrainedLayoutEngine
@@ -32,7 +30,7 @@ from ..device import (
 )
 from ..errors import RangeError
 from ..losses import Modulation, leg_losses_w
-from .figures import BLUE, GREY, INK, LIGHT_BLUE, LIGHT_RED, LIGHT_YELLOW, PAIR_WORDS, PAPER, RED, STYLE_FILE, YELLOW, _fix_ticks, _spread, plain
+from .figures import BLUE, GREY, INK, LIGHT_BLUE, LIGHT_RED, LIGHT_YELLOW, PAIR_WORDS, PAPER, RED, YELLOW, _spread, plain, styled
 from .text import number
 
 #: Marks of the temperatures from cold on; the hottest is filled.
@@ -45,17 +43,6 @@ _DRAWN = 240
 _SMALL = 7.5
 #: Bands that never reach this share of the losses are left out of the stack's names.
 _SLIGHT = 5e-4
-
-
-def _styled(draw):
-    @functools.wraps(draw)
-    def inner(*args, **named) -> Figure:
-        with style.context(str(STYLE_FILE)):
-            figure = draw(*args, **named)
-            _fix_ticks(figure)
-        return figure
-
-    return inner
 
 
 def _layout():
@@ -214,17 +201,18 @@ def _point_note(ax, curves, point, lines, size_in):
         ax.text(x, y, words, transform=ax.transAxes, ha=ha, va=va, fontsize=_SMALL, bbox=box)
         return
     anchor = (x - (0.5 * wide if ha == "right" else -0.5 * wide), y + (high if va == "bottom" else -high))
-    ax.annotate("", point, xytext=anchor, textcoords="axes fraction", arrowprops={"arrowstyle": "-", "color": INK, "lw": 0.7, "shrinkA": 1.0, "shrinkB": 4.0})
+    ax.annotate("", point, xytext=anchor, textcoords="axes fraction",
+                arrowprops={"arrowstyle": "-", "color": INK, "lw": 0.7, "shrinkA": 1.0, "shrinkB": 4.0})
     ax.text(x, y, words, transform=ax.transAxes, ha=ha, va=va, fontsize=_SMALL, bbox=box)
     ax.plot(*[[v] for v in point], ls="", marker="o", ms=6.5, mfc="none", mec=INK, mew=1.1, zorder=5)
 
 
-def _curve_lines(ax, curves, read, scale, end_a, looks, marks=True):
+def _curve_lines(ax, curves, read, scale, end_a, looks):
     """Draw curves through their points, dotted where extended; returns what was drawn as (x, y) with the ends."""
     drawn = []
     for one, look in zip(curves.points, looks, strict=True):
         first, last = one.current_a[0], one.current_a[-1]
-        ax.plot(one.current_a, scale * np.array(one.values), lw=1.3, zorder=3, clip_on=False, **(look if marks else {"color": look["color"]}))
+        ax.plot(one.current_a, scale * np.array(one.values), lw=1.3, zorder=3, clip_on=False, **look)
         for a, b in ((0.0, first), (last, end_a)):
             if b > a:
                 x = np.linspace(a, b, _DRAWN)
@@ -253,7 +241,10 @@ def _extended(module, every):
 def _key(module, every, *more) -> str:
     """What the kinds of line mean, as far as there are any."""
     dotted = "dotted: extended in a straight line beyond the points" if _extended(module, every) else ""
-    return "; ".join(w for w in ("marks: points of the data sheet", dotted, *more) if w)
+    marks = "marks: points of the data sheet"
+    if not all(c.curve for c in every.values()):
+        marks += ", ends of the lines where only straight-line parameters are given"
+    return "; ".join(w for w in (marks, dotted, *more) if w)
 
 
 def _headline(figure, *parts):
@@ -265,7 +256,7 @@ def _colours(part):
 
 
 # --- 1: on-state ------------------------------------------------------------------------
-@_styled
+@styled
 def characteristic_figure(module: PowerModule) -> Figure:
     """On-state voltage over current, one panel for each set of curves, with the crossing of cold and hot.
 
@@ -296,7 +287,7 @@ def characteristic_figure(module: PowerModule) -> Figure:
 def _on_state_panel(ax, module, place, curves, size_in):
     end = _end_a(module, curves)
     looks = _looks(len(curves.points), *_colours(place.split(".")[0]))
-    drawn = _curve_lines(ax, curves, on_state_voltage_v, 1.0, end, looks, marks=bool(curves.curve))
+    drawn = _curve_lines(ax, curves, on_state_voltage_v, 1.0, end, looks)
     lines = []
     if curves.curve:
         shades = dict(zip(curves.t_vj_c, looks, strict=True))
@@ -318,7 +309,7 @@ def _on_state_panel(ax, module, place, curves, size_in):
 
 
 # --- 2: energies ---------------------------------------------------------------------------
-@_styled
+@styled
 def energy_figure(module: PowerModule) -> Figure:
     """Switching energies over current by temperature, and over the gate resistor where the file says how they depend on it.
 
@@ -462,7 +453,7 @@ class _Point:
         return loss_bands(module, leg_losses_w(module, modulation, **given))
 
 
-@_styled
+@styled
 def loss_split_figure(module: PowerModule, *, modulation: Modulation, dc_voltage_v: float, switching_frequency_hz: float,
                       current_a_rms: float | None = None, mod_index: float = 0.8, power_factor: float = 0.85, t_vj_c: float | None = None,
                       dead_time_s: float = 0.0, dead_time_compensated: bool = False, r_gate_on_ohm: float | None = None,
@@ -530,8 +521,8 @@ def loss_split_figure(module: PowerModule, *, modulation: Modulation, dc_voltage
     dead = f", dead time {1e6 * dead_time_s:g} µs{' compensated' if dead_time_compensated else ''}" if dead_time_s else ""
     gate = "".join(f", {w} gate resistor {r:g} Ω" for w, r in (("turn-on", r_gate_on_ohm), ("turn-off", r_gate_off_ohm)) if r is not None)
     _headline(figure, f"{plain(module.name, 60, 'module')}: losses of one leg by chip and cause; hatched: switching",
-              f"{point.modulation.value}, {i_words} rms, {f_words}, link {dc_voltage_v:g} V, modulation index {mod_index:g}, power factor {power_factor:g}, "
-              f"junctions {t:g} °C{dead}{gate}")
+              f"{point.modulation.value}, {i_words} rms, {f_words}, link {dc_voltage_v:g} V, modulation index {mod_index:g}, "
+              f"power factor {power_factor:g}, junctions {t:g} °C{dead}{gate}")
     return figure
 
 
@@ -542,10 +533,12 @@ def _checked_point(module, modulation, dc_voltage_v, switching_frequency_hz, cur
     if v >= blocks:
         raise RangeError("dc_voltage_v", f"{v:g} V", f"below {blocks:g} V, what {module.name} blocks", "lower it, or choose another module")
     fsw = float(require_range("switching_frequency_hz", switching_frequency_hz, low=0.0, unit="Hz"))
-    current = module.ratings.i_nominal_a / math.sqrt(2.0) if current_a_rms is None else float(require_range("current_a_rms", current_a_rms, low=0.0, unit="A"))
+    current = module.ratings.i_nominal_a / math.sqrt(2.0) if current_a_rms is None else current_a_rms
+    current = float(require_range("current_a_rms", current, low=0.0, unit="A"))
     require_range("mod_index", mod_index, low=0.0, high=modulation.mod_index_max * (1.0 + 1e-9))
     cos_phi = float(require_range("power_factor", power_factor, low=-1.0, high=1.0))
-    t = min(125.0, *(float(c.t_vj_c[-1]) for c in module.on_state_curves().values())) if t_vj_c is None else float(require_range("t_vj_c", t_vj_c, unit="degC"))
+    hottest = min(float(c.t_vj_c[-1]) for c in module.on_state_curves().values())
+    t = float(require_range("t_vj_c", min(125.0, hottest) if t_vj_c is None else t_vj_c, unit="degC"))
     return _Point(modulation, current, fsw, {"mod_index": mod_index, "phi_rad": math.acos(cos_phi), "t_vj_c": t, "v_dc_v": v, **more})
 
 
@@ -596,8 +589,8 @@ def _modulation_bars(ax, module, point, mod_index):
     ends = []
     for y, modulation in enumerate(Modulation):
         if mod_index > modulation.mod_index_max * (1.0 + 1e-9):
-            ax.annotate(f"modulation index {mod_index:g} is beyond its linear range", (0.0, y), xytext=(4, 0), textcoords="offset points", va="center",
-                        fontsize=_SMALL, color=GREY, style="italic")
+            ax.annotate(f"modulation index {mod_index:g} is beyond its linear range", (0.0, y), xytext=(4, 0), textcoords="offset points",
+                        va="center", fontsize=_SMALL, color=GREY, style="italic")
             continue
         bands = point.bands(module, modulation=modulation)
         whole = float(sum(b.leg_w[0] for b in bands))
@@ -638,7 +631,8 @@ def module_figures(module: PowerModule, *, modulation: Modulation, dc_voltage_v:
     return {
         "on-state": characteristic_figure(module),
         "energies": energy_figure(module),
-        "loss-split": loss_split_figure(module, modulation=modulation, dc_voltage_v=dc_voltage_v, switching_frequency_hz=switching_frequency_hz, **more),
+        "loss-split": loss_split_figure(module, modulation=modulation, dc_voltage_v=dc_voltage_v,
+                                        switching_frequency_hz=switching_frequency_hz, **more),
     }
 
 
@@ -652,13 +646,15 @@ def module_captions(module: PowerModule) -> dict[str, str]:
     hot = float(curves.t_vj_c[-1])
     resistors = any(c.gate_resistor is not None for c in module.energy_curves().values())
     return {
-        "on-state": "On-state voltage over current, one line for each junction temperature with the points of the data sheet as marks; dotted lines are extensions. "
-                    + ("Thin broken lines are the straight-line parameters. " if beside else "") + ". ".join(c[0].upper() + c[1:] for c in crossings) + ".",
-        "energies": "Energy of one switching event over current, one line for each junction temperature, at the voltage and gate resistor in the titles. "
-                    f"At {i:g} A and {hot:g} °C turning on costs {number(1e3 * float(switching_energy_j(curves, i, hot)), 3)} mJ."
+        "on-state": "On-state voltage over current, one line for each junction temperature with the points of the data sheet as marks; "
+                    "dotted lines are extensions. " + ("Thin broken lines are the straight-line parameters. " if beside else "")
+                    + ". ".join(c[0].upper() + c[1:] for c in crossings) + ".",
+        "energies": "Energy of one switching event over current, one line for each junction temperature, at the voltage and gate resistor "
+                    f"in the titles. At {i:g} A and {hot:g} °C turning on costs {number(1e3 * float(switching_energy_j(curves, i, hot)), 3)} mJ."
                     + (" The lower panels show how energies follow the external gate resistor, with the one in use marked." if resistors else ""),
-        "loss-split": "Losses of one leg by kind of chip and by cause, hatched for switching: over the phase current, over the switching frequency, and for every "
-                      "modulation as half a leg; where a modulation loads upper and lower chips differently they are shown apart.",
+        "loss-split": "Losses of one leg by kind of chip and by cause, hatched for switching: over the phase current, over the switching "
+                      "frequency, and for every modulation as half a leg; where a modulation loads upper and lower chips differently they are "
+                      "shown apart.",
     }
 
 
@@ -707,7 +703,8 @@ def module_text(module: PowerModule) -> str:
              f"  ratings   {r.v_ces_v:g} V, {r.i_nominal_a:g} A nominal, {r.i_peak_repetitive_a:g} A repetitive peak, "
              f"junction {r.t_vj_op_min_c:g} to {r.t_vj_op_max_c:g} degC"]
     if r.t_vj_overload_c is not None:
-        lines.append(f"            overload to {r.t_vj_overload_c:g} degC for at most {r.overload_longest_s:g} s, {100.0 * r.overload_share:g} % of the time")
+        share = f"{100.0 * r.overload_share:g} % of the time"
+        lines.append(f"            overload to {r.t_vj_overload_c:g} degC for at most {r.overload_longest_s:g} s, {share}")
     lines += ["", *_on_state_text(module), "", *_line_text(module), "", *_energy_text(module), "", *_gate_text(module), "", *_thermal_text(module)]
     lines += ["", "  to know:", *(f"  - {_line(n, 400)}" for n in module.notes or ("nothing stands out in the data",))]
     return "\n".join(lines)

@@ -2,30 +2,17 @@
 
 from __future__ import annotations
 
-import functools
 
 import numpy as np
-from matplotlib import style
 from matplotlib.figure import Figure
 from matplotlib.ticker import FuncFormatter, LogLocator, MaxNLocator
 
-from .figures import BLUE, GREY, INK, LIGHT_BLUE, LIGHT_RED, PAPER, RED, STYLE_FILE, _fix_ticks, plain
+from .figures import BLUE, GREY, INK, LIGHT_BLUE, LIGHT_RED, PAPER, RED, plain, styled
 from .tables import BEYOND_YEARS, life_words
 from .text import number
 
 
-def _styled(draw):
-    @functools.wraps(draw)
-    def inner(*args, **named) -> Figure:
-        with style.context(str(STYLE_FILE)):
-            figure = draw(*args, **named)
-            _fix_ticks(figure)
-        return figure
-
-    return inner
-
-
-@_styled
+@styled
 def rating_figure(over_switching, over_output, *, title: str) -> Figure:
     """Largest current over switching frequency and over output frequency, down to standstill.
 
@@ -86,7 +73,7 @@ def _current_line(ax, x, ratings):
                     ha="left" if k == 0 else "right", va="bottom", fontsize=8, color=BLUE)
 
 
-@_styled
+@styled
 def comparison_figure(comparison) -> Figure:
     """Energy, highest temperature and shortest life of each side of a comparison."""
     sides = comparison.sides

@@ -9,7 +9,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from ..cycles import CycleCounter, CycleTable, RippleClasses
-from ..errors import MissionError
+from ..errors import InputError, MissionError
 from ..history import ElectrothermalMarch, EnvelopeBuilder, HeldPoint, JunctionHistory, MarchSettings
 from ..lifetime import DamageLedger
 from ..losses import LossTables, build_tables
@@ -221,7 +221,11 @@ class _Pass:
         self.ripple.add(table)
 
     def _account(self, table):
-        self.cycle_map.add(table, self.ledger.add(table))
+        try:
+            damage = self.ledger.add(table)
+        except InputError as err:
+            raise err.at(self.study.source) from None
+        self.cycle_map.add(table, damage)
 
     def _take(self, table):
         self._account(table)

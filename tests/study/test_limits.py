@@ -164,6 +164,25 @@ def test_schedules_lower_the_switching_frequency(tmp_path):
             with_schedule("bad", bad)
 
 
+def test_a_refused_cycle_is_named_with_chip_and_time(tmp_path):
+    modes = [{"name": "wires", "acts_on": "junction", "model": "lesit-1997-refit", "options": {"outside_range": "refuse"}}]
+    one = study(tmp_path, lifetime={"missions_per_year": 10, "failure_mode": modes})
+    with pytest.raises(InputError, match=r"study.toml: failure mode 'wires', [SD]-[abc]-(up|lo), cycle that begins at .* s: found a cycle with range_k"):
+        mission.run(one)
+
+
+def test_own_resistances_under_every_chip_cannot_meet_the_losses_at_once(tmp_path):
+    own = {"per": "switch-and-diode", "r_th_switch_k_per_w": 0.02, "r_th_diode_k_per_w": 0.03}
+    heron = load_module("heron-300")
+    module = heron.model_validate({**heron.model_dump(), "case_to_sink": own})
+    write(tmp_path, {"duty.csv": STEADY})
+    save_module(module, tmp_path / "module.toml")
+    cooling = {"kind": "fixed", "r_th_k_per_w": 0.02, "coolant_c": 40, "sink_sees": "chip-losses"}
+    write(tmp_path, {"study.toml": toml_text(direct_study(module={"file": "module.toml"}, cooling=cooling))})
+    with pytest.raises(InputError, match="would show the whole ripple"):
+        mission.run(mission.load_study(tmp_path / "study.toml"))
+
+
 @pytest.mark.parametrize(("change", "words"), [
     ({"overmodulation": True, "modulation": "clamp-30"}, "false for modulations that hold a phase"),
     ({"dead_time_us": 40.0}, "a tenth of the switching period"),
