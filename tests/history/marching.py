@@ -51,7 +51,7 @@ class Marched:
 
 def march(op: OperatingPoints, dt_s, *, module="heron-300", modulation="space-vector", sink="foster", coolant_c=COOLANT_C, theta_rad=0.0,
           blocks=None, **settings) -> Marched:
-    turning = {k: [] for k in range(24)}
+    turning = {k: [] for k in range(60)}
     ripple = []
     table = tables(module, modulation)
     engine = ElectrothermalMarch(
