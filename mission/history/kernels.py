@@ -612,10 +612,11 @@ def close_window(now, op, window, pair, pair_time, pair_ripple,
         rip[r, i, 0] = pair_ripple[i]
         rip[r, i, 1] = 0.5 * (window[0, i] + window[2, i])
         rip[r, i, 2] = max(cycles - 1.0, 0.0)
-    # one clock for all chips: the window's borders stand for the two points
-    pair_time[0] = now[WINDOW_START]
-    pair_time[1] = now[TIME]
-    feed(0, 2, pair, pair_time, half, pair_ripple, phase, last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
+    # every chip has its own times of lowest and highest mean
+    for i in range(pair.shape[1]):
+        pair_time[0] = min(window[1, i], window[3, i])
+        pair_time[1] = max(window[1, i], window[3, i])
+        feed(i, 2, pair[:, i:i + 1], pair_time, half, pair_ripple[i:i + 1], phase, last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
     rip_row[r, 0] = half
     rip_row[r, 1] = now[WINDOW_START]
     rip_row[r, 2] = now[TIME]
