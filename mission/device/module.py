@@ -704,6 +704,9 @@ class PowerModule(FileModel):
                     f"{'no' if self.one_chip else 'a'} section {name}.thermal with kind = '{self.kind}'",
                     "its heat arises in the switch's chip: remove the section" if self.one_chip else "enter the branches of the diode",
                 )
+            if self.one_chip and diode.parallel is not None:
+                raise RangeError(f"{name}.parallel", f"a section {name}.parallel", f"no such section with kind = '{self.kind}'",
+                                 "switch and diode are one chip: give the spread under switch.parallel")
             if diode.recovery is None and self.kind != "igbt-schottky":
                 raise RangeError(
                     f"{name}.recovery",

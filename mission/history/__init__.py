@@ -2,6 +2,7 @@
 
 from .envelope import EnvelopeBuilder, JunctionHistory
 from .march import ElectrothermalMarch, MarchSettings, PointBlock, RippleBlock, RowEnvelope
-from .steady import HeldPoint, SteadyState
+from .steady import HeldPoint, SteadyState, worst_standstill_rad
 
-__all__ = ["ElectrothermalMarch", "EnvelopeBuilder", "HeldPoint", "JunctionHistory", "MarchSettings", "PointBlock", "RippleBlock", "RowEnvelope", "SteadyState"]
+__all__ = ["ElectrothermalMarch", "EnvelopeBuilder", "HeldPoint", "JunctionHistory", "MarchSettings", "PointBlock", "RippleBlock", "RowEnvelope", "SteadyState",
+           "worst_standstill_rad"]

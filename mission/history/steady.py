@@ -50,8 +50,7 @@ class HeldPoint:
     i_peak_a, mod_index, phi_rad, frequency_hz, direction, switching_frequency_hz, dc_voltage_v : float
         As in :class:`mission.machine.OperatingPoints`.
     theta_rad : float
-        Angle of the current of phase a at standstill [rad]; by default phase a stands at its peak, which
-        is the worst there is.
+        Angle of the current of phase a at standstill [rad]; see :func:`worst_standstill_rad`.
     """
 
     def __init__(self, tables: LossTables, network: ReducedNetwork, *, i_peak_a, mod_index, phi_rad, frequency_hz, switching_frequency_hz, dc_voltage_v,
@@ -74,43 +73,34 @@ class HeldPoint:
         return np.maximum(self._corner_w[np.arange(len(t_vj_c)), self._piece(t_vj_c)] + self._slopes(t_vj_c) * (t_vj_c - self.knot_c[self._piece(t_vj_c)]), 0.0)
 
     def loop_gain(self, t_vj_c) -> float:
-        """Loop gain with the chips at given temperatures, shape (n,)."""
-        return float(np.abs(np.linalg.eigvals(self.r_k_per_w * self._slopes(np.asarray(t_vj_c, float)))).max())
+        """Loop gain with the chips at given temperatures, shape (n,); negative where losses fall with temperature."""
+        return float(np.linalg.eigvals(self.r_k_per_w * self._slopes(np.asarray(t_vj_c, float))).real.max())
 
     def settle(self, coolant_c: float) -> SteadyState:
         """Temperatures that the point settles at, coming from the coolant's.
 
         Notes
         -----
-        Newton steps solve each straight piece exactly; where they fail, plain repetition
-        decides whether the temperatures run away.
+        Newton steps solve each straight piece exactly. Where the gain is above one the temperatures
+        follow the losses upwards, until a flatter piece or the end.
         """
         n = self.r_k_per_w.shape[0]
         t = np.full(n, float(coolant_c))
-        for _ in range(60):
-            want = coolant_c + self.r_k_per_w @ self.loss_w(t)
-            step = want - t
-            if np.abs(step).max() < 1e-9 * max(1.0, np.abs(t).max()):
+        gain, settled = np.inf, False
+        for _ in range(500):
+            gap = coolant_c + self.r_k_per_w @ self.loss_w(t) - t
+            gain = self.loop_gain(t)
+            settled = bool(np.abs(gap).max() < 1e-8 * max(1.0, np.abs(t).max()))
+            if settled or not t.max() < BEYOND_C:
                 break
-            if self.loop_gain(t) < 1.0:
-                # inside one piece this is the exact answer
-                step = np.linalg.solve(np.eye(n) - self.r_k_per_w * self._slopes(t), step)
-                # do not fly over a corner: a piece further on may be steeper
-                limit = self._to_next_corner(t, step)
-                step = step * limit
+            if gain < 1.0:
+                # inside one straight piece this is the exact answer; a step ends at the first corner on its way
+                step = np.linalg.solve(np.eye(n) - self.r_k_per_w * self._slopes(t), gap)
+                step = step * self._to_next_corner(t, step)
+            else:
+                step = gap
             t = t + step
-            if not t.max() < BEYOND_C:
-                break
-        if not t.max() < BEYOND_C:
-            return SteadyState(False, np.full(n, np.nan), np.full(n, np.nan), self.loop_gain(np.full(n, BEYOND_C)))
-        for _ in range(20000):
-            new = coolant_c + self.r_k_per_w @ self.loss_w(t)
-            done = np.abs(new - t).max() < 1e-7
-            t = new
-            if done or not t.max() < BEYOND_C:
-                break
-        gain = self.loop_gain(t) if t.max() < BEYOND_C else np.inf
-        if gain >= 1.0:
+        if not settled or gain >= 1.0 or not t.max() < BEYOND_C:
             return SteadyState(False, np.full(n, np.nan), np.full(n, np.nan), self.loop_gain(np.full(n, BEYOND_C)))
         return SteadyState(True, t, self.loss_w(t), gain)
 
@@ -147,9 +137,44 @@ class HeldPoint:
 
     def _to_next_corner(self, t, step):
         """Share of a step that brings the first chip to its next corner, at most 1."""
-        up = np.searchsorted(self.knot_c, t, side="right")
         share = 1.0
         for i in range(t.size):
-            if step[i] > 0.0 and up[i] < self.knot_c.size:
-                share = min(share, (self.knot_c[up[i]] - t[i] + 1e-9) / step[i])
-        return max(share, 1e-3)
+            # the first and the last corner end no piece: beyond them the line goes on
+            inner = self.knot_c[1:-1]
+            ahead = inner[inner > t[i]] - t[i] if step[i] > 0.0 else t[i] - inner[inner < t[i]][::-1]
+            if ahead.size and abs(step[i]) > ahead[0] + 1e-9:
+                share = min(share, (ahead[0] + 1e-9) / abs(step[i]))
+        return max(share, 1e-6)
+
+
+def worst_standstill_rad(tables: LossTables, network: ReducedNetwork, *, t_vj_c: float, **point) -> float:
+    """Angle of the current of phase a at which a standstill heats its hottest chip most.
+
+    Parameters
+    ----------
+    tables : LossTables
+    network : ReducedNetwork
+    t_vj_c : float
+        Temperature at which the losses are weighed, e.g. the junction limit [degC].
+    **point
+        As for :class:`HeldPoint`, without ``theta_rad``.
+
+    Returns
+    -------
+    float
+        [rad]. Every three degrees are tried, and both sides of every angle where a held phase changes: which phase
+        is held decides as much as the peak of the current.
+    """
+    angles = np.radians(np.arange(0.0, 360.0, 3.0))
+    jumps = tables.jump_angles_rad(**point)
+    third = 2.0 * np.pi / 3.0
+    beside = np.concatenate([jumps + side + third * leg for side in (-1e-6, 1e-6) for leg in range(3)]) if jumps.size else jumps
+    angles = np.concatenate([angles, np.mod(beside, 2.0 * np.pi)])
+    corner = np.array([tables.corner_losses_w(theta, **point) for theta in np.concatenate([angles - third * leg for leg in range(3)])])
+    knot = tables.knot_c
+    k = int(np.clip(np.searchsorted(knot, t_vj_c, side="right") - 1, 0, max(knot.size - 2, 0)))
+    at = corner[..., k] + (t_vj_c - knot[k]) / (knot[k + 1] - knot[k]) * (corner[..., k + 1] - corner[..., k]) if knot.size > 1 else corner[..., 0]
+    by_leg = np.maximum(at, 0.0).reshape(3, angles.size, -1)
+    chips = np.arange(network.n_chips)
+    loss = by_leg[(chips % 6) // 2, :, 2 * (chips // 6) + chips % 2]  # (chips, angles)
+    return float(angles[np.argmax((network.r_th_k_per_w() @ loss).max(axis=0))])

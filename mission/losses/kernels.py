@@ -123,7 +123,9 @@ def add_losses(theta, weight, point, drive, conduction, switching, i_step, volta
     size = point[PEAK] * abs(sin_t)
     x = theta + point[PHI]
     r, held = reference_at(int(drive[CODE]), x, point[SIZE], point[SHIFT])
-    active = not held and abs(r) < 1.0
+    # at the very edge of the linear range the peak still switches; clipped stretches do not, nor a three-level leg at zero
+    edge = 1.0 if point[CLIP_FIRST] < _HALF else 1.0 + 1e-9
+    active = not held and abs(r) <= edge and (drive[LEVELS] == 2.0 or r != 0.0)
     r = min(max(r, -1.0), 1.0)
     dead = drive[DEAD_S] * point[FSW] if active else 0.0
     both_off_for = 2.0 * dead

@@ -373,9 +373,12 @@ def _at_angles(case, part, theta):
     x = theta + phi
     wanted = phase_reference(case.modulation, x, case.reference[part][col], phi)
     r = np.clip(wanted, -1.0, 1.0)
-    switches = np.abs(wanted) < 1.0
+    # at the very edge of the linear range the peak still switches; clipped stretches do not, nor a three-level leg at zero
+    switches = np.abs(wanted) <= np.where(case.clip_first[part][col] < np.pi / 2, 1.0, 1.0 + 1e-9)
     if case.modulation.holds:
         switches = held_phase(case.modulation, x, phi)[0] != 0
+    if plan.levels == 3:
+        switches = switches & (r != 0.0)
     # a pulse of the switch that takes the current over never comes if it is shorter than the dead time
     dead = case.dead * fsw
     above = 0.5 * (1.0 + r) if plan.levels == 2 else np.where(r >= 0.0, r, 1.0 + r)

@@ -21,7 +21,8 @@ from .periods import gate_factors
 #: Table range over the end of the data-sheet curves. Beyond that a straight-line
 #: extrapolation is no estimate any more and a run is refused.
 CURRENT_REACH = 2.0
-CELLS = 600
+#: Table currents are at most this share of the nominal current apart.
+STEP_SHARE = 1.0 / 150.0
 #: Corner temperatures that the march has room for.
 MOST_CORNERS = 8
 #: Longest dead time as a share of the switching period.
@@ -92,6 +93,12 @@ class LossTables:
                              np.empty_like(out), np.empty(kernels.MOST_BORDERS), out)
         return out
 
+    def jump_angles_rad(self, **point) -> np.ndarray:
+        """Angles of the current, within a turn, where a loss of the leg jumps; arguments as for :meth:`corner_means_w` [rad]."""
+        kernels, place, _ = self._point(**{"direction": 1.0, **point})
+        border = np.empty(kernels.MOST_BORDERS)
+        return np.sort(border[:kernels.jumps(place, self.drive, border)])
+
     def corner_losses_w(self, theta_rad, *, i_peak_a, mod_index, phi_rad, frequency_hz, switching_frequency_hz, dc_voltage_v, direction=1.0) -> np.ndarray:
         """Losses of every position of a leg at one angle of its current, at the corner temperatures, shape (positions, k) [W]."""
         kernels, point, out = self._point(i_peak_a, mod_index, phi_rad, frequency_hz, switching_frequency_hz, dc_voltage_v, direction)
@@ -126,7 +133,8 @@ def build_tables(module: PowerModule, modulation: Modulation, *, dead_time_s: fl
         # a channel with its body diode beside it is not straight between the temperatures of the data sheet
         knots = _filled(knots, MOST_CORNERS)
     end = min(c.current_a[-1] for curves in (*module.on_state_curves().values(), *plan.energies) for c in curves.points)
-    current = np.linspace(0.0, current_reach_a(module), CELLS + 1)
+    reach = current_reach_a(module)
+    current = np.linspace(0.0, reach, max(600, int(np.ceil(reach / (STEP_SHARE * module.ratings.i_nominal_a)))) + 1)
     voltage = np.stack([np.stack([voltage_v(c, current, t) for t in knots], axis=1) for c in plan.voltages])
     energy = np.stack([np.stack([switching_energy_j(c, current, t) for t in knots], axis=1) for c in plan.energies])
     places = {id(c): p for p, c in (module.on_state_curves() | module.energy_curves()).items()}
@@ -160,6 +168,7 @@ def _filled(knots, most):
 
 
 def current_reach_a(module: PowerModule) -> float:
-    """Largest peak current that a run accepts: twice the end of the longest curve [A]."""
+    """Largest peak current that a run accepts: twice the end of the longest curve, or of five times the peak rating if that is less [A]."""
     every = (*module.on_state_curves().values(), *module.energy_curves().values())
-    return CURRENT_REACH * max(c.current_a[-1] for curves in every for c in curves.points)
+    longest = max(c.current_a[-1] for curves in every for c in curves.points)
+    return CURRENT_REACH * min(longest, 5.0 * module.ratings.i_peak_repetitive_a)

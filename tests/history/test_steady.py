@@ -39,7 +39,7 @@ def test_one_slope_has_a_closed_form(p_25, gain, coolant):
     state = held([25.0, 125.0], [p_25, p_25 + 100.0 * slope]).settle(coolant)
     assert state.exists
     np.testing.assert_allclose(state.t_vj_c, want, rtol=1e-6)
-    assert state.loop_gain == pytest.approx(abs(gain), abs=1e-9)
+    assert state.loop_gain == pytest.approx(gain if gain > 0.0 else gain * OWN / R, abs=1e-9)
 
 
 def test_gain_above_one_has_no_steady_state():
