@@ -85,7 +85,8 @@ def _parser():
     side.set_defaults(action=_compare)
     rating = commands.add_parser("rating", help="largest current of a study's module on its cooling",
                                  description="Largest phase current that the module carries for ever: over switching frequency, and over output "
-                                             "frequency down to standstill. Takes module, modulation, cooling and limits from the study, not its duty.")
+                                             "frequency down to standstill at its worst angle. Takes module, inverter, cooling and limits from the study, not its "
+                                             "duty; a derating by junction temperature is left out.")
     rating.add_argument("study", type=Path, metavar="STUDY.toml")
     rating.add_argument("--out", type=Path, required=True, metavar="DIR")
     rating.add_argument("--coolant", type=float, metavar="DEGC", help="default: the study's, or the warmest of its duty")
@@ -191,6 +192,7 @@ _OUTPUT_HZ = (0.0, 0.05, 0.1, 0.2, 0.5, 1.0, 2.0, 3.0, 5.0, 10.0, 20.0, 50.0, 10
 
 
 def _rating(args) -> int:
+    from .losses import DEAD_SHARE_MAX
     from .show.folder import ResultFolder, write_figures
     from .show.study_figures import rating_figure, rating_frame, rating_text
     from .study import RatingBench, load_study, rating_point
@@ -199,7 +201,8 @@ def _rating(args) -> int:
     point = rating_point(study, coolant_c=args.coolant, power_factor=args.power_factor, mod_index=args.mod_index, base_frequency_hz=args.base_frequency)
     folder = ResultFolder(args.out)
     bench = RatingBench(study)
-    switching = bench.over_switching_frequency(point, _SWITCHING_HZ)
+    dead = 1e-6 * study.spec.inverter.dead_time_us
+    switching = bench.over_switching_frequency(point, [f for f in _SWITCHING_HZ if dead * f <= DEAD_SHARE_MAX])
     output = bench.over_output_frequency(point, _OUTPUT_HZ)
     paths = [folder.text("rating.csv", rating_frame(switching + output).to_csv(index=False, lineterminator="\n")),
              *write_figures(folder, {"rating": rating_figure(switching, output, title=study.module.name)})]
@@ -219,7 +222,12 @@ def _module(args) -> int:
     words = [m.value for m in Modulation]
     if args.modulation not in words:
         raise InputError("--modulation", f"'{args.modulation}'", "one of " + ", ".join(words), near_match(args.modulation, words))
+    for flag, value, most in (("--dc-voltage", args.dc_voltage, 20e3), ("--switching-frequency", args.switching_frequency, 200e3)):
+        if value is not None and not 0.0 < value <= most:
+            raise InputError(flag, f"{value:g}", f"above 0, at most {most:g}")
     module = load_module(args.module)
+    if args.dc_voltage is not None and args.dc_voltage >= module.ratings.v_ces_v * (2.0 if module.arrangement == "npc-leg" else 1.0):
+        raise InputError("--dc-voltage", f"{args.dc_voltage:g} V", f"below what the chips block ({module.ratings.v_ces_v:g} V each)")
     print(module_text(module))
     if args.out is not None:
         v_dc = args.dc_voltage if args.dc_voltage is not None else module.switch.turn_on.v_ref_v * (module.levels - 1)

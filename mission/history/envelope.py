@@ -81,6 +81,7 @@ class EnvelopeBuilder:
         self.duration_s, self.chips, self.phases, self.data_c = float(duration_s), tuple(chips), tuple(phases), data_c
         n = len(self.chips)
         self.above_s, self.longest_above_s, self._above_now = np.zeros(n), np.zeros(n), np.zeros(n)
+        self._above_first, self._was_below = np.zeros(n), np.zeros(n, bool)
         b = self._b = int(n_buckets)
         self._width = self.duration_s / b
         self._temps = np.empty((4, b, n))
@@ -119,16 +120,31 @@ class EnvelopeBuilder:
             self._gather(here, rows, pick, part, (part / span[r])[:, None])
 
     def _watch(self, rows):
-        above = rows.above_s > 0.0
-        self.above_s += rows.above_s.sum(axis=0)
-        for chip in np.flatnonzero(above.any(axis=0) | (self._above_now > 0.0)):
-            begins = np.concatenate([[True], above[1:, chip] != above[:-1, chip]])
-            stretch = np.add.reduceat(rows.above_s[:, chip], np.flatnonzero(begins))
-            hot = above[begins, chip]
+        """Stretches above the watched temperature, across rows and blocks."""
+        above, span = rows.piece_above, rows.piece_s
+        if not span.size:
+            return
+        self.above_s += above.T @ span
+        for chip in range(above.shape[1]):
+            mine = above[:, chip]
+            if not mine.any():
+                self._above_now[chip], self._was_below[chip] = 0.0, True
+                continue
+            begins = np.concatenate([[True], mine[1:] != mine[:-1]])
+            stretch = np.add.reduceat(span, np.flatnonzero(begins))
+            hot = mine[begins]
             if hot[0]:
                 stretch[0] += self._above_now[chip]
-            self.longest_above_s[chip] = max(self.longest_above_s[chip], stretch[hot].max(initial=0.0))
+                if not self._was_below[chip]:
+                    self._above_first[chip] = stretch[0]
+            self._was_below[chip] |= not hot.all()
+            self.longest_above_s[chip] = max(self.longest_above_s[chip], stretch[hot].max())
             self._above_now[chip] = stretch[-1] if hot[-1] else 0.0
+
+    def join_ends(self) -> None:
+        """The mission repeats: what lasts beyond its end goes on at its start."""
+        joined = self._above_now + self._above_first
+        self.longest_above_s = np.where((self._above_now > 0.0) & ~self._was_below, np.inf, np.maximum(self.longest_above_s, joined))
 
     def _gather(self, bucket, rows, pick, span, share):
         if bucket.size == 0:

@@ -21,12 +21,12 @@ from __future__ import annotations
 import numpy as np
 from numba import njit
 
-from ..losses.kernels import MOST_BORDERS, SCALE, angle_nodes, at_temperature, period_means, set_point, wrap
+from ..losses.kernels import MOST_BORDERS, SCALE, add_losses, jumps, angle_nodes, at_temperature, period_means, set_point, wrap
 
 # Chips stand side by side in lanes, so that a vector instruction takes several at once. The number of lanes has to be known
 # when the kernels are compiled; it comes in as the length of a tuple, and a bridge with fewer chips leaves some lanes cold.
 LANES = (12, 30)
-L_MAX, S_MAX, K_MAX = 16, 96, 8  # local modes a chip, shared modes, hinge coefficients
+L_MAX, S_MAX, K_MAX = 16, 96, 8  # local modes a chip, shared modes, hinge coefficients; march.py checks them
 LANE = 32  # from one row of lanes to the next
 # places in the work array w
 X_L, A_L, B_L = 0, 512, 1024  # [mode, chip]
@@ -56,13 +56,12 @@ N_NOW = 10
 DT, FREQ, DIRECTION, I_PEAK, MOD, PHI, ANGLE_OFFSET, T_COOLANT, CLIP_FIRST, CLIP_LAST, FSW, V_DC = range(12)
 N_ROW = 12
 # settings
-F_SLOW, STEPS, H0, H_MAX, SETTLE_PERIODS, SETTLE_K, T_STOP = range(7)
+F_SLOW, STEPS, H0, H_MAX, SETTLE_PERIODS, SETTLE_K, T_STOP, SHARED_EVERY_S = range(8)
 IDLE, MEAN, ANGLE = 0, 1, 2
 OK, RUNAWAY = 0, 1
 NODES, RIPPLE_NODES = 128, 64  # along a turn of the current
 CHUNK = 256
 U_NODE_LAST = np.uint64(NODES - 1)
-SHARED_WITHIN_S = 0.012  # shared modes move at least this often in even steps
 TURN = 2.0 * np.pi
 TINY_W = 1e-9  # keeps decaying states out of the denormal range, where the processor crawls
 THIRD = 2.0 * np.pi / 3.0
@@ -234,6 +233,55 @@ def leg_losses(leg, psi, nodes, w):
 
 
 @njit(cache=True)
+def exact_losses(leg, psi, point, drive, conduction, switching, knot_c, i_step, voltage, energy, corner, w):
+    """Losses of one leg at the angle ``psi`` of its current, not read off a line between nodes: for losses that jump."""
+    n_k = knot_c.size
+    for position in range(corner.shape[0]):
+        for k in range(n_k):
+            corner[position, k] = 0.0
+    add_losses(psi, 1.0, point, drive, conduction, switching, i_step, voltage, energy, corner)
+    for position in range(corner.shape[0]):
+        chip = HINGE + 6 * (position // 2) + 2 * leg + position % 2
+        w[chip] = corner[position, 0]
+        w[chip + LANE] = 0.0
+        before = 0.0
+        for k in range(1, n_k):
+            slope = (corner[position, k] - corner[position, k - 1]) / (knot_c[k] - knot_c[k - 1])
+            w[chip + LANE * k] = slope - before
+            before = slope
+
+
+@njit(cache=True)
+def turn_stops(point, drive, jump_at, stops):
+    """Angles within a turn at which a loss of one of the three legs jumps, rising, into ``stops``; returns how many."""
+    # what jumps where the current changes its sign is small: no step needs to end there
+    n = jumps(point, drive, jump_at, False)
+    m = 0
+    for k in range(n):
+        for leg in range(3):
+            stops[m] = wrap(jump_at[k] + THIRD * leg)
+            m += 1
+    stops[:m].sort()
+    kept = 0
+    for k in range(m):
+        if kept == 0 or stops[k] - stops[kept - 1] > 1e-6:
+            stops[kept] = stops[k]
+            kept += 1
+    return kept
+
+
+@njit(cache=True)
+def to_next_stop(theta, direction, stops, n_stops):
+    """Angle to turn until the next stop lies behind, at least a little."""
+    best = TURN
+    for k in range(n_stops):
+        away = wrap(direction * (stops[k] - theta))
+        if away > 1e-7:
+            best = min(best, away)
+    return best
+
+
+@njit(cache=True)
 def feed(first, n_points, values, times, half, ripple, phase, last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count):
     """Feed samples ``values`` (points, n) of n signals from ``first`` on to their turning-point filters."""
     for i in range(values.shape[1]):
@@ -289,17 +337,17 @@ def flush_points(last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_co
 
 
 @njit(cache=True)
-def ripple_of(position, flow, t_mean, op, coarse, knot_c, lam, rho, nodes, result):
+def ripple_of(position, flow, t_mean, op, turn_nodes, coarse, knot_c, lam, rho, nodes, result):
     """Periodic ripple of one chip about its mean temperature, its own feedback included.
 
     Power is a broken line over the angle, so the response of each mode is exact.
-    ``coarse`` (RIPPLE_NODES + 1, positions, k): losses along a turn. ``flow``: which half of it loads
+    ``coarse`` (ripple nodes + 1, positions, k): losses along a turn. ``flow``: which half of it loads
     the chip (0, 1; 2: both). ``result``: kappa (what the ripple adds to the mean loss, relative), lowest
-    and highest ripple [K], loss at the mean temperature, that temperature. ``nodes``
-    (RIPPLE_NODES + 1, L) gets the scaled states less their means, from the start of the loaded part on.
+    and highest ripple [K], loss at the mean temperature, that temperature, nodes of a turn. ``nodes``
+    (ripple nodes + 1, L) gets the scaled states less their means, from the start of the loaded part on.
     """
-    n = RIPPLE_NODES if flow == 2 else RIPPLE_NODES // 2
-    begin = RIPPLE_NODES // 2 if flow == 1 else 0
+    n = turn_nodes if flow == 2 else turn_nodes // 2
+    begin = turn_nodes // 2 if flow == 1 else 0
     n_l = lam.size
     n_h = max(knot_c.size - 1, 1)
     f = op[FREQ]
@@ -307,7 +355,7 @@ def ripple_of(position, flow, t_mean, op, coarse, knot_c, lam, rho, nodes, resul
     if op[DIRECTION] < 0.0:
         # turning backwards the loaded part is crossed from its other end
         begin, stride = begin + n, -1
-    dt = 1.0 / (f * RIPPLE_NODES)
+    dt = 1.0 / (f * turn_nodes)
     rest = 1.0 / f - n * dt if flow != 2 else 0.0
     a_k, w0, w1, over, x_k = np.empty(n_l), np.empty(n_l), np.empty(n_l), np.empty(n_l), np.empty(n_l)
     for k in range(n_l):
@@ -330,7 +378,7 @@ def ripple_of(position, flow, t_mean, op, coarse, knot_c, lam, rho, nodes, resul
         for j in range(n + 1):
             p[j] = at_temperature(coarse[begin + stride * j, position], knot_c, n_h, t_mean + tau[j])
             mean_p += p[j] if 0 < j < n else 0.5 * p[j]
-        mean_p /= RIPPLE_NODES
+        mean_p /= turn_nodes
         if turn == 0:
             mean_before = mean_p
         for k in range(n_l):
@@ -357,11 +405,12 @@ def ripple_of(position, flow, t_mean, op, coarse, knot_c, lam, rho, nodes, resul
         result[2] = max(result[2], tau[j])
     result[3] = mean_before
     result[4] = t_mean
+    result[5] = turn_nodes
 
 
 @njit(cache=True)
-def ripples(op, w, group, group_position, flows, group_lam, group_rho, coarse, knot_c, nodes, out):
-    """Ripple of every group of like chips at their mean temperature: ``nodes`` (G, ., L) and ``out`` (G, 5)."""
+def ripples(op, w, group, group_position, flows, group_lam, group_rho, turn_nodes, coarse, knot_c, nodes, out):
+    """Ripple of every group of like chips at their mean temperature: ``nodes`` (G, ., L) and ``out`` (G, 6)."""
     for g in range(group_position.size):
         total, count = 0.0, 0
         for i in range(group.size):
@@ -369,7 +418,7 @@ def ripples(op, w, group, group_position, flows, group_lam, group_rho, coarse, k
                 total += w[T + i]
                 count += 1
         position = group_position[g]
-        ripple_of(position, flows[position], total / count, op, coarse, knot_c, group_lam[g], group_rho[g], nodes[g], out[g])
+        ripple_of(position, flows[position], total / count, op, turn_nodes, coarse, knot_c, group_lam[g], group_rho[g], nodes[g], out[g])
 
 
 @njit(cache=True)
@@ -396,17 +445,18 @@ def ripple_share(w, n_h, i, result):
 
 
 @njit(cache=True)
-def add_ripple(sign, op, theta_rotor, w, n_l, n_h, group, flows, group_lam, group_rho, ripple, nodes):
+def add_ripple(sign, op, theta_rotor, w, n_l, n_h, group, group_position, flows, group_lam, group_rho, ripple, nodes):
     """Turn mean states into physical ones at the present angle (sign +1), or back (-1)."""
     f = op[FREQ]
     theta = theta_rotor + op[ANGLE_OFFSET]
     for i in range(group.size):
         g = group[i]
         flow = flows[2 * (i // 6) + i % 2]
+        turn_nodes = int(ripple[g, 5])
         share = sign * ripple_share(w, n_h, i, ripple[g])
         # from the start of the part of the turn that loads the chip
         psi = theta - THIRD * ((i % 6) // 2)
-        if flow == 1:
+        if flow == 1 or (flow == 2 and group_position[g] % 2 != i % 2):
             psi -= np.pi
         loaded = TURN if flow == 2 else np.pi
         if op[DIRECTION] < 0.0:
@@ -414,8 +464,8 @@ def add_ripple(sign, op, theta_rotor, w, n_l, n_h, group, flows, group_lam, grou
         psi = wrap(psi)
         change = 0.0
         if psi < loaded:
-            place = psi / TURN * RIPPLE_NODES
-            j = min(int(place), RIPPLE_NODES - 1)
+            place = psi / TURN * turn_nodes
+            j = min(int(place), turn_nodes - 1)
             u = place - j
             for k in range(n_l):
                 d = share * ((1.0 - u) * nodes[g, j, k] + u * nodes[g, j + 1, k])
@@ -426,7 +476,7 @@ def add_ripple(sign, op, theta_rotor, w, n_l, n_h, group, flows, group_lam, grou
             for k in range(n_l):
                 # after the half wave the state itself decays, its mean does not
                 mean = group_rho[g, k] / group_lam[g, k] * ripple[g, 3] * (1.0 + ripple[g, 0])
-                d = share * ((nodes[g, RIPPLE_NODES // 2, k] + mean) * np.exp(-group_lam[g, k] * since) - mean)
+                d = share * ((nodes[g, turn_nodes // 2, k] + mean) * np.exp(-group_lam[g, k] * since) - mean)
                 w[X_L + k * LANE + i] += d
                 change += d
         w[T + i] += change
@@ -450,7 +500,7 @@ def mean_hinges(w, means, knot_c, group, ripple):
 
 @njit(cache=True)
 def cross(lanes, row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, levels, odd,
-          fine, knot_c, settings, now,
+          fine, stops, n_stops, point, drive, conduction, switching, i_step, voltage, energy, corner, knot_c, settings, now,
           t_buffer, t_time, c_buffer, c_time, no_ripple, extreme, envelope,
           last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count):
     """Cross ``duration`` in one regime (ANGLE with f = 0 is standstill).
@@ -471,8 +521,12 @@ def cross(lanes, row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_
     if turning:
         h_angle = min(1.0 / (op[FREQ] * settings[STEPS]), 0.02)
     elif regime == ANGLE:
-        for leg in range(U_3):
-            leg_losses(leg, wrap(theta - THIRD * leg), fine, w)
+        for leg in range(3):
+            if n_stops > 0:
+                exact_losses(leg, wrap(theta - THIRD * leg), point, drive, conduction, switching, knot_c, i_step, voltage, energy, corner, w)
+            else:
+                leg_losses(np.uint64(leg), wrap(theta - THIRD * leg), fine, w)
+    reach = duration  # where an even run of steps ends: the next place where a loss jumps, or the end
     for i in range(n):
         extreme[0, i] = w[T + i]
         extreme[1, i] = start
@@ -484,7 +538,10 @@ def cross(lanes, row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_
     h_before = 0.0
     many, since, count_even, done_even, begin_even = 1, 0, 0, 0, 0.0
     while used < duration:
-        left = duration - used
+        if turning and n_stops > 0 and used >= reach or used == 0.0 and turning and n_stops > 0:
+            reach = min(duration, used + to_next_stop(theta + omega * used, op[DIRECTION], stops, n_stops) / abs(omega))
+            h_even = 0.0
+        left = reach - used
         level = int(now[LEVEL])
         h = settings[H0] * 2.0**level
         if h_even == 0.0 and h < left * (1.0 - 1e-12) and h < h_angle and level + 1 < levels.shape[0]:
@@ -498,11 +555,13 @@ def cross(lanes, row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_
         else:
             if turning:
                 if h_even == 0.0:
-                    many = min(8, max(1, int(SHARED_WITHIN_S / h_angle)))
-                    groups = np.ceil(left / (h_angle * many) - 1e-9)
+                    many = min(8, max(1, int(settings[SHARED_EVERY_S] / h_angle)))
+                    if left < h_angle * many:
+                        many = max(1, int(np.ceil(left / h_angle - 1e-9)))
+                    groups = max(1.0, np.ceil(left / (h_angle * many) - 1e-9))
                     h_even = left / (groups * many)
                     count_even = int(groups) * many
-                    begin_even = used
+                    begin_even, done_even = used, 0
                     for s in range(n_s):
                         e = np.expm1(-lam_s[s] * h_even * many)
                         w[A_S_MANY + s] = 1.0 + e
@@ -513,14 +572,18 @@ def cross(lanes, row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_
                 h = h_even
             else:
                 h = min(left, settings[H_MAX])
-            if now[H_LOADED] != h:
+            if abs(now[H_LOADED] - h) > 1e-12 * h:
                 step_factors(h, lam_l, rho, lam_s, odd)
                 load_factors(lanes, w, n_l, n_s, odd)
                 now[H_LOADED] = h
         if turning:
             middle = theta + omega * (used + 0.5 * h)
-            for leg in range(U_3):
-                leg_losses(leg, wrap(middle - THIRD * leg), fine, w)
+            if n_stops > 0:
+                for leg in range(3):
+                    exact_losses(leg, wrap(middle - THIRD * leg), point, drive, conduction, switching, knot_c, i_step, voltage, energy, corner, w)
+            else:
+                for leg in range(U_3):
+                    leg_losses(leg, wrap(middle - THIRD * leg), fine, w)
         # the shared modes are slow: in even steps they move once in several of them, with the mean power
         even = h == h_even
         part = 0.0
@@ -536,9 +599,9 @@ def cross(lanes, row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_
             since = 0
         if even:
             done_even += 1
-            used = begin_even + done_even * h_even if done_even < count_even else duration
+            used = begin_even + done_even * h_even if done_even < count_even else reach
         else:
-            used = used + h if left - h > 1e-12 * duration else duration
+            used = used + h if left - h > 1e-12 * duration else reach
         count += 1
         for i in range(n_u):
             w[U_ENERGY + i] += w[U_P + i] * h
@@ -648,7 +711,12 @@ def march_rows(lanes, begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_co
     fresh_nodes = np.zeros(nodes.shape)
     n_positions = flows.size
     fine = np.zeros((NODES + 1, n_positions, max(knot_c.size, 2)))
-    coarse = np.zeros((RIPPLE_NODES + 1, n_positions, max(knot_c.size, 2)))
+    most_nodes = nodes.shape[1] - 1
+    ripple_nodes = most_nodes
+    coarse = np.zeros((most_nodes + 1, n_positions, max(knot_c.size, 2)))
+    jump_at = np.empty(MOST_BORDERS)
+    stops = np.empty(3 * MOST_BORDERS + 1)
+    n_stops = -1  # places along a turn where a loss of one of the legs jumps; -1: not looked for yet
     means, corner, border = np.empty((n_positions, knot_c.size)), np.empty((n_positions, knot_c.size)), np.empty(MOST_BORDERS)
     point = np.zeros(SCALE + v_ref.size)
     fine_made = coarse_made = means_made = False  # whether the nodes stand for the latest operating point
@@ -692,6 +760,9 @@ def march_rows(lanes, begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_co
             set_point(point, drive, op[I_PEAK], op[MOD], op[PHI], op[DIRECTION], op[CLIP_FIRST], op[CLIP_LAST], op[FSW], op[FREQ], op[V_DC],
                       v_ref, exponent, gate)
             fine_made = coarse_made = means_made = False
+            n_stops = -1
+            # what a node smears lasts the longer the slower the rotation
+            ripple_nodes = most_nodes if most_nodes <= RIPPLE_NODES or f < 20.0 else most_nodes // 4
         before = int(now[REGIME])
         want = ANGLE
         if op[I_PEAK] <= 0.0:
@@ -708,7 +779,7 @@ def march_rows(lanes, begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_co
         if before == MEAN and want != MEAN:
             close_window(now, old, window, pair, pair_time, pair_ripple,
                          last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count, rip, rip_row, rip_count)
-            add_ripple(1.0, old, now[THETA], w, n_l, n_h, group, flows, group_lam, group_rho, ripple, nodes)
+            add_ripple(1.0, old, now[THETA], w, n_l, n_h, group, group_position, flows, group_lam, group_rho, ripple, nodes)
             before = ANGLE
         renew = False
         if want == MEAN:
@@ -718,9 +789,9 @@ def march_rows(lanes, begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_co
                     renew = renew or abs(w[T + i] - ripple[group[i], 4]) > 8.0
         if renew:
             if not coarse_made:
-                angle_nodes(RIPPLE_NODES, point, drive, conduction, switching, knot_c, i_step, voltage, energy, corner, border, coarse)
+                angle_nodes(ripple_nodes, point, drive, conduction, switching, knot_c, i_step, voltage, energy, corner, border, coarse)
                 coarse_made = True
-            ripples(op, w, group, group_position, flows, group_lam, group_rho, coarse, knot_c, fresh_nodes, fresh)
+            ripples(op, w, group, group_position, flows, group_lam, group_rho, ripple_nodes, coarse, knot_c, fresh_nodes, fresh)
             if changed and before != ANGLE:
                 # a jump is first marched by angle, from the temperatures that really stand there
                 jump, largest = 0.0, 0.0
@@ -732,14 +803,21 @@ def march_rows(lanes, begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_co
                     if before == MEAN:
                         close_window(now, old, window, pair, pair_time, pair_ripple,
                                      last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count, rip, rip_row, rip_count)
-                        add_ripple(1.0, old, now[THETA], w, n_l, n_h, group, flows, group_lam, group_rho, ripple, nodes)
+                        add_ripple(1.0, old, now[THETA], w, n_l, n_h, group, group_position, flows, group_lam, group_rho, ripple, nodes)
                     before = ANGLE
                     now[SETTLE] = settings[SETTLE_PERIODS] / f
+            elif changed:
+                # what was marched by angle has no such ripple yet
+                largest = 0.0
+                for g in range(fresh.shape[0]):
+                    largest = max(largest, fresh[g, 2] - fresh[g, 1])
+                if largest > settings[SETTLE_K]:
+                    now[SETTLE] = settings[SETTLE_PERIODS] / f
             for g in range(fresh.shape[0]):
-                for k in range(5):
+                for k in range(6):
                     ripple[g, k] = fresh[g, k]
-                for j in range(RIPPLE_NODES + 1):
-                    for k in range(n_l):
+                for j in range(ripple_nodes + 1):
+                    for k in range(nodes.shape[2]):
                         nodes[g, j, k] = fresh_nodes[g, j, k]
             for k in range(N_ROW):
                 ripple_op[k] = op[k]
@@ -758,7 +836,9 @@ def march_rows(lanes, begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_co
                         w[HINGE + j] = 0.0
                 else:
                     regime, length = ANGLE, by_angle
-                    if length > 0.0 and not fine_made:
+                    if length > 0.0 and n_stops < 0:
+                        n_stops = turn_stops(point, drive, jump_at, stops)
+                    if length > 0.0 and n_stops == 0 and not fine_made:
                         angle_nodes(NODES, point, drive, conduction, switching, knot_c, i_step, voltage, energy, corner, border, fine)
                         fine_made = True
             else:
@@ -768,16 +848,16 @@ def march_rows(lanes, begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_co
                 if length > 0.0:
                     if by_angle > 0.0:
                         if not coarse_made:
-                            angle_nodes(RIPPLE_NODES, point, drive, conduction, switching, knot_c, i_step, voltage, energy, corner, border, coarse)
+                            angle_nodes(ripple_nodes, point, drive, conduction, switching, knot_c, i_step, voltage, energy, corner, border, coarse)
                             coarse_made = True
-                        ripples(op, w, group, group_position, flows, group_lam, group_rho, coarse, knot_c, nodes, ripple)
+                        ripples(op, w, group, group_position, flows, group_lam, group_rho, ripple_nodes, coarse, knot_c, nodes, ripple)
                     if changed or renew or before == ANGLE:
                         if not means_made:
                             period_means(point, drive, conduction, switching, i_step, voltage, energy, corner, border, means)
                             means_made = True
                         mean_hinges(w, means, knot_c, group, ripple)
                     if before == ANGLE:
-                        add_ripple(-1.0, op, now[THETA], w, n_l, n_h, group, flows, group_lam, group_rho, ripple, nodes)
+                        add_ripple(-1.0, op, now[THETA], w, n_l, n_h, group, group_position, flows, group_lam, group_rho, ripple, nodes)
             if length <= 0.0 or status != OK:
                 continue
             opened = now[WINDOW_CYCLES] == 0.0
@@ -785,6 +865,7 @@ def march_rows(lanes, begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_co
                 now[WINDOW_START] = now[TIME]
             now[REGIME] = regime
             status = cross(lanes, row, length, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_s, levels, odd, fine,
+                           stops, max(n_stops, 0), point, drive, conduction, switching, i_step, voltage, energy, corner,
                            knot_c, settings, now, t_buffer, t_time, c_buffer, c_time, no_ripple, extreme, row_temps[row],
                            last, heading, p_value, p_time, p_half, p_ripple, p_phase, p_count)
             if regime == ANGLE:

@@ -8,12 +8,12 @@ does not grow with the length of the mission.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 
 import numpy as np
 
 from ..errors import InputError, NoStableTemperature
-from ..losses import MOD_INDEX_SIX_STEP, LossTables, reference_for
+from ..losses import LossTables, reference_for
 from ..machine import OperatingPoints
 from ..thermal import ReducedNetwork
 from .steady import HeldPoint
@@ -22,6 +22,14 @@ _POINT_CAPACITY = 32768
 _LEVELS = 19
 #: A switching frequency that follows the temperature is set anew this often [s].
 DERATE_EVERY_S = 0.1
+#: Pieces that are marched at once.
+MOST_PIECES = 65536
+#: Nodes along a turn for the ripple where losses jump.
+RIPPLE_NODES_JUMPS = 512
+#: In even steps shared modes move at least this often [s], and ten times within the shortest of their time constants.
+SHARED_WITHIN_S = 0.012
+#: A chip feels its own ripple through shared modes faster than this too [1/s].
+RIPPLES_ABOVE_PER_S = 0.5
 
 
 @dataclass(frozen=True)
@@ -81,7 +89,12 @@ class RippleBlock:
 
 @dataclass(frozen=True)
 class RowEnvelope:
-    """Extremes and heat of every row of a block; r rows, n chips. ``above_s``: time above the watched temperature, in steps of up to a second."""
+    """Extremes and heat of every row of a block; r rows, n chips.
+
+    ``switching_hz`` (r,): as it was at the end of the row, derating included. ``theta_rad`` (r,): angle of the current of
+    phase a there. ``piece_s`` (p,), ``piece_above`` (p, n): stretches of up to a second and whether the junction
+    passed the watched temperature in them; empty if none is watched.
+    """
 
     start_s: np.ndarray
     end_s: np.ndarray
@@ -92,7 +105,22 @@ class RowEnvelope:
     case_max_c: np.ndarray
     loss_j: np.ndarray
     coolant_c: np.ndarray
-    above_s: np.ndarray
+    switching_hz: np.ndarray
+    theta_rad: np.ndarray
+    piece_s: np.ndarray
+    piece_above: np.ndarray
+
+
+#: Room of the kernels: local modes a chip, shared modes, corner temperatures.
+L_MAX, S_MAX, K_MAX = 16, 96, 8
+
+
+def check_fit(tables: LossTables, network: ReducedNetwork) -> None:
+    """Refuse more modes or curve temperatures than the march has room for."""
+    found = (network.lam_local_per_s.shape[0], network.lam_shared_per_s.size, tables.knot_c.size)
+    if any(a > b for a, b in zip(found, (L_MAX, S_MAX, K_MAX))):
+        raise InputError("module", f"{found[0]} local and {found[1]} shared thermal modes, curves at {found[2]} different temperatures",
+                         f"at most {L_MAX}, {S_MAX} and {K_MAX}", "give all curves at the same few temperatures, or fewer thermal branches or layers")
 
 
 class ElectrothermalMarch:
@@ -125,13 +153,10 @@ class ElectrothermalMarch:
         self.tables, self.network = tables, network
         self.settings = settings or MarchSettings()
         self._on_points, self._on_ripple = on_points, on_ripple
-        if network.lam_local_per_s.shape[0] > k.L_MAX or network.lam_shared_per_s.size > k.S_MAX or tables.knot_c.size > k.K_MAX:
-            raise InputError("march", f"{network.lam_local_per_s.shape[0]} local modes, {network.lam_shared_per_s.size} shared modes, "
-                             f"{tables.knot_c.size} curve temperatures", f"at most {k.L_MAX}, {k.S_MAX} and {k.K_MAX}",
-                             "reduce the network, or give all curves at the same few temperatures")
+        check_fit(tables, network)
         s = self.settings
         self._settings = np.array([s.f_slow_hz, s.steps_per_period, s.first_step_s, s.longest_step_s, s.settle_periods, s.settle_above_k,
-                                   s.t_stop_c], float)
+                                   s.t_stop_c, min(SHARED_WITHIN_S, 0.1 / network.lam_shared_per_s.max(initial=1.0))], float)
         lanes = self._lanes = next(n for n in k.LANES if n >= n_chips)
         lam, rho = _padded(network.lam_local_per_s, lanes, 1.0), _padded(network.rho_local, lanes, 0.0)
         lam_s = network.lam_shared_per_s
@@ -141,7 +166,7 @@ class ElectrothermalMarch:
             k.step_factors(s.first_step_s * 2.0**v, lam, rho, lam_s, levels[v])
         position = 2 * (np.arange(n_chips) // 6) + np.arange(n_chips) % 2
         like = position if not tables.modulation.half_wave_symmetric else position - position % 2
-        group, members, group_lam, group_rho = _ripple_groups(network.lam_local_per_s, network.rho_local, like)
+        group, members, group_lam, group_rho = _ripple_groups(*_own_response(network), like)
         self._net = (n_l, n_s, lam, rho, np.ascontiguousarray(lam_s), np.ascontiguousarray(network.g_coolant),
                      _padded(network.g_coolant_local, lanes, 0.0), levels, np.empty(levels.shape[1]))
         self._groups = (group, position[members], tables.plan.flows, group_lam, group_rho)
@@ -188,7 +213,8 @@ class ElectrothermalMarch:
         self._op[k.DIRECTION] = 1.0
         self._ripple_op = np.zeros(k.N_ROW)
         groups = self._groups[1].size
-        self._ripple, self._nodes = np.zeros((groups, 5)), np.zeros((groups, k.RIPPLE_NODES + 1, n_l))
+        ripple_nodes = RIPPLE_NODES_JUMPS if self.tables.jumps else k.RIPPLE_NODES
+        self._ripple, self._nodes = np.zeros((groups, 6)), np.zeros((groups, ripple_nodes + 1, self._groups[3].shape[1]))
         self._window = np.zeros((5, self._lanes))
         self._last, self._heading = np.zeros((2 * self._lanes, 5)), np.full(2 * self._lanes, 2, np.int64)
         self._count[:] = 0
@@ -257,6 +283,14 @@ class ElectrothermalMarch:
         self._check_current(points)
         dt_s = np.asarray(dt_s, float)
         pieces = self._pieces(points, dt_s)
+        if pieces.sum() > MOST_PIECES and dt_s.size > 1:
+            # long rows are many pieces: go through them in parts, so that memory stays bounded
+            middle = int(np.clip(np.searchsorted(np.cumsum(pieces), 0.5 * pieces.sum()), 1, dt_s.size - 1))
+            parts = []
+            for part in (slice(0, middle), slice(middle, None)):
+                every = {"phase_id": phase_id, "coolant_c": coolant_c, "switching_frequency_hz": switching_frequency_hz, "dc_voltage_v": dc_voltage_v}
+                parts.append(self.add_block(points.rows(part), dt_s=dt_s[part], **{n: np.broadcast_to(np.asarray(v), dt_s.shape)[part] for n, v in every.items()}))
+            return RowEnvelope(*(np.concatenate([getattr(p, f.name) for p in parts]) for f in fields(RowEnvelope)))
         rows = np.repeat(np.arange(dt_s.size), pieces)
         table = np.empty((rows.size, k.N_ROW))
         table[:, k.DT] = (dt_s / pieces)[rows]
@@ -272,7 +306,7 @@ class ElectrothermalMarch:
         loss = np.zeros((rows.size, self._lanes))
         if self._before_first:
             self._sample_start(float(phases[0]))
-        start = self._now[k.TIME]
+        start, theta = self._now[k.TIME], self._now[k.THETA]
         at = 0
         while at < rows.size:
             at, status = k.march_rows(
@@ -281,26 +315,30 @@ class ElectrothermalMarch:
             if status == k.RUNAWAY:
                 now = self.junction_c
                 chip = int(np.argmax(np.where(np.isfinite(now), now, np.inf)))
-                raise NoStableTemperature(self._runaway_words(chip, table[at]))
+                raise NoStableTemperature(self._runaway_words(chip, table[at], float(points.mod_index[rows[at]])))
             self._hand_over()
         ends = start + np.cumsum(table[:, k.DT])
         first = np.concatenate([[0], np.cumsum(pieces)[:-1]])
         t_end = ends[np.cumsum(pieces) - 1]
         temps, loss = temps[:, :, :self.n_chips], loss[:, :self.n_chips]
-        above = np.where(temps[:, 1] > self.settings.watch_c, table[:, k.DT, None], 0.0)
+        watching = np.isfinite(self.settings.watch_c)
+        last = np.cumsum(pieces) - 1
+        turned = theta + 2.0 * np.pi * np.cumsum(points.frequency_hz * points.direction * dt_s)
         return RowEnvelope(
             start_s=np.concatenate([[start], t_end[:-1]]), end_s=t_end, phase_id=np.asarray(phase_id),
             t_min_c=np.minimum.reduceat(temps[:, 0], first), t_max_c=np.maximum.reduceat(temps[:, 1], first),
             case_min_c=np.minimum.reduceat(temps[:, 2], first), case_max_c=np.maximum.reduceat(temps[:, 3], first),
             loss_j=np.add.reduceat(loss, first), coolant_c=np.broadcast_to(np.asarray(coolant_c, float), dt_s.shape),
-            above_s=np.add.reduceat(above, first),
+            switching_hz=table[last, k.FSW], theta_rad=turned + points.current_angle_rad,
+            piece_s=table[:, k.DT].copy() if watching else np.empty(0),
+            piece_above=temps[:, 1] > self.settings.watch_c if watching else np.empty((0, self.n_chips), bool),
         )
 
-    def _runaway_words(self, chip, op):
+    def _runaway_words(self, chip, op, mod_index):
         """Why a march ended beyond ``t_stop_c``: no stable temperature at all, or one that no chip survives."""
         k, stop = self._k, self.settings.t_stop_c
-        held = HeldPoint(self.tables, self.network, i_peak_a=op[k.I_PEAK], mod_index=min(op[k.MOD], MOD_INDEX_SIX_STEP) if op[k.CLIP_FIRST] < 0.5 * np.pi
-                         else op[k.MOD], phi_rad=op[k.PHI], frequency_hz=op[k.FREQ], direction=op[k.DIRECTION], switching_frequency_hz=op[k.FSW],
+        held = HeldPoint(self.tables, self.network, i_peak_a=op[k.I_PEAK], mod_index=mod_index, phi_rad=op[k.PHI], theta_rad=self._now[k.THETA] + op[k.ANGLE_OFFSET],
+                         frequency_hz=op[k.FREQ], direction=op[k.DIRECTION], switching_frequency_hz=op[k.FSW],
                          dc_voltage_v=op[k.V_DC])
         state = held.settle(op[k.T_COOLANT])
         where = (f"{self.chip_names[chip]} passes {stop:g} degC at {self._now[k.TIME]:.6g} s into the mission (coolant {op[k.T_COOLANT]:g} degC, "
@@ -320,8 +358,8 @@ class ElectrothermalMarch:
                        self._last, self._heading, *self._points, *self._ripple_out)
         if self._now[k.REGIME] == k.MEAN:
             n_l = self._net[0]
-            group, _, flows, group_lam, group_rho = self._groups
-            k.add_ripple(1.0, self._op, self._now[k.THETA], self._w, n_l, max(self.tables.knot_c.size - 1, 1), group, flows, group_lam,
+            group, group_position, flows, group_lam, group_rho = self._groups
+            k.add_ripple(1.0, self._op, self._now[k.THETA], self._w, n_l, max(self.tables.knot_c.size - 1, 1), group, group_position, flows, group_lam,
                          group_rho, self._ripple, self._nodes)
             self._now[k.REGIME] = k.ANGLE
         k.flush_points(self._last, self._heading, *self._points)
@@ -381,6 +419,27 @@ class ElectrothermalMarch:
 
 def _chip_names(positions):
     return tuple(f"{pair.removesuffix('-up')}-{leg}-{side}" for pair in positions[::2] for leg in "abc" for side in ("up", "lo"))
+
+
+def _own_response(network):
+    """Rates and weights of each chip's response to its own heat, for the ripple: local modes first, then what it sees of itself through shared modes.
+
+    Shared modes that are too slow to ripple are left out; neighbours of the others are joined to eight at most, so that their steady part stays.
+    """
+    lam, rho = network.lam_local_per_s, network.rho_local
+    own = network.c_shared.T * network.b_shared  # (S, n)
+    rate = network.lam_shared_per_s
+    fast = rate > RIPPLES_ABOVE_PER_S
+    if not fast.any():
+        return lam, rho
+    extra_lam, extra_rho = [], []
+    for part in np.array_split(np.argsort(rate[fast]), min(8, int(fast.sum()))):
+        r, weight = rate[fast][part][:, None], own[fast][part]
+        steady = (weight / r).sum(axis=0)
+        joint = np.full(steady.shape, float(np.exp(np.log(r).mean())))
+        extra_lam.append(joint)
+        extra_rho.append(steady * joint)
+    return np.vstack([lam, extra_lam]), np.vstack([rho, extra_rho])
 
 
 def _padded(values, lanes, filler):

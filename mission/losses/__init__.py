@@ -11,10 +11,10 @@ from .periods import (
     mean_losses_w,
     voltage_factor,
 )
-from .tables import CURRENT_REACH, LossTables, build_tables, current_reach_a
+from .tables import CURRENT_REACH, DEAD_SHARE_MAX, LossTables, build_tables, current_reach_a
 
 __all__ = [
-    "CURRENT_REACH", "LegLosses", "LegPlan", "LossTables", "MOD_INDEX_INJECTED_MAX", "MOD_INDEX_SIX_STEP", "Modulation", "build_tables",
+    "CURRENT_REACH", "DEAD_SHARE_MAX", "LegLosses", "LegPlan", "LossTables", "MOD_INDEX_INJECTED_MAX", "MOD_INDEX_SIX_STEP", "Modulation", "build_tables",
     "conduction_integrals_w", "current_reach_a", "held_phase", "leg_losses_at_angle_w", "leg_losses_w", "leg_plan", "mean_energy_j",
     "mean_losses_w", "phase_reference", "reference_for", "voltage_factor",
 ]

@@ -14,7 +14,7 @@ import numpy as np
 from numba import njit
 
 # places in ``point``; from SCALE on one factor for every energy curve [W/J]
-PEAK, SIZE, SHIFT, PHI, CLIP_FIRST, CLIP_LAST, FSW, MORE, LESS, TIME_SENSE, SCALE = range(11)
+PEAK, SIZE, SHIFT, PHI, CLIP_FIRST, CLIP_LAST, FSW, EDGE_RATE, SCALE = range(9)
 # places in ``drive``
 CODE, LEVELS, FOLLOWS_CURRENT, SYMMETRIC, DEAD_S, COMPENSATED, AT_ZERO = range(7)
 _HALF, _TURN, _SIXTH, _TWELFTH = 0.5 * np.pi, 2.0 * np.pi, np.pi / 3.0, np.pi / 6.0
@@ -66,17 +66,12 @@ def set_point(point, drive, i_peak, size, phi, direction, clip_first, clip_last,
     point[PEAK], point[SIZE] = i_peak, size
     point[PHI] = phi * direction
     point[CLIP_FIRST], point[CLIP_LAST], point[FSW] = clip_first, clip_last, fsw
-    point[TIME_SENSE] = direction
     point[SHIFT] = 0.0
     if drive[FOLLOWS_CURRENT] > 0.0:
         folded = point[PHI] - np.pi * np.round(point[PHI] / np.pi)
         point[SHIFT] = min(max(folded, -_TWELFTH), _TWELFTH)
-    point[MORE] = point[LESS] = 1.0
-    if clip_first < _HALF and clip_last >= _HALF and f > 0.0 and fsw > 0.0:
-        # from rail to rail in n carrier periods: one edge more in that direction than against it
-        n = 2.0 * clip_first / (drive[LEVELS] - 1.0) * fsw / (_TURN * f)
-        point[MORE] = max(n + 0.5, 1.0) / n
-        point[LESS] = max(n - 0.5, 0.0) / n
+    # a reference that moves makes more edges its way than against it; in time it moves with the sense of rotation
+    point[EDGE_RATE] = (drive[LEVELS] - 1.0) * _TURN * f * direction / (4.0 * fsw) if fsw > 0.0 else 0.0
     commutated = v_dc / (drive[LEVELS] - 1.0)
     for e in range(v_ref.size):
         point[SCALE + e] = gate[e] * (commutated / v_ref[e]) ** exponent[e] * fsw
@@ -84,20 +79,24 @@ def set_point(point, drive, i_peak, size, phi, direction, clip_first, clip_last,
 
 @njit(cache=True, inline="always")
 def reference_at(code, x, size, shift):
-    """Reference of the phase at angle ``x``, not yet clipped, and whether a clamp holds that phase."""
+    """Reference of the phase at angle ``x``, not yet clipped, its slope over the angle, and whether a clamp holds that phase."""
     sin_x, cos_x = np.sin(x), np.cos(x)
-    a = size * sin_x
+    a, da = size * sin_x, size * cos_x
     if code == 0:
-        return a, False
-    if code == 1:
-        return a + size / 6.0 * sin_x * (3.0 - 4.0 * sin_x * sin_x), False
-    if code == 2:
-        return a + size / 4.0 * sin_x * (3.0 - 4.0 * sin_x * sin_x), False
+        return a, da, False
+    if code == 1 or code == 2:
+        third = size / 6.0 if code == 1 else size / 4.0
+        return a + third * sin_x * (3.0 - 4.0 * sin_x * sin_x), da + 3.0 * third * cos_x * (4.0 * cos_x * cos_x - 3.0), False
     b = size * (-0.5 * sin_x - _ROOT3_2 * cos_x)
-    c = -a - b
+    db = size * (-0.5 * cos_x + _ROOT3_2 * sin_x)
+    c, dc = -a - b, -da - db
     if code == 3:
-        high, low = max(a, max(b, c)), min(a, min(b, c))
-        return a - 0.5 * (high + low), False
+        # half of the largest and the smallest off: half of the middle one on
+        if (a >= b) == (a <= c):
+            return 1.5 * a, 1.5 * da, False
+        if (b >= a) == (b <= c):
+            return a + 0.5 * b, da + 0.5 * db, False
+        return a + 0.5 * c, da + 0.5 * dc, False
     phase, rail = 0, 1.0
     if code == 4:
         sector = min(int(wrap(x - shift) / _SIXTH), 5)
@@ -111,8 +110,10 @@ def reference_at(code, x, size, shift):
         phase = (min(int(wrap(x - _HALF) / (2.0 * _SIXTH)), 2) + 2) % 3
         rail = -1.0
     if phase == 0:
-        return rail, True
-    return a + rail - (b if phase == 1 else c), False
+        return rail, 0.0, True
+    if phase == 1:
+        return a + rail - b, da - db, False
+    return a + rail - c, da - dc, False
 
 
 @njit(cache=True)
@@ -122,7 +123,7 @@ def add_losses(theta, weight, point, drive, conduction, switching, i_step, volta
     flow = 0 if sin_t >= 0.0 else 1
     size = point[PEAK] * abs(sin_t)
     x = theta + point[PHI]
-    r, held = reference_at(int(drive[CODE]), x, point[SIZE], point[SHIFT])
+    r, slope, held = reference_at(int(drive[CODE]), x, point[SIZE], point[SHIFT])
     # at the very edge of the linear range the peak still switches; clipped stretches do not, nor a three-level leg at zero
     edge = 1.0 if point[CLIP_FIRST] < _HALF else 1.0 + 1e-9
     active = not held and abs(r) <= edge and (drive[LEVELS] == 2.0 or r != 0.0)
@@ -181,9 +182,13 @@ def add_losses(theta, weight, point, drive, conduction, switching, i_step, volta
             out[position, k] += p * ((1.0 - u) * voltage[curve, j, k] + u * voltage[curve, j + 1, k])
     if not active or point[PEAK] <= 0.0:
         return
-    rising, falling = point[LESS], point[MORE]
-    if (np.cos(x) >= 0.0) == (point[TIME_SENSE] > 0.0):
-        rising, falling = falling, rising
+    # edges in a switching period: one each, and more the way the reference moves; never less than none
+    lean = slope * point[EDGE_RATE]
+    rising, falling = 1.0 + lean, 1.0 - lean
+    if lean > 1.0:
+        rising, falling = 2.0 * lean, 0.0
+    elif lean < -1.0:
+        rising, falling = 0.0, -2.0 * lean
     for rule in range(switching.shape[0]):
         if switching[rule, 2] != flow:
             continue
@@ -227,8 +232,11 @@ def _crossings(level, code, point, out, n):
 
 
 @njit(cache=True)
-def jumps(point, drive, out):
-    """Angles of the current within a turn where a loss jumps, into ``out``; returns how many."""
+def jumps(point, drive, out, at_zero):
+    """Angles of the current within a turn where a loss jumps, into ``out``; returns how many.
+
+    ``at_zero``: those at zero current too, where a switching energy does not vanish.
+    """
     code = int(drive[CODE])
     n = 0
     shift = point[SHIFT]
@@ -268,7 +276,7 @@ def jumps(point, drive, out):
             n = _crossings(2.0 * dead - 1.0, code, point, out, n)
     for k in range(n):
         out[k] = wrap(out[k] - point[PHI])
-    if drive[AT_ZERO] > 0.0:
+    if at_zero and drive[AT_ZERO] > 0.0:
         out[n], out[n + 1] = 0.0, np.pi
         n += 2
     return n
@@ -292,7 +300,7 @@ def period_means(point, drive, conduction, switching, i_step, voltage, energy, h
 
     ``half`` like ``out`` and ``border`` (MOST_BORDERS,) are work space.
     """
-    n = jumps(point, drive, border)
+    n = jumps(point, drive, border, True)
     for k in range(12):
         border[n + k] = wrap(point[SHIFT] + k * _TWELFTH - point[PHI])
     n += 12
@@ -325,7 +333,7 @@ def angle_nodes(count, point, drive, conduction, switching, knot_c, i_step, volt
     spacing = _TURN / count
     symmetric = drive[SYMMETRIC] > 0.0
     many = count // 2 if symmetric else count
-    n = jumps(point, drive, border)
+    n = jumps(point, drive, border, True)
     _sort(border, n)
     for j in range(many):
         middle = j * spacing

@@ -48,6 +48,8 @@ class LossTables:
     modulation : Modulation
     drive : ndarray
         What all operating points share, see ``kernels.py``.
+    jumps : bool
+        Whether losses may jump along the angle: held or clipped phases, three levels, pulses that vanish.
     current_data_end_a : float
         Where the first of the curves ends [A].
     temperature_data_c : tuple of float
@@ -64,6 +66,7 @@ class LossTables:
     voltage_exponent: np.ndarray
     modulation: Modulation
     drive: np.ndarray
+    jumps: bool
     current_data_end_a: float
     temperature_data_c: tuple[float, float]
 
@@ -97,7 +100,7 @@ class LossTables:
         """Angles of the current, within a turn, where a loss of the leg jumps; arguments as for :meth:`corner_means_w` [rad]."""
         kernels, place, _ = self._point(**{"direction": 1.0, **point})
         border = np.empty(kernels.MOST_BORDERS)
-        return np.sort(border[:kernels.jumps(place, self.drive, border)])
+        return np.sort(border[:kernels.jumps(place, self.drive, border, True)])
 
     def corner_losses_w(self, theta_rad, *, i_peak_a, mod_index, phi_rad, frequency_hz, switching_frequency_hz, dc_voltage_v, direction=1.0) -> np.ndarray:
         """Losses of every position of a leg at one angle of its current, at the corner temperatures, shape (positions, k) [W]."""
@@ -108,14 +111,14 @@ class LossTables:
 
 
 def build_tables(module: PowerModule, modulation: Modulation, *, dead_time_s: float = 0.0, dead_time_compensated: bool = False,
-                 r_gate_on_ohm: float | None = None, r_gate_off_ohm: float | None = None) -> LossTables:
+                 r_gate_on_ohm: float | None = None, r_gate_off_ohm: float | None = None, overmodulation: bool = False) -> LossTables:
     """Tabulate ``module`` for ``modulation``.
 
     Parameters
     ----------
     module : PowerModule
     modulation : Modulation
-    dead_time_s, dead_time_compensated, r_gate_on_ohm, r_gate_off_ohm
+    dead_time_s, dead_time_compensated, r_gate_on_ohm, r_gate_off_ohm, overmodulation
         As for :func:`mission.losses.leg_losses_w`.
 
     Raises
@@ -153,7 +156,8 @@ def build_tables(module: PowerModule, modulation: Modulation, *, dead_time_s: fl
         knot_c=knots, i_step_a=float(current[1]), voltage_v=voltage, energy_j=energy, plan=plan,
         gate_factor=gate_factors(module, plan.energy_places, r_gate_on_ohm, r_gate_off_ohm),
         v_ref_v=np.array([c.v_ref_v for c in plan.energies]), voltage_exponent=np.array([c.voltage_exponent for c in plan.energies]),
-        modulation=modulation, drive=drive, current_data_end_a=float(end),
+        modulation=modulation, drive=drive,
+        jumps=modulation.holds or plan.levels == 3 or overmodulation or (dead_time_s > 0.0 and not dead_time_compensated), current_data_end_a=float(end),
         temperature_data_c=(float(max(curves.points[0].t_vj_c for curves in every)), float(min(curves.points[-1].t_vj_c for curves in every))),
     )
 

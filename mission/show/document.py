@@ -191,6 +191,8 @@ def rests_on(result) -> list[str]:
         out.append(f"{history.chips[worst]} is under load for {history.beyond_data_s[worst]:.4g} s ({history.beyond_data_s[worst] / history.duration_s:.1%} of the mission) "
                    f"outside {low:g} to {high:g} degC, the temperatures of the data-sheet curves; losses are extended in a straight line there")
     out.extend(_how_losses(study))
+    if result.carriers_min < FEW_CARRIERS:
+        out.append(f"losses: down to {result.carriers_min:.3g} switching periods in an output period; losses are means over a switching period and mean little below {FEW_CARRIERS}")
     if study.spec.cooling.sink_sees == "chip-losses":
         out.append("heat: the sink is driven by the chips' losses at once (cooling.sink_sees = chip-losses), not by the heat that leaves the module")
     elif any(pair.thermal.layer for pair in study.module.chip_pairs()):
@@ -217,6 +219,10 @@ def rests_on(result) -> list[str]:
     out.extend(f"module: {note}" for note in study.module.notes)
     out.extend(f"duty: {note}" for note in study.profile.notes)
     return out
+
+
+#: With fewer switching periods in an output period, means over a switching period say little.
+FEW_CARRIERS = 10
 
 
 def _how_losses(study):

@@ -46,7 +46,7 @@ def rating_figure(over_switching, over_output, *, title: str) -> Figure:
     right.set_title(f"at {over_output[0].point.switching_frequency_hz / 1e3:g} kHz switching")
     if still:
         right.axhline(still[0].current_a, color=INK, lw=1.1, ls=(0, (7, 3)))
-        right.annotate(f"standstill, phase at its peak: {number(still[0].current_a, 3)} A", (0.99, still[0].current_a), xycoords=("axes fraction", "data"),
+        right.annotate(f"standstill at its worst angle: {number(still[0].current_a, 3)} A", (0.99, still[0].current_a), xycoords=("axes fraction", "data"),
                        xytext=(0, -3), textcoords="offset points", ha="right", va="top", fontsize=8)
     top = max(r.current_a for r in (*over_switching, *over_output))
     left.set_ylim(0.0, 1.15 * max(top, 1e-6))
@@ -169,5 +169,5 @@ def rating_text(ratings, title: str) -> str:
     lines = [title, f"  {'output, Hz':>10} {'switching, Hz':>14} {'largest current, A rms':>24} {'junction, degC':>15}   limited by"]
     for r in ratings:
         lines.append(f"  {r.point.frequency_hz:>10g} {r.point.switching_frequency_hz:>14g} {r.current_a:>24.1f} {r.t_vj_max_c:>15.1f}   {r.limited_by} ({r.chip})")
-    lines.append("  Held for ever, ripple included; 0 Hz: standstill with one phase at its peak.")
+    lines.append("  Held for ever, ripple included; 0 Hz: standstill at its worst angle.")
     return "\n".join(lines)

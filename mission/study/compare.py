@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import hashlib
 from dataclasses import dataclass
 
 import numpy as np
@@ -132,8 +133,17 @@ def compare(results, names=None) -> Comparison:
 
 
 def _same_duty(a, b):
-    return (a.profile.rows == b.profile.rows and np.isclose(a.profile.duration_s, b.profile.duration_s, rtol=1e-12)
-            and a.profile.ranges == b.profile.ranges and a.spec.lifetime.missions_per_year == b.spec.lifetime.missions_per_year)
+    return a.spec.lifetime.missions_per_year == b.spec.lifetime.missions_per_year and _fingerprint(a.profile) == _fingerprint(b.profile)
+
+
+def _fingerprint(profile) -> str:
+    """Digest of every row: times and all columns."""
+    digest = hashlib.sha256()
+    for block in profile.blocks():
+        digest.update(np.ascontiguousarray(block.time_s).tobytes() + np.ascontiguousarray(block.dt_s).tobytes())
+        for name in sorted(block.columns):
+            digest.update(name.encode() + np.ascontiguousarray(block.columns[name]).tobytes())
+    return digest.hexdigest()
 
 
 def _side(result, name):
@@ -163,8 +173,11 @@ def _notes(results, names):
             for key in sorted(one.keys() | other.keys()):
                 if one.get(key) != other.get(key):
                     yield f"{section}.{key}: {_word(one.get(key))} with {names[0]}, {_word(other.get(key))} with {name}"
-    if len({tuple((m.name, m.model.name) for m in r.study.modes) for r in results}) > 1:
-        yield "failure modes or lifetime models differ between the modules: a longer life may be a kinder curve"
+        for key in ("residue",):
+            if getattr(first.lifetime, key) != getattr(spec.lifetime, key):
+                yield f"lifetime.{key}: {getattr(first.lifetime, key)} with {names[0]}, {getattr(spec.lifetime, key)} with {name}"
+    if len({tuple((m.name, m.acts_on, m.chips, m.model.name, m.threshold_k, str(sorted(m.model.options.items()))) for m in r.study.modes) for r in results}) > 1:
+        yield "failure modes, lifetime models or their options differ: a longer life may be a kinder curve"
 
 
 def _word(value):

@@ -3,13 +3,15 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from types import SimpleNamespace
 
 import numpy as np
 
 from ..checks import require_range
-from ..errors import InputError, NoStableTemperature
-from ..history import ElectrothermalMarch, HeldPoint, MarchSettings
-from ..losses import build_tables, current_reach_a
+from ..device import current_sharing
+from ..errors import InputError, MissionError, NoStableTemperature, RangeError
+from ..history import ElectrothermalMarch, HeldPoint, MarchSettings, worst_standstill_rad
+from ..losses import DEAD_SHARE_MAX, build_tables, current_reach_a
 from ..machine import OperatingPoints
 from ..thermal import inverter_modes
 from .verdicts import junction_limit_c
@@ -31,7 +33,7 @@ class RatingPoint:
     power_factor : float
         Cosine of the displacement; negative: generating.
     coolant_c, dc_voltage_v, frequency_hz, switching_frequency_hz : float
-        ``frequency_hz`` = 0 is a standstill with phase a at its peak.
+        ``frequency_hz`` = 0 is a standstill at its worst angle. Schedules of the study may lower the switching frequency.
     """
 
     frequency_hz: float
@@ -78,7 +80,8 @@ class RatingBench:
     Parameters
     ----------
     study : Study
-        Its duty and machine are not used; its junction and current limits are.
+        Its duty and machine are not used; its junction and current limits are, and its schedules over output
+        frequency and current. A derating by junction temperature is left out: at the limit it would act already.
 
     Examples
     --------
@@ -102,37 +105,60 @@ class RatingBench:
         self._engine = ElectrothermalMarch(self.tables, self.network, settings)
 
     def periodic_peak_c(self, point: RatingPoint, i_peak_a: float) -> np.ndarray:
-        """Highest temperature of every chip in the periodic state, shape (n,) [degC]; infinite where none is stable."""
+        """Highest temperature of every chip in the periodic state, shape (n,) [degC]; infinite where none is stable.
+
+        Where the module states a spread of parallel chips it is that of the favoured one. A standstill is taken at its
+        worst angle. Schedules over output frequency and current lower the switching frequency of the point.
+        """
         phi = float(np.arccos(point.power_factor))
-        m = point.modulation_index()
-        held = HeldPoint(self.tables, self.network, i_peak_a=i_peak_a, mod_index=m, phi_rad=phi, frequency_hz=point.frequency_hz,
-                         switching_frequency_hz=point.switching_frequency_hz, dc_voltage_v=point.dc_voltage_v)
-        state = held.settle(point.coolant_c)
-        n = self.network.n_chips
+        m, n = point.modulation_index(), self.network.n_chips
+        load = {"i_peak_a": i_peak_a, "mod_index": m, "phi_rad": phi, "frequency_hz": point.frequency_hz, "dc_voltage_v": point.dc_voltage_v,
+                "switching_frequency_hz": self.switching_hz(point, i_peak_a)}
+        still = point.frequency_hz == 0.0
+        theta = worst_standstill_rad(self.tables, self.network, t_vj_c=self.limit_c, **load) if still and i_peak_a > 0.0 else 0.5 * np.pi
+        state = HeldPoint(self.tables, self.network, theta_rad=theta, **load).settle(point.coolant_c)
         if not state.exists:
             return np.full(n, np.inf)
-        if point.frequency_hz == 0.0 or i_peak_a == 0.0:
-            return state.t_vj_c
+        if still or i_peak_a == 0.0:
+            return self._with_favoured(state.t_vj_c, point.coolant_c + self.network.r_case_k_per_w() @ state.loss_w, i_peak_a)
         net, f = self.network, point.frequency_hz
         states = (net.rho_local / net.lam_local_per_s * state.loss_w).ravel(), net.b_shared @ state.loss_w / net.lam_shared_per_s, point.coolant_c
         # whole periods, long enough for the local modes to feel their own swing
         periods = max(1, round(0.2 * f)) if f < self._engine.settings.f_slow_hz else max(4, round(f))
         row = OperatingPoints(*(np.array([v]) for v in (f, 1.0, i_peak_a, m, phi, 0.0, np.nan, np.nan, np.nan, np.nan)))
         peak = state.t_vj_c
-        for _ in range(12):
+        for _ in range(60):
             self._engine.start(point.coolant_c, states=states)
             before = self._engine.states
             try:
                 rows = self._engine.add_block(row, dt_s=[periods / f], phase_id=[0], coolant_c=point.coolant_c,
-                                              switching_frequency_hz=point.switching_frequency_hz, dc_voltage_v=point.dc_voltage_v)
+                                              switching_frequency_hz=load["switching_frequency_hz"], dc_voltage_v=point.dc_voltage_v)
             except NoStableTemperature:
                 return np.full(n, np.inf)
             self._engine.finish()
             new = rows.t_max_c[0]
             if np.abs(new - peak).max() < 0.02:
-                return new
+                return self._with_favoured(new, rows.case_max_c[0], i_peak_a)
             peak, states = new, self._engine.periodic_start(before, periods / f)
-        return peak
+        raise MissionError(f"the periodic state at {f:g} Hz and {i_peak_a:.4g} A peak was not found in 60 rounds; the last two differ by more than 0.02 K")
+
+    def switching_hz(self, point: RatingPoint, i_peak_a: float) -> float:
+        """Switching frequency of a point, lowered by the study's schedules over output frequency and current [Hz]."""
+        load = SimpleNamespace(frequency_hz=np.array([point.frequency_hz]), i_peak_a=np.array([float(i_peak_a)]))
+        return min(point.switching_frequency_hz, float(self.study.spec.inverter.scheduled_hz(load)[0]))
+
+    def _with_favoured(self, t_vj_c, case_c, i_peak_a):
+        out = t_vj_c.copy()
+        for number, pair in enumerate(self.study.module.chip_pairs()):
+            part = getattr(self.study.module, pair.place)
+            if part.parallel is None or i_peak_a == 0.0:
+                continue
+            chips = slice(6 * number, 6 * number + 6)
+            hot = 6 * number + int(np.argmax(t_vj_c[chips]))
+            sharing = current_sharing(part.on_state, part.parallel.chips, part.parallel.on_state_spread_v, current_a=i_peak_a, t_vj_c=t_vj_c[hot],
+                                      local_rise_k=max(t_vj_c[hot] - case_c[hot], 0.0))
+            out[hot] = t_vj_c[hot] + sharing.hotter_k if sharing.settles else np.inf
+        return out
 
     def largest_current(self, point: RatingPoint) -> Rating:
         """Largest rms current for which every chip stays at or below the junction limit for ever.
@@ -174,6 +200,10 @@ class RatingBench:
     def _check(self, point):
         require_range("frequency_hz", point.frequency_hz, low=0.0, high=2000.0, unit="Hz")
         require_range("switching_frequency_hz", point.switching_frequency_hz, low=0.0, high=200e3, unit="Hz")
+        dead = 1e-6 * self.study.spec.inverter.dead_time_us
+        if dead * point.switching_frequency_hz > DEAD_SHARE_MAX:
+            raise RangeError("switching_frequency_hz", f"{point.switching_frequency_hz:g} Hz with a dead time of {1e6 * dead:g} us",
+                             f"at most {DEAD_SHARE_MAX / dead:g} Hz, where the dead time takes a tenth of the period")
         require_range("base_frequency_hz", point.base_frequency_hz, low=0.0, low_open=True, unit="Hz")
         require_range("power_factor", point.power_factor, low=-1.0, high=1.0)
         require_range("mod_index", point.mod_index, low=0.0, high=self.study.spec.inverter.mod_index_max * (1 + 1e-9))

@@ -34,7 +34,8 @@ class Stopped(MissionError):
 class HotPoint:
     """The row with the highest junction temperature, as an operating point; n chips.
 
-    ``t_vj_c`` and ``case_c`` (n,): highest temperatures in that row. ``end_s``: its end in the mission.
+    ``t_vj_c`` and ``case_c`` (n,): highest temperatures in that row. ``end_s``: its end in the mission, ``theta_rad``: angle of
+    the current of phase a there. The switching frequency is the one in force, derating included.
     """
 
     i_peak_a: float
@@ -47,13 +48,14 @@ class HotPoint:
     coolant_c: float
     end_s: float
     phase_id: int
+    theta_rad: float
     t_vj_c: np.ndarray
     case_c: np.ndarray
 
     def held(self, tables, network):
         """The point on a network, as if it lasted for ever: a :class:`mission.history.HeldPoint`."""
         return HeldPoint(tables, network, i_peak_a=self.i_peak_a, mod_index=self.mod_index, phi_rad=self.phi_rad, frequency_hz=self.frequency_hz,
-                         direction=self.direction, switching_frequency_hz=self.switching_frequency_hz, dc_voltage_v=self.dc_voltage_v)
+                         direction=self.direction, switching_frequency_hz=self.switching_frequency_hz, dc_voltage_v=self.dc_voltage_v, theta_rad=self.theta_rad)
 
 
 @dataclass(frozen=True)
@@ -77,6 +79,8 @@ class MissionResult:
         Highest peak phase current of the duty.
     dc_voltage_max_v, switching_frequency_max_hz, coolant_max_c : float
     mod_index_max, frequency_max_hz : float
+    carriers_min : float
+        Fewest switching periods in an output period under load.
     complete : bool
         False when the run was stopped before the mission's end.
     passes : int
@@ -101,6 +105,7 @@ class MissionResult:
     coolant_max_c: float
     mod_index_max: float
     frequency_max_hz: float
+    carriers_min: float
     complete: bool
     passes: int
     closes_within_k: float
@@ -183,10 +188,12 @@ def run(study: Study, *, progress: Progress | None = None, keep_cycles: bool = T
         if known is not None and passes > 4 and one.closes_within_k > 0.9 * known:
             break
         known = one.closes_within_k
+    if one.complete and spec.march.start == "repeat":
+        one.envelope.join_ends()
     one.close(spec.lifetime.residue)
     return MissionResult(
         study, one.envelope.finish(one.marched_s), one.ledger, one.cycle_map, network, tables, one.kept(),
-        one.hot_point, one.i_peak_max, one.dc_voltage_max, one.fsw_max, one.coolant_max, one.mod_index_max, one.frequency_max, one.complete, passes, one.closes_within_k, time.perf_counter() - begin,
+        one.hot_point, one.i_peak_max, one.dc_voltage_max, one.fsw_max, one.coolant_max, one.mod_index_max, one.frequency_max, one.carriers_min, one.complete, passes, one.closes_within_k, time.perf_counter() - begin,
     )
 
 
@@ -205,7 +212,7 @@ class _Pass:
         self.envelope = EnvelopeBuilder(profile.duration_s, chips, profile.phases, tables.temperature_data_c)
         self.engine = ElectrothermalMarch(tables, network, settings, derating=study.spec.inverter.derating, on_points=self._points, on_ripple=self._ripples)
         self.i_peak_max = self.mod_index_max = self.frequency_max = self.dc_voltage_max = self.fsw_max = 0.0
-        self.coolant_max, self.hot_c, self.hot_point, self.loaded_joint = -np.inf, -np.inf, None, False
+        self.coolant_max, self.hot_c, self.hot_point, self.loaded_joint, self.carriers_min = -np.inf, -np.inf, None, False, np.inf
         self.complete, self.marched_s, self._tables_kept = True, 0.0, []
 
     def _points(self, p):
@@ -258,7 +265,11 @@ class _Pass:
                     fsw = spec.inverter.switching_hz(part)
                     rows = self.engine.add_block(part, dt_s=block.dt_s[b], phase_id=block.phase_id[b], coolant_c=t_cool[b],
                                                  switching_frequency_hz=fsw, dc_voltage_v=v_dc[b])
-                    self._note_hottest(rows, part, fsw, v_dc[b])
+                    self._note_hottest(rows, part, v_dc[b])
+                    self.fsw_max = max(self.fsw_max, float(fsw.max()))
+                    turning = (part.frequency_hz > 0.0) & (part.i_peak_a > 0.0)
+                    if turning.any():
+                        self.carriers_min = min(self.carriers_min, float((rows.switching_hz / np.where(turning, part.frequency_hz, 1.0))[turning].min()))
                     self.envelope.add(rows)
                     self.marched_s = float(rows.end_s[-1])
                     self._take(self.counter.drain())
@@ -281,15 +292,14 @@ class _Pass:
             ends, began = (t.reshape(-1, 3, 2).mean(axis=1) for t in (ends, began))
         self.closes_within_k = float(np.abs(ends - began).max()) if self.complete else float("nan")
 
-    def _note_hottest(self, rows, points, fsw, v_dc):
-        self.fsw_max = max(self.fsw_max, float(fsw.max()))
+    def _note_hottest(self, rows, points, v_dc):
         hot = rows.t_max_c.max(axis=1)
         k = int(np.argmax(hot))
         if hot[k] > self.hot_c:
             self.hot_c = float(hot[k])
             self.hot_point = HotPoint(*(float(v[k]) for v in (points.i_peak_a, points.mod_index, points.phi_rad, points.frequency_hz, points.direction,
-                                                               fsw, v_dc, rows.coolant_c, rows.end_s)),
-                                      int(rows.phase_id[k]), rows.t_max_c[k].copy(), rows.case_max_c[k].copy())
+                                                               rows.switching_hz, v_dc, rows.coolant_c, rows.end_s)),
+                                      int(rows.phase_id[k]), float(rows.theta_rad[k]), rows.t_max_c[k].copy(), rows.case_max_c[k].copy())
 
     def next_start(self):
         return self.engine.periodic_start(self._start_states, self.marched_s)

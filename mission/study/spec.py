@@ -59,6 +59,11 @@ class ScheduleSpec(FileModel):
         for k, (a, b) in enumerate(zip(self.at, self.at[1:]), 2):
             if b <= a:
                 raise RangeError("at", f"{b:g} at point {k} after {a:g}", "values that rise from point to point", "sort the points")
+        low, high, unit, hint = {"output-frequency": (0.0, 5e3, "Hz", "frequencies are in Hz"), "current": (0.0, 20e3, "A rms", "currents are in A rms"),
+                                 "junction": (-60.0, 250.0, "degC", "temperatures are in degrees Celsius")}[self.over]
+        for one in self.at:
+            if not low <= one <= high:
+                raise RangeError("at", f"{one:g} {unit}", f"{low:g} to {high:g} {unit}", hint)
         if max(self.hz) > 200e3:
             raise RangeError("hz", f"{max(self.hz):g} Hz", "at most 200000 Hz", "frequencies are in Hz")
         return self
@@ -107,7 +112,11 @@ class InverterSpec(FileModel):
 
     def switching_hz(self, points):
         """Switching frequency of operating points: the fixed one, lowered by the schedules over output frequency and current [Hz]."""
-        out = np.full(points.frequency_hz.shape, self.switching_frequency_hz)
+        return np.minimum(self.switching_frequency_hz, self.scheduled_hz(points))
+
+    def scheduled_hz(self, points):
+        """What the schedules over output frequency and current allow at most; infinite without any [Hz]."""
+        out = np.full(points.frequency_hz.shape, np.inf)
         for one in self.schedule:
             if one.over != "junction":
                 quantity = points.frequency_hz if one.over == "output-frequency" else points.i_peak_a / np.sqrt(2.0)
@@ -124,7 +133,7 @@ class InverterSpec(FileModel):
 
     def table_options(self) -> dict:
         """What the loss tables need to know."""
-        return {"dead_time_s": 1e-6 * self.dead_time_us, "dead_time_compensated": self.dead_time_compensated,
+        return {"overmodulation": self.overmodulation, "dead_time_s": 1e-6 * self.dead_time_us, "dead_time_compensated": self.dead_time_compensated,
                 "r_gate_on_ohm": self.r_gate_on_ohm, "r_gate_off_ohm": self.r_gate_off_ohm}
 
 
@@ -292,6 +301,9 @@ def _check_together(study: Study) -> None:
         where = f"{profile.source}, column '{spec.duty.columns.dc_voltage.column}'" if from_duty and spec.duty.columns.dc_voltage else f"{study.source}, field inverter.dc_voltage_v"
         raise InputError(where, f"{top:g} V", f"below {'twice ' if module.arrangement == 'npc-leg' else ''}the blocking voltage of {module.name}, {module.ratings.v_ces_v:g} V",
                          "check the unit, or choose a module of a higher voltage class")
+    if spec.inverter.stray_inductance_nh is not None and module.switching is None:
+        raise InputError(f"{study.source}, field inverter.stray_inductance_nh", f"{spec.inverter.stray_inductance_nh:g} nH, and no section switching in {module.name}",
+                         "a module file with [switching] (its own inductance and fall time)", "add the section to the module file, or take the field out")
     needs = {"synchronous": ("speed_rad_s",), "direct": ("frequency_hz", "mod_index", "phi_rad", "current_a")}[spec.machine.kind]
     words = {"speed_rad_s": "speed", "frequency_hz": "frequency", "mod_index": "mod_index", "phi_rad": "displacement or power_factor", "current_a": "current"}
     for quantity in needs:
@@ -341,11 +353,13 @@ def check_rows(study: Study) -> None:
 
 def check_parts(study: Study) -> None:
     """Build the loss tables and the thermal network once, so that parts which do not go together are found without a run."""
+    from ..history import check_fit
     from ..losses import build_tables
     from ..thermal import inverter_modes
 
     try:
-        build_tables(study.module, study.spec.inverter.modulation, **study.spec.inverter.table_options())
-        inverter_modes(study.module, study.spec.cooling, materials=study.materials(), relative_tolerance=study.spec.march.network_tolerance)
+        tables = build_tables(study.module, study.spec.inverter.modulation, **study.spec.inverter.table_options())
+        network = inverter_modes(study.module, study.spec.cooling, materials=study.materials(), relative_tolerance=study.spec.march.network_tolerance)
+        check_fit(tables, network)
     except InputError as err:
         raise err.at(study.source) from None

@@ -90,7 +90,9 @@ def _parallel(result):
     """The favoured one of parallel chips, where the module file states a spread."""
     module, point = result.study.module, result.hot_point
     own = result.study.spec.limits.t_vj_max_c
-    limit = own if own is not None else module.ratings.t_vj_overload_c or module.ratings.t_vj_op_max_c
+    limit = junction_limit_c(result.study)
+    if own is None and module.ratings.t_vj_overload_c is not None and result.history.peak_c.max() > module.ratings.t_vj_op_max_c:
+        limit = module.ratings.t_vj_overload_c  # the overload and its time are judged above
     for number, pair in enumerate(module.chip_pairs()):
         part = getattr(module, pair.place)
         if part.parallel is None:

@@ -34,18 +34,19 @@ NOTHING = flat([0, 1000], [0, 0])
 
 
 BASE = ref.Params(
-    switch_on_state=flat([0, 500], [0.90, 0.90 + 0.006 * 500]),
-    switch_turn_on=NOTHING, switch_turn_off=NOTHING,
-    diode_on_state=flat([0, 500], [0.95, 0.95 + 0.0045 * 500]),
-    diode_recovery=NOTHING,
-    switch_r_k_per_w=R4, switch_tau_s=TAU4, diode_r_k_per_w=R4, diode_tau_s=TAU4,
+    switch=ref.Part(flat([0, 500], [0.90, 0.90 + 0.006 * 500]), NOTHING, NOTHING, r_k_per_w=R4, tau_s=TAU4),
+    diode=ref.Part(flat([0, 500], [0.95, 0.95 + 0.0045 * 500]), recovery=NOTHING, r_k_per_w=R4, tau_s=TAU4),
     sink_r_k_per_w=COLD, sink_tau_s=(1.0,), coolant_c=0.0, f_sw_hz=0.0, v_dc_v=600.0,
 )  # fmt: skip
 
 
 def straight(**changes):
-    """The straight-line device with some fields changed."""
-    return replace(BASE, **changes)
+    """The straight-line device with some fields changed; ``switch_...`` and ``diode_...`` are fields of the two parts."""
+    parts = {
+        name: replace(getattr(BASE, name), **{k.removeprefix(f"{name}_"): changes.pop(k) for k in list(changes) if k.startswith(f"{name}_")})
+        for name in ("switch", "diode")
+    }
+    return replace(BASE, **parts, **changes)
 
 
 def invented_module(arrangement="six-pack", per="module", reference="case"):
@@ -171,19 +172,6 @@ def test_standstill():
     assert out["loss_w"][0] / turning == pytest.approx(3.51921, abs=1e-5)
 
 
-@pytest.mark.parametrize("modulation", ref.MODULATIONS)
-def test_compiled_losses_equal_plain_losses(demo, modulation):
-    # Independent code: NumPy on the raw curves against the union table, inside and outside the curves' range.
-    p = replace(demo, modulation=modulation)
-    rng = np.random.default_rng(5)
-    out = np.zeros(12)
-    for _ in range(300):
-        alpha, phi, i = rng.uniform(-7, 7), rng.uniform(-3, 3), rng.uniform(0, 900)
-        m, d, t = rng.uniform(0, 1.1), rng.choice([-1.0, 1.0]), rng.uniform(-40, 190, 12)
-        ref._losses(alpha, alpha + d * phi, i, m, ref.MODULATIONS.index(modulation), t, *ref._tables(p, 700.0), out)
-        np.testing.assert_allclose(out, ref.losses_w(p, alpha, i, m, phi, t, d, 700.0), rtol=1e-11, atol=1e-9)
-
-
 def test_backward_rotation_is_forward_with_b_and_c_swapped(demo):
     # Analytic: in time the inverter cannot tell; sin(-wt) is sin(wt + pi).
     n = 4
@@ -192,6 +180,184 @@ def test_backward_rotation_is_forward_with_b_and_c_swapped(demo):
     swap = [0, 1, 4, 5, 2, 3, 6, 7, 10, 11, 8, 9]
     np.testing.assert_allclose(back["peak_c"], forth["peak_c"][swap], atol=1e-9)
     np.testing.assert_allclose(back["energy_j"], forth["energy_j"][swap], rtol=1e-11)
+
+
+def every_kind():
+    """Straight-line devices of every kind of leg, each curve with numbers of its own."""
+    level = iter(np.linspace(0.6, 1.4, 40))
+
+    def on_state():
+        v = next(level)
+        return warming([0, 40, 500], [v, v + 0.4, v + 0.4 + 0.004 * v * 460], 25, -0.001 * v)
+
+    def energy():
+        e = next(level)
+        return warming([0, 50, 500], [0.2e-3 * e, 3e-3 * e, 50e-3 * e], 125, 0.003 * e, 500.0, e)
+
+    def switch(**more):
+        return ref.Part(on_state(), energy(), energy(), r_k_per_w=R4, tau_s=TAU4, **more)
+
+    def diode(r=R4, recovery=True):
+        return ref.Part(on_state(), recovery=energy() if recovery else None, r_k_per_w=r, tau_s=TAU4 if r else ())
+
+    common = {"sink_r_k_per_w": (0.01,), "sink_tau_s": (1.0,), "coolant_c": 40.0, "f_sw_hz": 7000.0, "v_dc_v": 700.0}
+    inner = {"inner_switch": switch(), "inner_diode": diode()}
+    return {
+        "two-level": ref.Params(switch(), diode(), **common),
+        "Schottky": ref.Params(switch(), diode(recovery=False), **common),
+        "reverse-conducting": ref.Params(switch(), diode(()), **common),
+        "mosfet": ref.Params(switch(reverse=on_state()), diode(()), **common),
+        "npc": ref.Params(switch(), diode(), kind="npc", clamp_diode=diode(), **inner, **common),
+        "t-type": ref.Params(switch(), diode(), kind="t-type", **inner, **common),
+    }
+
+
+KINDS = every_kind()
+
+
+@pytest.mark.parametrize("modulation", ref.MODULATIONS)
+@pytest.mark.parametrize("kind", KINDS)
+def test_compiled_losses_equal_plain_losses(kind, modulation):
+    # Independent code: rules in words over the raw curves against rules in numbers over the union table, inside and outside the curves' range.
+    rng = np.random.default_rng(5)
+    most = 2 / math.sqrt(3) if modulation.startswith("clamp") else ref.SIX_STEP
+    for n in range(150):
+        p = replace(KINDS[kind], modulation=modulation, dead_time_s=rng.choice([0.0, 3e-6]), dead_time_compensated=bool(n % 3 == 0))
+        out = np.zeros(p.n_chips)
+        alpha, phi, i = rng.uniform(-7, 7), rng.uniform(-3, 3), rng.uniform(0, 900)
+        # few sizes, because each one beyond the linear range asks for its own search
+        m, d, t = most * rng.integers(1, 25) / 24, rng.choice([-1.0, 1.0]), rng.uniform(-40, 190, p.n_chips)
+        f = rng.choice([0.0, 50.0, 700.0])
+        row = ref._setting(p, m, d * phi, f, d, p.f_sw_hz)
+        ref._losses(alpha, alpha + d * phi, i, row, t, *ref._tables(p, 700.0), out)
+        np.testing.assert_allclose(out, ref.losses_w(p, alpha, i, m, phi, t, d, 700.0, f), rtol=1e-9, atol=1e-9)
+
+
+ONE_VOLT, TWO_VOLT = flat([0, 1000], [1, 1]), flat([0, 1000], [2, 2])
+PER_AMPERE = flat([0, 1000], [0, 1e-3])  # 1 uJ/A
+
+
+def plain(kind, **more):
+    """Devices that drop 1 V; energies of 1 uJ/A where asked for."""
+    switch = ref.Part(ONE_VOLT, NOTHING, NOTHING, r_k_per_w=R4, tau_s=TAU4)
+    diode = ref.Part(ONE_VOLT, recovery=NOTHING, r_k_per_w=R4, tau_s=TAU4)
+    inner = {} if kind == "two-level" else {"inner_switch": switch, "inner_diode": diode}
+    if kind == "npc":
+        inner["clamp_diode"] = diode
+    common = {"sink_r_k_per_w": COLD, "sink_tau_s": (1.0,), "coolant_c": 50.0, "f_sw_hz": 1000.0, "v_dc_v": 1.0}
+    return ref.Params(**{"switch": switch, "diode": diode, **common, **inner, "kind": kind, **more})
+
+
+def of_leg_a(params, *point, **more):
+    """Mean losses of the chips of leg a by position."""
+    loss = ref.steady_extremes(params, *point, **more)["loss_w"].reshape(-1, 3, 2)
+    return loss[:, 0].ravel()
+
+
+@pytest.mark.parametrize("phi", [0.0, 0.7, -0.7, 2.4])
+@pytest.mark.parametrize("kind", ["npc", "t-type"])
+def test_three_level_conduction(kind, phi):
+    # Analytic: with 1 V a chip's loss is its mean current. Voltage and current of like sign: m I/(4 pi) ((pi - |phi|) cos phi + sin |phi|),
+    # of unlike sign m I/(4 pi) (sin |phi| - |phi| cos phi); half wave I/pi.
+    i, m, size = 200.0, 0.8, abs(phi)
+    like = m * i / (4 * math.pi) * ((math.pi - size) * math.cos(size) + math.sin(size))
+    unlike = m * i / (4 * math.pi) * (math.sin(size) - size * math.cos(size))
+    half, middle = i / math.pi, i / math.pi - like - unlike
+    expected = {"npc": [like, half - unlike, unlike, unlike, middle], "t-type": [like, middle, unlike, middle]}[kind]
+    np.testing.assert_allclose(of_leg_a(plain(kind), 20.0, i, m, phi), np.repeat(expected, 2), rtol=0, atol=0.01)
+
+
+@pytest.mark.parametrize("kind, on, recovers", [
+    ("npc", {"switch": "like", "inner_switch": "unlike"}, {"clamp_diode": "like", "diode": "unlike"}),
+    ("t-type", {"switch": "like", "inner_switch": "unlike"}, {"inner_diode": "like", "diode": "unlike"}),
+])
+def test_three_level_switching(kind, on, recovers):
+    # Analytic: half the link, 1 uJ/A at 0.5 V; current while voltage and current have like sign I/(2 pi) (1 + cos phi), else (1 - cos phi).
+    i, phi, p = 200.0, 0.9, plain(kind)
+    energy = replace(PER_AMPERE, v_ref_v=0.5, voltage_exponent=1.0)
+    parts = {name: replace(getattr(p, name), on_state=NOTHING) for name, *_ in p.leg.pairs}
+    watts = {"like": i / (2 * math.pi) * (1 + math.cos(phi)) * 1e-3, "unlike": i / (2 * math.pi) * (1 - math.cos(phi)) * 1e-3}
+    for what, where in (("turn_on", on), ("turn_off", on), ("recovery", recovers)):
+        hot = {name: replace(part, **{what: energy}) for name, part in parts.items() if (what == "recovery") == ("diode" in name)}
+        expected = [watts[where[name]] if name in where else 0.0 for name, *_ in p.leg.pairs]
+        np.testing.assert_allclose(of_leg_a(replace(p, **{**parts, **hot}), 20.0, i, 0.8, phi), np.repeat(expected, 2), rtol=0, atol=3e-5)
+
+
+# Published: A. M. Hava, R. J. Kerkman, T. A. Lipo, IEEE Trans. Ind. Appl. 34 (1998) 1059-1071: 1 - cos(phi)/2 up to 60 degrees, then
+# (sqrt 3)/2 sin(phi). Analytic: held at the current's peak one half; 30-degree clamp at 0 and 90 degrees 1 - (cos 30 - cos 60);
+# at one rail the loaded switch keeps 1 - cos 30, the other everything.
+@pytest.mark.parametrize("modulation, deg, upper, lower", [
+    ("clamp-60-voltage-peak", 0, 0.5, 0.5), ("clamp-60-voltage-peak", 30, 0.56699, 0.56699), ("clamp-60-voltage-peak", -75, 0.83652, 0.83652),
+    ("clamp-60-voltage-peak", 180, 0.5, 0.5), ("clamp-60-current-peak", 25, 0.5, 0.5), ("clamp-60-current-peak", 155, 0.5, 0.5),
+    ("clamp-60-current-peak", 70, 0.616978, 0.616978), ("clamp-60-current-peak", 110, 0.616978, 0.616978), ("clamp-30", 0, 0.633975, 0.633975),
+    ("clamp-30", 90, 0.633975, 0.633975), ("clamp-120-upper", 0, 0.133975, 1.0), ("clamp-120-upper", 180, 1.0, 0.133975),
+    ("clamp-120-lower", 0, 1.0, 0.133975), ("sine", 40, 1.0, 1.0),
+])
+@pytest.mark.parametrize("direction", [1.0, -1.0])
+def test_switching_of_clamps(modulation, deg, upper, lower, direction):
+    p = plain("two-level", switch=ref.Part(NOTHING, PER_AMPERE, NOTHING, r_k_per_w=R4, tau_s=TAU4), modulation=modulation)
+    free = 300.0 / math.pi * 1e-3
+    loss = of_leg_a(p, 20.0, 300.0, 0.8, math.radians(deg), direction=direction)
+    np.testing.assert_allclose(loss[:2] / free, [upper, lower], rtol=0, atol=1e-3)
+
+
+@pytest.mark.parametrize("modulation, mod_index", [("sine", 1.1), ("third-harmonic", 1.2), ("third-harmonic-quarter", 1.13), ("space-vector", 1.25)])
+def test_overmodulation_keeps_the_fundamental(modulation, mod_index):
+    # Analytic: a diode-free leg at unity power factor; 1 V devices carry I/pi in all, switch less diode half the fundamental of the reference.
+    loss = of_leg_a(plain("two-level", modulation=modulation), 20.0, 300.0, mod_index, 0.0)
+    assert loss[0] - loss[2] == pytest.approx(mod_index * 300.0 / 4, rel=1e-4)
+    assert loss[0] + loss[2] == pytest.approx(300.0 / math.pi, rel=1e-5)
+
+
+@pytest.mark.parametrize("kind", ["two-level", "npc", "t-type"])
+def test_six_step_switches_once_a_period(kind):
+    # Analytic: with 40 degrees of lag the upper switch turns off I sin 40 once a period, whatever the carrier; when it turns on it carries nothing.
+    energy = replace(PER_AMPERE, v_ref_v=0.5 if kind != "two-level" else 1.0, voltage_exponent=1.0)
+    p = plain(kind, switch=ref.Part(NOTHING, energy, energy, r_k_per_w=R4, tau_s=TAU4))
+    phi, f = math.radians(40), 200.0
+    u, still = ref.references(0.5, ref.SIX_STEP, phi, "sine")
+    assert abs(u).min() == 1 and still.all()
+    loss = of_leg_a(p, f, 300.0, ref.SIX_STEP - 2e-5, phi, steps_per_period=20_000)
+    np.testing.assert_allclose(loss[:2], f * 300.0 * math.sin(phi) * 1e-6, rtol=0.01)
+
+
+def test_dead_time():
+    # Analytic: 1 V switches and 2 V diodes; 1 % of the period more in the diode. Compensated: nothing.
+    # MOSFET: reverse channel 1 V, body diode 2 V for 2 % of the period.
+    i, m, phi = 200.0, 0.7, 0.4
+    p = plain("two-level", diode=ref.Part(TWO_VOLT, recovery=NOTHING, r_k_per_w=R4, tau_s=TAU4))
+    base = of_leg_a(p, 20.0, i, m, phi)
+    late = of_leg_a(replace(p, dead_time_s=1e-5), 20.0, i, m, phi)
+    np.testing.assert_allclose(late - base, [-0.01 * i / math.pi] * 2 + [0.02 * i / math.pi] * 2, atol=1e-3)
+    same = of_leg_a(replace(p, dead_time_s=1e-5, dead_time_compensated=True), 20.0, i, m, phi)
+    np.testing.assert_allclose(same, base, atol=1e-9)
+    mosfet = replace(p, switch=replace(p.switch, reverse=ONE_VOLT), diode=ref.Part(TWO_VOLT, recovery=NOTHING))
+    for compensated in (False, True):
+        loss = of_leg_a(replace(mosfet, dead_time_s=1e-5, dead_time_compensated=compensated), 20.0, i, m, phi)
+        np.testing.assert_allclose(loss, i / math.pi * (1 + 0.02), rtol=1e-4)
+
+
+def test_pulses_shorter_than_the_dead_time():
+    # Analytic: the upper pulse lasts (1 - m)/2 = 0.75 % when the current is at its peak, the dead time 1 %: nothing switches, the lower diode
+    # carries everything. A MOSFET's body diode does so for 0.75 + 1 % of the time, the channel for the rest.
+    p = plain("two-level", switch=ref.Part(ONE_VOLT, PER_AMPERE, PER_AMPERE, r_k_per_w=R4, tau_s=TAU4), dead_time_s=1e-5)
+    peak = (math.pi / 2, 100.0, 0.985, math.pi, np.full(12, 50.0))
+    np.testing.assert_allclose(ref.losses_w(p, *peak)[[0, 1, 6, 7]], [0, 0, 0, 100.0], atol=1e-9)
+    np.testing.assert_allclose(ref.losses_w(replace(p, dead_time_compensated=True), *peak)[[0, 7]], [0.75 + 200.0 * 1e-3, 99.25], atol=1e-9)
+    mosfet = replace(p, switch=replace(p.switch, reverse=ONE_VOLT), diode=ref.Part(TWO_VOLT, recovery=NOTHING))
+    assert ref.losses_w(mosfet, *peak[:-1], np.full(6, 50.0))[1] == pytest.approx(100.0 * (1 + 0.0175))
+
+
+def test_derating():
+    # Analytic: a schedule that allows one frequency only is that frequency; one that starts above every temperature changes nothing.
+    rows = ref.rows([0.4, 0.3, 0.2], [0.0, 3.0, 30.0], 1.0, 300.0, 0.5, 0.4)
+    p = KINDS["npc"]
+    free, half = ref.transient(p, rows), ref.transient(replace(p, f_sw_hz=p.f_sw_hz / 2), rows)
+    always = ref.transient(p, rows, derating=([0.0, 1.0], [p.f_sw_hz / 2] * 2))
+    never = ref.transient(p, rows, derating=([900.0, 950.0], [1e5, 1.0]))
+    np.testing.assert_allclose(always["energy_j"], half["energy_j"], rtol=1e-9)
+    np.testing.assert_allclose(never["energy_j"], free["energy_j"], rtol=1e-9)
+    assert len(always["f_sw_hz"]) == 9 and set(always["f_sw_hz"]) == {p.f_sw_hz / 2}
 
 
 # ---- Heat ------------------------------------------------------------------------------------------

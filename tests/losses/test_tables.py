@@ -96,7 +96,8 @@ def test_period_means_are_the_exact_means(case, current, m, phi, t_c, f_sw, dire
 def test_instants(case, current, m, phi, t_c, theta, compiled):
     name, modulation, dead = case
     i = current * MODULES[name].ratings.i_peak_repetitive_a
-    point = {"i_peak_a": i, "mod_index": m * modulation.mod_index_max, "phi_rad": phi, "t_vj_c": t_c, "switching_frequency_hz": 8e3, "v_dc_v": 600.0}
+    point = {"i_peak_a": i, "mod_index": m * modulation.mod_index_max, "phi_rad": phi, "t_vj_c": t_c, "switching_frequency_hz": 8e3, "v_dc_v": 600.0,
+             "frequency_hz": 50.0}
     around = [leg_losses_at_angle_w(MODULES[name], modulation, [theta - d, theta + d], **point, **(DEAD if dead else {})).total_w for d in (1e-7,)][0]
     if np.abs(around[:, 0] - around[:, 1]).max() > 1e-3 * around.max() + 0.01:
         return  # a jump: either side is right

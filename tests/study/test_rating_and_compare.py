@@ -9,6 +9,8 @@ import pytest
 import mission
 import mission.machine
 from mission.errors import InputError, RangeError
+from mission.history import HeldPoint
+from mission.losses import Modulation
 from mission.study import RatingBench, compare, rating_point
 
 
@@ -55,6 +57,31 @@ def test_standstill_is_the_worst_and_more_switching_costs_current(study, bench):
     assert bench.largest_current(replace(point, coolant_c=145.0)).current_a == 0.0
     with pytest.raises(RangeError, match="power_factor"):
         bench.largest_current(replace(point, power_factor=1.5))
+
+
+@pytest.mark.parametrize("modulation", list(Modulation))
+def test_a_standstill_at_no_angle_is_worse_than_rated(study, modulation):
+    """Clamps: which phase is held decides as much as the peak of the current (*analytic*: all angles tried one by one)."""
+    bench = RatingBench(study.changed("inverter", modulation=modulation.value))
+    point = replace(rating_point(study), frequency_hz=0.0)
+    rated = bench.largest_current(point)
+    load = {"i_peak_a": np.sqrt(2.0) * rated.current_a, "mod_index": point.mod_index_low, "phi_rad": np.arccos(point.power_factor), "frequency_hz": 0.0,
+            "switching_frequency_hz": point.switching_frequency_hz, "dc_voltage_v": point.dc_voltage_v}
+    hottest = [HeldPoint(bench.tables, bench.network, theta_rad=a, **load).settle(point.coolant_c).t_vj_c.max() for a in np.radians(np.arange(0.5, 360.0, 3.7))]
+    assert max(hottest) <= bench.limit_c + 0.3 and max(hottest) > bench.limit_c - 3.0
+    slow = bench.largest_current(replace(point, frequency_hz=0.05))
+    assert rated.current_a <= slow.current_a * 1.01
+
+
+def test_schedules_lower_the_switching_frequency_of_a_rating(study):
+    data = study.spec.inverter.model_dump(exclude_none=True) | {"schedule": [{"over": "output-frequency", "at": [0.0, 5.0], "hz": [1000.0, 1000.0]}]}
+    scheduled = RatingBench(study.changed("inverter", **data))
+    slow = RatingBench(study.changed("inverter", switching_frequency_hz=1000.0))
+    point = replace(rating_point(study), frequency_hz=1.0)
+    assert scheduled.largest_current(point).current_a == pytest.approx(slow.largest_current(replace(point, switching_frequency_hz=1000.0)).current_a, rel=1e-3)
+    late = RatingBench(study.changed("inverter", dead_time_us=10.0))
+    with pytest.raises(RangeError, match="a tenth of the period"):
+        late.largest_current(replace(point, switching_frequency_hz=30e3))
 
 
 def test_sides_repeat_their_results(study):
