@@ -24,5 +24,6 @@ def test_every_kind_costs_little_more_than_the_two_level_sine_case(capsys):
     with capsys.disabled():
         print("\n" + "; ".join(f"{module}, {modulation}: {r:.2f}" for (module, modulation), r in ratio.items()), end="")
     for (module, modulation), r in ratio.items():
-        # measured: up to 1.9 with two levels, up to 4 with the 24 or 30 chips of three; a loaded machine drifts
-        assert r < (7.0 if module in ("dunlin-300", "curlew-300") else 3.5), (module, modulation)
+        # measured: up to 1.4 where no loss jumps, 4 with clamps, 8 with the 24 or 30 chips of three levels; a loaded machine drifts
+        smooth = not modulation.startswith("clamp")
+        assert r < (16.0 if module in ("dunlin-300", "curlew-300") else 3.0 if smooth else 8.0), (module, modulation)
