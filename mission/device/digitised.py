@@ -27,6 +27,7 @@ UNITS: dict[str, dict[str, float]] = {
     "z_th": {"K/W": 1.0, "mK/W": 1e-3},
     "resistance": {"ohm": 1.0, "mohm": 1e-3},
     "dc_voltage": {"V": 1.0, "kV": 1e3},
+    "temperature": {"degC": 1.0, "K": 1.0},
 }
 #: Below this share of a curve's largest value a change is measured against that share of it, not against the value.
 SMALL = 0.1
