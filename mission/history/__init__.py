@@ -1,8 +1,10 @@
 """Operating points, module and network -> junction temperatures over the mission."""
 
 from .envelope import EnvelopeBuilder, JunctionHistory
-from .march import ElectrothermalMarch, MarchSettings, PointBlock, RippleBlock, RowEnvelope, check_fit
+from .march import MOST_PIECES, ElectrothermalMarch, MarchSettings, PointBlock, RippleBlock, RowEnvelope, check_fit
 from .steady import HeldPoint, SteadyState, worst_standstill_rad
 
-__all__ = ["ElectrothermalMarch", "EnvelopeBuilder", "HeldPoint", "JunctionHistory", "MarchSettings", "PointBlock", "RippleBlock", "RowEnvelope", "SteadyState",
-           "check_fit", "worst_standstill_rad"]
+__all__ = [
+    "ElectrothermalMarch", "EnvelopeBuilder", "HeldPoint", "JunctionHistory", "MOST_PIECES", "MarchSettings", "PointBlock", "RippleBlock",
+    "RowEnvelope", "SteadyState", "check_fit", "worst_standstill_rad",
+]

@@ -282,7 +282,7 @@ class ElectrothermalMarch:
         k = self._k
         self._check_current(points)
         dt_s = np.asarray(dt_s, float)
-        pieces = self._pieces(points, dt_s)
+        pieces = self.pieces(points, dt_s)
         if pieces.sum() > MOST_PIECES and dt_s.size > 1:
             # long rows are many pieces: go through them in parts, so that memory stays bounded
             middle = int(np.clip(np.searchsorted(np.cumsum(pieces), 0.5 * pieces.sum()), 1, dt_s.size - 1))
@@ -375,7 +375,7 @@ class ElectrothermalMarch:
                    self._last, self._heading, *self._points)
         self._before_first = False
 
-    def _pieces(self, points, dt_s):
+    def pieces(self, points: OperatingPoints, dt_s) -> np.ndarray:
         """How many pieces each row is cut into, so that its points fit the buffers."""
         slow = (points.i_peak_a > 0.0) & (points.frequency_hz > 0.0) & (points.frequency_hz < self.settings.f_slow_hz)
         steps = np.where(slow, np.maximum(points.frequency_hz * self.settings.steps_per_period, 50.0), 1.0) * dt_s

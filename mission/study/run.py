@@ -10,7 +10,7 @@ import numpy as np
 
 from ..cycles import CycleCounter, CycleTable, RippleClasses
 from ..errors import InputError, MissionError
-from ..history import ElectrothermalMarch, EnvelopeBuilder, HeldPoint, JunctionHistory, MarchSettings
+from ..history import MOST_PIECES, ElectrothermalMarch, EnvelopeBuilder, HeldPoint, JunctionHistory, MarchSettings
 from ..lifetime import DamageLedger
 from ..losses import LossTables, build_tables
 from ..machine import operating_points
@@ -258,9 +258,13 @@ class _Pass:
                     self._start_states = self.engine.states
                     self._start_c = self.engine.junction_c
                     first = False
-                # hand the kernel a few thousand rows at a time, so that a stop is heard between them
-                for a in range(0, n, 8192):
-                    b = slice(a, min(a + 8192, n))
+                # hand the kernel a few thousand rows at a time, fewer of long ones, so that a stop is heard between them and cycles do not pile up
+                work = np.concatenate([[0], np.cumsum(self.engine.pieces(points, block.dt_s))])
+                a = 0
+                while a < n:
+                    enough = int(np.searchsorted(work, work[a] + MOST_PIECES, side="right")) - 1
+                    b = slice(a, min(a + 8192, n, max(enough, a + 1)))
+                    a = b.stop
                     part = points.rows(b)
                     fsw = spec.inverter.switching_hz(part)
                     rows = self.engine.add_block(part, dt_s=block.dt_s[b], phase_id=block.phase_id[b], coolant_c=t_cool[b],

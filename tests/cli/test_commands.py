@@ -67,6 +67,10 @@ def test_module_prints_and_draws(tmp_path, capsys):
     assert "did you mean 'heron-300'?" in capsys.readouterr().err
     assert main(["module", "heron-300", "--modulation", "space vector"]) == BAD_INPUT
     assert "did you mean 'space-vector'?" in capsys.readouterr().err
+    for flag, value in (("--dc-voltage", "nan"), ("--dc-voltage", "1300"), ("--switching-frequency", "1e9"), ("--switching-frequency", "0")):
+        assert main(["module", "heron-300", flag, value]) == BAD_INPUT
+        out, err = capsys.readouterr()
+        assert flag in err and out == ""
 
 
 def test_sheet_makes_the_shipped_module(tmp_path, capsys):

@@ -219,3 +219,30 @@ def test_negative_extension_names_curve_and_temperature():
         build_tables(uneven(), Modulation.SINE)
     text = str(caught.value)
     assert "recovery" in text and "25" in text
+
+
+def test_a_far_end_of_a_line_does_not_coarsen_the_table():
+    """Straight lines said to hold up to a kiloampere or to a megaampere: the same losses at the same current."""
+    data = straight_line_data()
+    means = []
+    for end in (600.0, 1e6):
+        data["switch"]["on_state"] = {"line": [{"t_vj_c": t, "v0_v": 0.9, "r_ohm": 6e-3, "current_end_a": end} for t in (25.0, 125.0)]}
+        read = Reader(build_tables(module_from_dict(data), Modulation.SINE), i=100.0, m=0.8, phi=0.5)
+        means.append(read.at(read.means(), 100.0))
+    np.testing.assert_allclose(means[1], means[0], rtol=1e-3)
+
+
+def test_the_peak_switches_at_the_edge_of_the_linear_range():
+    """At m = 1 as at m = 0.9999: the highest current must not lose its switching."""
+    tables = tables_of("heron-300", Modulation.SINE)
+    for phi in (0.0, np.pi):
+        edge, below = (Reader(tables, i=130.0, m=m, phi=phi, f_sw=16e3) for m in (1.0, 0.9999))
+        np.testing.assert_allclose(edge.nodes(64)[:, 0], below.nodes(64)[:, 0], rtol=1e-3, atol=0.3)
+
+
+def test_a_three_level_leg_at_zero_voltage_does_not_switch():
+    point = {"i_peak_a": 200.0, "mod_index": 0.0, "phi_rad": 0.3, "t_vj_c": 125.0, "switching_frequency_hz": 8e3, "v_dc_v": 800.0}
+    exact = leg_losses_w(MODULES["curlew-300"], Modulation.SINE, **point)
+    assert not exact.switching_w.any()
+    read = Reader(tables_of("curlew-300", Modulation.SINE), i=200.0, m=0.0, phi=0.3, v_dc=800.0)
+    np.testing.assert_allclose(read.at(read.means(), 125.0), exact.total_w[:, 0], rtol=1e-3, atol=1e-9)

@@ -214,3 +214,79 @@ def test_every_kind_of_module_goes_all_the_way(tmp_path, name, v_dc):
     assert {"report.html", "result.json", "temperatures.png", "losses.svg"} <= names
     text = (tmp_path / "out" / "report.html").read_text(encoding="utf-8")
     assert one.module.chip_names()[-1] in text
+
+
+def overload_of(seconds_hot, folder, csv, **sections):
+    """Longest stretch above a limit that the load passes in its last part."""
+    peak = float(mission.run(study(folder / "plain", csv, **sections)).history.peak_c.max())
+    ratings = {"t_vj_op_max_c": peak - 4.0, "t_vj_overload_c": peak + 5.0, "overload_longest_s": seconds_hot, "overload_share": 1.0}
+    return mission.run(study(folder / "watched", csv, ratings=ratings, **sections))
+
+
+def test_overload_does_not_depend_on_how_a_log_is_cut(tmp_path):
+    """0.2 Hz: each chip passes the limit once in every period, for a moment; one long row or many short ones tell the same."""
+    one = overload_of(60.0, tmp_path / "one", "t,I,f,m,cos_phi\n0,200,0.2,0.05,0.85\n50,200,0.2,0.05,0.85\n100,200,0.2,0.05,0.85\n")
+    many = "t,I,f,m,cos_phi\n" + "".join(f"{0.5 * k:g},200,0.2,0.05,0.85\n" for k in range(201))
+    cut = overload_of(60.0, tmp_path / "many", many)
+    longest = [float(r.history.longest_above_s.max()) for r in (one, cut)]
+    assert longest[0] < 5.0 and abs(longest[0] - longest[1]) <= 1.0
+
+
+def test_overload_goes_on_through_the_joint(tmp_path):
+    """Loaded at its end and at its start: one stretch of a repeated mission."""
+    csv = "t,I,f,m,cos_phi\n0,200,50,0.8,0.85\n20,0,0,0.05,1\n60,0,0,0.05,1\n80,200,50,0.8,0.85\n130,200,50,0.8,0.85\n140,200,50,0.8,0.85\n"
+    once = overload_of(600.0, tmp_path, csv, march={"start": "coolant"}).history.longest_above_s.max()
+    joined = overload_of(600.0, tmp_path / "joint", csv).history.longest_above_s.max()
+    assert joined > once + 5.0
+
+
+def test_the_hot_point_has_the_frequency_and_the_angle_that_were_in_force(tmp_path):
+    write(tmp_path, {"duty.csv": STEADY})
+    text = toml_text(direct_study(inverter=INVERTER | {"switching_frequency_hz": 20000}))
+    write(tmp_path, {"study.toml": text + '\n[[inverter.schedule]]\nover = "junction"\nat = [60, 90]\nhz = [20000, 2000]\n'})
+    derated = mission.run(mission.load_study(tmp_path / "study.toml"))
+    assert derated.hot_point.switching_frequency_hz < 15000.0
+    still = mission.run(study(tmp_path / "still", "t,I,f,m,cos_phi\n" + "".join(f"{t},150,0,0.02,0.85\n" for t in range(0, 400, 40)),
+                              march={"start_angle_deg": 37.0}))
+    assert np.degrees(still.hot_point.theta_rad) % 360.0 == pytest.approx(37.0)
+    assert mission.study.stability(still).settles_at_c == pytest.approx(float(still.history.peak_c.max()), abs=0.1)
+
+
+def test_few_carriers_are_told_and_a_useless_inductance_refused(tmp_path):
+    few = mission.run(study(tmp_path / "few", inverter=INVERTER | {"switching_frequency_hz": 300}))
+    assert few.carriers_min == pytest.approx(6.0) and any("switching periods in an output period" in s for s in mission.show.build_document(few).rests_on)
+    with pytest.raises(InputError, match="no section switching in Heron 300"):
+        study(tmp_path / "stray", inverter=INVERTER | {"stray_inductance_nh": 30.0})
+
+
+def test_check_refuses_what_a_run_would(tmp_path):
+    """Curves at more temperatures than the march has room for."""
+    heron = load_module("heron-300").model_dump()
+    for number, (part, name) in enumerate((("switch", "on_state"), ("switch", "turn_on"), ("switch", "turn_off"), ("diode", "on_state"), ("diode", "recovery"))):
+        for k, curve in enumerate(heron[part][name]["curve"]):
+            curve["t_vj_c"] = 25.0 + 50.0 * k + number
+    module = load_module("heron-300").model_validate(heron)
+    write(tmp_path, {"duty.csv": STEADY})
+    save_module(module, tmp_path / "module.toml")
+    write(tmp_path, {"study.toml": toml_text(direct_study(module={"file": "module.toml"}))})
+    with pytest.raises(InputError, match="study.toml: module: found .* curves at 15 different temperatures"):
+        mission.study.check_parts(mission.load_study(tmp_path / "study.toml"))
+
+
+@pytest.mark.slow
+def test_long_rows_are_marched_in_parts(tmp_path):
+    """*Analytic*: thirty rows of a quarter of an hour, derated every 0.1 s, are 270 000 pieces; memory does not hold them all at once."""
+    import tracemalloc
+
+    csv = "t,I,f,m,cos_phi\n" + "".join(f"{900 * k},200,50,0.8,0.85\n" for k in range(31))
+    duty = {**DIRECT_DUTY, "longest_step_s": 1000}
+    write(tmp_path, {"duty.csv": csv})
+    write(tmp_path, {"study.toml": toml_text(direct_study(duty=duty, march={"start": "coolant"}))
+                     + '\n[[inverter.schedule]]\nover = "junction"\nat = [60, 90]\nhz = [5000, 2000]\n'})
+    one = mission.load_study(tmp_path / "study.toml")
+    mission.run(study(tmp_path / "warm", STEADY))  # compiled before memory is looked at
+    tracemalloc.start()
+    result = mission.run(one, keep_cycles=False)
+    most = tracemalloc.get_traced_memory()[1]
+    tracemalloc.stop()
+    assert result.complete and most < 600e6
