@@ -69,8 +69,9 @@ def _current_line(ax, x, ratings):
     ax.plot(x[~free], y[~free], ls="", marker="o", ms=4, color=BLUE, mec=BLUE)
     ax.plot(x[free], y[free], ls="", marker="o", ms=5, mfc=PAPER, mec=BLUE, mew=1.2)
     for k in (0, len(ratings) - 1):
-        ax.annotate(f"{number(y[k], 3)} A\n{_kind(ratings[k].chip)}", (x[k], y[k]), xytext=(0, 7), textcoords="offset points",
-                    ha="left" if k == 0 else "right", va="bottom", fontsize=8, color=BLUE)
+        below = k > 0 and y[k] < y[k - 1]  # a falling line ends with its name under it
+        ax.annotate(f"{number(y[k], 3)} A\n{_kind(ratings[k].chip)}", (x[k], y[k]), xytext=(-6, -6) if below else (0, 7), textcoords="offset points",
+                    ha="left" if k == 0 else "right", va="top" if below else "bottom", fontsize=8, color=BLUE)
 
 
 @styled
