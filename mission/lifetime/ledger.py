@@ -274,7 +274,7 @@ class DamageLedger:
                 out.append(LedgerRow(
                     chip=self.chips[chip], mode=mode.name, acts_on=mode.acts_on, model=mode.model.name, damage_per_mission=total,
                     life_missions=missions, life_years=missions / self.missions_per_year, cycles=float(self._cycles[number, chip]),
-                    outside_share=min(1.0, float(self._outside[number, chip] / total)) if total > 0.0 else 0.0,
+                    outside_share=_share(self._outside[number, chip], total) if total > 0.0 else 0.0,
                     worst_range_k=float(worst[1]), worst_min_c=float(worst[2]), worst_max_c=float(worst[3]), worst_heating_s=float(worst[4]),
                     worst_start_s=float(worst[5]), worst_phase="" if none else self.phases[int(worst[6])], worst_damage=float(worst[0]),
                     damage_by_phase=dict(zip(self.phases, d.sum(axis=1).tolist())), damage_by_kind=dict(zip(KIND_WORDS, d.sum(axis=0).tolist())),
@@ -329,6 +329,12 @@ class DamageLedger:
                 out.append(f"{mode.name}: swings below {mode.threshold_k:g} K are left out; with them the damage of {row.chip} would be "
                            f"{row.left_out_damage / row.damage_per_mission:.1%} higher")
         return out
+
+
+def _share(part, total):
+    """A share; sums in another order are no reason to miss the whole by a rounding."""
+    share = float(part / total)
+    return 1.0 if share > 1.0 - 1e-12 else share
 
 
 def _percent(share):

@@ -70,8 +70,8 @@ def set_point(point, drive, i_peak, size, phi, direction, clip_first, clip_last,
     if drive[FOLLOWS_CURRENT] > 0.0:
         folded = point[PHI] - np.pi * np.round(point[PHI] / np.pi)
         point[SHIFT] = min(max(folded, -_TWELFTH), _TWELFTH)
-    # a reference that moves makes more edges its way than against it; in time it moves with the sense of rotation
-    point[EDGE_RATE] = (drive[LEVELS] - 1.0) * _TURN * f * direction / (4.0 * fsw) if fsw > 0.0 else 0.0
+    # overmodulation: a reference that moves fast makes more edges its way than against it; in time it moves with the sense of rotation
+    point[EDGE_RATE] = (drive[LEVELS] - 1.0) * _TURN * f * direction / (4.0 * fsw) if fsw > 0.0 and clip_first < _HALF else 0.0
     commutated = v_dc / (drive[LEVELS] - 1.0)
     for e in range(v_ref.size):
         point[SCALE + e] = gate[e] * (commutated / v_ref[e]) ** exponent[e] * fsw
@@ -182,7 +182,7 @@ def add_losses(theta, weight, point, drive, conduction, switching, i_step, volta
             out[position, k] += p * ((1.0 - u) * voltage[curve, j, k] + u * voltage[curve, j + 1, k])
     if not active or point[PEAK] <= 0.0:
         return
-    # edges in a switching period: one each, and more the way the reference moves; never less than none
+    # edges in a switching period: one each; in overmodulation more the way the reference moves, never less than none
     lean = slope * point[EDGE_RATE]
     rising, falling = 1.0 + lean, 1.0 - lean
     if lean > 1.0:

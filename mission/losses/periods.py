@@ -203,8 +203,8 @@ def leg_losses_w(module: PowerModule, modulation: Modulation, *, i_peak_a, mod_i
         Junction temperatures, one for all or one a position [degC].
     switching_frequency_hz, v_dc_v : array_like
     frequency_hz : array_like, optional
-        Output frequency; a reference that moves fast makes more edges its way than against it,
-        down to a single one in six-step. Without it the carrier is taken as much faster.
+        Output frequency; needed in overmodulation only, where a reference that moves fast makes more
+        edges its way than against it, down to a single one in six-step. Without it the carrier is taken as much faster.
     dead_time_s : float
         Time in which both switches of a pair are off [s].
     dead_time_compensated : bool
@@ -417,7 +417,7 @@ def _at_angles(case, part, theta):
 
 
 def _edges(case, part, x):
-    """Rising and falling edges in a switching period: one each, and more the way the reference moves.
+    """Rising and falling edges in a switching period: one each; in overmodulation more the way the reference moves.
 
     Over a stretch in which the reference climbs by d there are (levels - 1) d/2 more rising edges than falling ones, whatever
     the carrier; from rail to rail in less than half a switching period a single one is left.
@@ -426,8 +426,8 @@ def _edges(case, part, x):
     ends = (phase_reference(case.modulation, x + side, case.reference[part][:, None], case.phi[part][:, None]) for side in (1e-7, -1e-7))
     slope = np.subtract(*ends) / 2e-7
     lean = np.where(fsw > 0.0, slope * (case.plan.levels - 1) * 2.0 * np.pi * f / (4.0 * np.where(fsw > 0.0, fsw, 1.0)), 0.0)
-    # a jump of the reference between two held stretches is no ramp
-    lean = np.where(np.abs(slope) > 50.0 * case.reference[part][:, None] + 1e-9, 0.0, lean)
+    # in the linear range the carrier is taken as much faster than the reference
+    lean = np.where(case.clip_first[part][:, None] < np.pi / 2, lean, 0.0)
     return np.where(lean > 1.0, 2.0 * lean, np.maximum(1.0 + lean, 0.0)), np.where(lean < -1.0, -2.0 * lean, np.maximum(1.0 - lean, 0.0))
 
 
