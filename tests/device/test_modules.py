@@ -254,3 +254,11 @@ def test_layers_instead_of_branches_survive_writing():
     module = module_from_dict(data)
     assert module_from_dict(tomllib.loads(to_toml(module))) == module
     assert not [n for n in module.notes if "thermal" in n]  # nothing to judge without branches
+
+
+@pytest.mark.parametrize("name", shipped_modules())
+def test_every_shipped_module_goes_out_and_in_again(name, tmp_path):
+    module = load_module(name)
+    save_module(module, tmp_path / "copy.toml")
+    assert load_module(tmp_path / "copy.toml") == module
+    assert "invented" in module.source

@@ -6,11 +6,11 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy.special import gamma
 
-from mission.device import load_module
+from mission.device import load_module, module_from_dict
 from mission.errors import InputError, RangeError
-from mission.losses import Modulation, conduction_integrals_w, mean_energy_j, mean_losses_w
+from mission.losses import Modulation, conduction_integrals_w, leg_losses_w, mean_energy_j, mean_losses_w
 
-from ..device.factories import straight_line_module
+from ..device.factories import straight_line_data, straight_line_module
 from .factories import averaged_losses_w, power_law_module, switched_losses_w
 
 REFERENCE = straight_line_module()
@@ -225,3 +225,38 @@ def test_integrals_by_plain_quadrature(i, half_order):
     power = curve_value(SHIPPED["kite-300"].diode.on_state, current, 100.0) * current
     want = [power.mean() / 4, (power * np.sin(h * theta)).mean() / 4]
     np.testing.assert_allclose(conduction_integrals_w(SHIPPED["kite-300"].diode.on_state, i, 100.0, [h])[0], want, rtol=1e-7, atol=1e-8)
+
+
+# Published: held for 60 degrees at the voltage peaks, switching losses linear in current relative to those of a modulation that always
+# switches: 1 - cos(phi)/2 up to 60 degrees, (sqrt(3)/2) sin(phi) beyond; A. M. Hava, R. J. Kerkman, T. A. Lipo, IEEE Trans. Ind. Appl. 34,
+# 1998, 1059-1071 (formula from memory, figures recomputed).
+@pytest.mark.parametrize(("deg", "factor"), [(0, 0.50000), (15, 0.51704), (30, 0.56699), (60, 0.75000), (90, 0.86603)])
+@pytest.mark.parametrize("sign", [1.0, -1.0])
+def test_clamp_at_the_voltage_peaks_saves_what_is_published(deg, factor, sign):
+    point = {"i_peak_a": 150.0, "mod_index": 0.7, "phi_rad": sign * np.radians(deg), "t_vj_c": 125.0, "switching_frequency_hz": 8e3, "v_dc_v": 600.0}
+    held, sine = (leg_losses_w(REFERENCE, m, **point).switching_w for m in (Modulation.CLAMP_60_VOLTAGE, Modulation.SINE))
+    np.testing.assert_allclose(held / sine, factor, atol=2e-5)
+
+
+def test_clamp_at_the_current_peaks_follows_up_to_30_degrees():
+    """*Analytic*: with the held stretch in the middle of the current's peak half of the losses are left, as at phi = 0 with the fixed one."""
+    for deg, factor in ((0, 0.5), (15, 0.5), (30, 0.5), (-20, 0.5), (180, 0.5), (160, 0.5), (60, 1.0 - np.cos(np.radians(30)) / 2)):
+        point = {"i_peak_a": 150.0, "mod_index": 0.7, "phi_rad": np.radians(deg), "t_vj_c": 125.0, "switching_frequency_hz": 8e3, "v_dc_v": 600.0}
+        held, sine = (leg_losses_w(REFERENCE, m, **point).switching_w for m in (Modulation.CLAMP_60_CURRENT, Modulation.SINE))
+        np.testing.assert_allclose(held / sine, factor, atol=2e-5)
+
+
+# Analytic: a MOSFET that conducts both ways through its channel loses R I^2/4, whatever the modulation index and the displacement.
+@pytest.mark.parametrize("modulation", list(Modulation))
+def test_a_channel_both_ways_is_a_resistor(modulation):
+    data = straight_line_data()
+    del data["diode"]["thermal"]
+    data["kind"] = "mosfet"
+    data["switch"]["on_state"] = {"line": [{"t_vj_c": t, "v0_v": 1e-12, "r_ohm": 4e-3, "current_end_a": 600.0} for t in (25.0, 125.0)]}
+    data["switch"]["reverse"] = data["switch"]["on_state"]
+    module = module_from_dict(data)
+    for m, phi in ((0.0, 0.0), (0.6, 0.4), (1.0, 2.8)):
+        both = leg_losses_w(module, modulation, i_peak_a=200.0, mod_index=m, phi_rad=phi, t_vj_c=80.0, switching_frequency_hz=0.0, v_dc_v=600.0).conduction_w
+        assert both.sum() == pytest.approx(2 * 4e-3 * 200.0**2 / 4, rel=1e-6)
+        if modulation.half_wave_symmetric:
+            np.testing.assert_allclose(both, 4e-3 * 200.0**2 / 4, rtol=1e-6)
