@@ -138,7 +138,7 @@ def compare_steady(run, row, length_s, want, within_k=0.3, loss_share=5e-4):
     np.testing.assert_allclose(run.rows.t_min_c[row], want["min_c"], atol=within_k, err_msg="lowest temperature [degC]")
 
 
-@pytest.mark.parametrize("module, modulation, dead_time_s, mod_index, frequency_hz, phi_rad, direction", steady_cases())
+@pytest.mark.parametrize("module, modulation, dead_time_s, mod_index, frequency_hz, phi_rad, direction", list(steady_cases()))
 def test_steady_extremes(module, modulation, dead_time_s, mod_index, frequency_hz, phi_rad, direction):
     """Lowest and highest temperature of every chip, and its mean loss."""
     i_peak_a = DRIVES[module][0]
