@@ -160,7 +160,7 @@ def _run(args) -> int:
 
 def _compare(args) -> int:
     from .errors import InputError
-    from .show.folder import ResultFolder, write_figures
+    from .show.folder import ResultFolder
     from .show.study_figures import comparison_figure, comparison_text
     from .study import check_rows, compare, load_study, run
 
@@ -179,7 +179,7 @@ def _compare(args) -> int:
             results.append(run(study, progress=bar, keep_cycles=False))
     found = compare(results, names)
     paths = [folder.text("comparison.csv", found.to_frame().to_csv(index=False, lineterminator="\n")),
-             folder.text("comparison.json", found.to_json() + "\n"), *write_figures(folder, {"comparison": comparison_figure(found)})]
+             folder.text("comparison.json", found.to_json() + "\n"), *folder.figures({"comparison": comparison_figure(found)})[0]]
     if not args.quiet:
         print(comparison_text(found))
         print(f"\nwritten to {args.out}: " + ", ".join(p.name for p in paths))
@@ -193,7 +193,7 @@ _OUTPUT_HZ = (0.0, 0.05, 0.1, 0.2, 0.5, 1.0, 2.0, 3.0, 5.0, 10.0, 20.0, 50.0, 10
 
 def _rating(args) -> int:
     from .losses import DEAD_SHARE_MAX
-    from .show.folder import ResultFolder, write_figures
+    from .show.folder import ResultFolder
     from .show.study_figures import rating_figure, rating_frame, rating_text
     from .study import RatingBench, load_study, rating_point
 
@@ -205,7 +205,7 @@ def _rating(args) -> int:
     switching = bench.over_switching_frequency(point, [f for f in _SWITCHING_HZ if dead * f <= DEAD_SHARE_MAX])
     output = bench.over_output_frequency(point, _OUTPUT_HZ)
     paths = [folder.text("rating.csv", rating_frame(switching + output).to_csv(index=False, lineterminator="\n")),
-             *write_figures(folder, {"rating": rating_figure(switching, output, title=study.module.name)})]
+             *folder.figures({"rating": rating_figure(switching, output, title=study.module.name)})[0]]
     if not args.quiet:
         print(rating_text(switching, f"{study.module.name}: largest current over switching frequency"))
         print(rating_text(output, f"{study.module.name}: largest current over output frequency"))
@@ -226,7 +226,7 @@ def _module(args) -> int:
         if value is not None and not 0.0 < value <= most:
             raise InputError(flag, f"{value:g}", f"above 0, at most {most:g}")
     module = load_module(args.module)
-    if args.dc_voltage is not None and args.dc_voltage >= module.ratings.v_ces_v * (2.0 if module.arrangement == "npc-leg" else 1.0):
+    if args.dc_voltage is not None and args.dc_voltage >= module.v_dc_limit_v:
         raise InputError("--dc-voltage", f"{args.dc_voltage:g} V", f"below what the chips block ({module.ratings.v_ces_v:g} V each)")
     print(module_text(module))
     if args.out is not None:

@@ -729,6 +729,11 @@ class PowerModule(FileModel):
         """Voltage levels of the leg: 2 or 3."""
         return 3 if self.arrangement in THREE_LEVEL else 2
 
+    @property
+    def v_dc_limit_v(self) -> float:
+        """Link voltage that the chips no longer block: the switches of a midpoint-clamped leg share it between them [V]."""
+        return self.ratings.v_ces_v * (2.0 if self.arrangement == "npc-leg" else 1.0)
+
     def chip_pairs(self) -> tuple[ChipPair, ...]:
         """The pairs of chips of a leg, in the order of their numbers; chip number = 6 pair + 2 leg + (0 upper, 1 lower)."""
         if self.levels == 2:

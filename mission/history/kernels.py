@@ -526,7 +526,8 @@ def cross(lanes, row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_
                 exact_losses(leg, wrap(theta - THIRD * leg), point, drive, conduction, switching, knot_c, i_step, voltage, energy, corner, w)
             else:
                 leg_losses(np.uint64(leg), wrap(theta - THIRD * leg), fine, w)
-    reach = duration  # where an even run of steps ends: the next place where a loss jumps, or the end
+    stopping = turning and n_stops > 0
+    reach = 0.0 if stopping else duration  # where an even run of steps ends: the next place where a loss jumps, or the end
     for i in range(n):
         extreme[0, i] = w[T + i]
         extreme[1, i] = start
@@ -538,7 +539,7 @@ def cross(lanes, row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_
     h_before = 0.0
     many, since, count_even, done_even, begin_even = 1, 0, 0, 0, 0.0
     while used < duration:
-        if turning and n_stops > 0 and used >= reach or used == 0.0 and turning and n_stops > 0:
+        if used >= reach:
             reach = min(duration, used + to_next_stop(theta + omega * used, op[DIRECTION], stops, n_stops) / abs(omega))
             h_even = 0.0
         left = reach - used
@@ -578,7 +579,7 @@ def cross(lanes, row, duration, regime, phase, op, w, n_l, n_s, lam_l, rho, lam_
                 now[H_LOADED] = h
         if turning:
             middle = theta + omega * (used + 0.5 * h)
-            if n_stops > 0:
+            if stopping:
                 for leg in range(3):
                     exact_losses(leg, wrap(middle - THIRD * leg), point, drive, conduction, switching, knot_c, i_step, voltage, energy, corner, w)
             else:

@@ -8,7 +8,7 @@ does not grow with the length of the mission.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, fields
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -22,7 +22,7 @@ _POINT_CAPACITY = 32768
 _LEVELS = 19
 #: A switching frequency that follows the temperature is set anew this often [s].
 DERATE_EVERY_S = 0.1
-#: Pieces that are marched at once.
+#: Pieces that a block may have: memory goes with them, so callers cut their rows by :meth:`ElectrothermalMarch.pieces`.
 MOST_PIECES = 65536
 #: Nodes along a turn for the ripple where losses jump.
 RIPPLE_NODES_JUMPS = 512
@@ -283,14 +283,6 @@ class ElectrothermalMarch:
         self._check_current(points)
         dt_s = np.asarray(dt_s, float)
         pieces = self.pieces(points, dt_s)
-        if pieces.sum() > MOST_PIECES and dt_s.size > 1:
-            # long rows are many pieces: go through them in parts, so that memory stays bounded
-            middle = int(np.clip(np.searchsorted(np.cumsum(pieces), 0.5 * pieces.sum()), 1, dt_s.size - 1))
-            parts = []
-            for part in (slice(0, middle), slice(middle, None)):
-                every = {"phase_id": phase_id, "coolant_c": coolant_c, "switching_frequency_hz": switching_frequency_hz, "dc_voltage_v": dc_voltage_v}
-                parts.append(self.add_block(points.rows(part), dt_s=dt_s[part], **{n: np.broadcast_to(np.asarray(v), dt_s.shape)[part] for n, v in every.items()}))
-            return RowEnvelope(*(np.concatenate([getattr(p, f.name) for p in parts]) for f in fields(RowEnvelope)))
         rows = np.repeat(np.arange(dt_s.size), pieces)
         table = np.empty((rows.size, k.N_ROW))
         table[:, k.DT] = (dt_s / pieces)[rows]

@@ -196,11 +196,9 @@ def _hottest_of(history, chips):
 PAIR_WORDS = {"switch": "switch", "diode": "diode", "inner_switch": "inner switch", "inner_diode": "inner diode", "clamp_diode": "clamp diode"}
 
 
-def pair_words(module, pair) -> str:
-    """What a pair of chips is called: switch, diode; in three-level legs outer switch and so on; chip where it is both."""
-    if module.one_chip:
-        return "switch"
-    return ("outer " if module.levels == 3 and pair.place in ("switch", "diode") else "") + PAIR_WORDS[pair.place]
+def part_words(module, place) -> str:
+    """What a section of the module file, or the pair of chips it stands for, is called: switch, diode; in three-level legs outer switch and so on."""
+    return ("outer " if module.levels == 3 and place in ("switch", "diode") else "") + PAIR_WORDS[place]
 
 
 def _kinds(result):
@@ -342,7 +340,7 @@ def hot_stretch_figure(result) -> Figure:
         if chip >= 6 * (rows - 1):
             ax.set_xlabel(f"{unit} from the peak")
     for row, pair in zip(axes, result.study.module.chip_pairs(), strict=True):
-        row[0].set_ylabel(f"{pair_words(result.study.module, pair)}{'es' if not pair.is_diode else 's'}: junction, °C")
+        row[0].set_ylabel(f"{part_words(result.study.module, pair.place)}{'es' if not pair.is_diode else 's'}: junction, °C")
     axes.flat[0].set_xlim(x[0], x[-1])
     _stopped(result, figure)
     return figure
@@ -677,7 +675,7 @@ def loss_figure(result) -> Figure:
         for k, (w, e) in enumerate(zip(mean[chips], history.energy_j[chips] / joule, strict=True)):
             if len(pairs) < 3:
                 words = f"{_three(w)} W\n{_three(e)} {unit}"
-                words = f"{pair_words(result.study.module, pair)}\n{words}" if k == 0 else words
+                words = f"{part_words(result.study.module, pair.place)}\n{words}" if k == 0 else words
             else:
                 words = f"{pair.name} {_three(w)}" if k == 0 else _three(w)
             ax.annotate(words, (k + offset, w), xytext=(0, 2), textcoords="offset points", ha="center", va="bottom",
@@ -686,7 +684,7 @@ def loss_figure(result) -> Figure:
     ax.set_ylim(0.0, max(1.4 * mean.max(), 1e-6))
     ax.set_ylabel("mean loss over the mission, W")
     ax.set_xlabel("place in the bridge (phase, upper or lower); above the bars: mean loss" + (" and energy a mission" if len(pairs) < 3 else ", W; "
-                  + ", ".join(f"{p.name} {pair_words(result.study.module, p)}" for p in pairs)))
+                  + ", ".join(f"{p.name} {part_words(result.study.module, p.place)}" for p in pairs)))
     ax.grid(axis="x", visible=False)
     ax.tick_params(axis="x", length=0)
     ax.yaxis.set_major_locator(MaxNLocator(5) if mean.max() > 0 else FixedLocator([0.0]))

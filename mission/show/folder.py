@@ -47,7 +47,7 @@ class ResultFolder:
         """Write everything but the cycles; returns all paths."""
         from .document import build_document
         from .figures import all_figures
-        from .report import report_html, svg_text
+        from .report import report_html
         from .tables import ledger_frame
 
         document = build_document(result)
@@ -56,7 +56,18 @@ class ResultFolder:
         if (self.path / "cycles.parquet").exists():
             written.append(self.path / "cycles.parquet")
         written.append(self.whole("history.parquet", lambda p: result.history.to_frame().to_parquet(p, index=False)))
-        figures, drawn = all_figures(result), {}
+        figures = all_figures(result)
+        paths, drawn = self.figures(figures)
+        written += paths
+        page = report_html(result, figures, document.model_dump(mode="json"), date=date.today().isoformat(), drawn_svg=drawn)
+        written.append(self.text("report.html", page))
+        return written
+
+    def figures(self, figures) -> tuple[list[Path], dict[str, str]]:
+        """Write figures as PNG and SVG; returns the paths, and the SVG text of every figure."""
+        from .report import svg_text
+
+        written, drawn = [], {}
         for name, figure in figures.items():
             # lay out once, not anew each time that a figure is drawn
             figure.draw_without_rendering()
@@ -64,9 +75,7 @@ class ResultFolder:
             written.append(self.whole(f"{name}.png", lambda p, f=figure: f.savefig(p, format="png", dpi=150)))
             drawn[name] = svg_text(figure, name)
             written.append(self.text(f"{name}.svg", drawn[name]))
-        page = report_html(result, figures, document.model_dump(mode="json"), date=date.today().isoformat(), drawn_svg=drawn)
-        written.append(self.text("report.html", page))
-        return written
+        return written, drawn
 
     def text(self, name, text) -> Path:
         """Write a text file."""
@@ -82,20 +91,6 @@ class ResultFolder:
         finally:
             part.unlink(missing_ok=True)
         return path
-
-
-def write_figures(folder, figures) -> list[Path]:
-    """Write figures as PNG and SVG into a :class:`ResultFolder`; returns the paths."""
-    from .report import svg_text
-
-    written = []
-    for name, figure in figures.items():
-        # lay out once, not anew each time that a figure is drawn
-        figure.draw_without_rendering()
-        figure.set_layout_engine(None)
-        written.append(folder.whole(f"{name}.png", lambda p, f=figure: f.savefig(p, format="png", dpi=150)))
-        written.append(folder.text(f"{name}.svg", svg_text(figure, name)))
-    return written
 
 
 def save_result(result, folder) -> list[Path]:

@@ -30,7 +30,7 @@ from ..device import (
 )
 from ..errors import RangeError
 from ..losses import Modulation, leg_losses_w
-from .figures import BLUE, GREY, INK, LIGHT_BLUE, LIGHT_RED, LIGHT_YELLOW, PAIR_WORDS, PAPER, RED, YELLOW, _spread, plain, styled
+from .figures import BLUE, GREY, INK, LIGHT_BLUE, LIGHT_RED, LIGHT_YELLOW, PAPER, RED, YELLOW, _spread, part_words, plain, styled
 from .text import number
 
 #: Marks of the temperatures from cold on; the hottest is filled.
@@ -55,8 +55,7 @@ def _part_words(module, part) -> str:
     """What a section of the module file is called here."""
     if module.kind == "mosfet" and part == "diode":
         return "body diode"
-    outer = "outer " if module.levels == 3 and part in ("switch", "diode") else ""
-    return outer + PAIR_WORDS[part]
+    return part_words(module, part)
 
 
 def _on_state_words(module, place) -> str:
@@ -529,7 +528,7 @@ def loss_split_figure(module: PowerModule, *, modulation: Modulation, dc_voltage
 def _checked_point(module, modulation, dc_voltage_v, switching_frequency_hz, current_a_rms, mod_index, power_factor, t_vj_c, more):
     modulation = Modulation(modulation)
     v = float(require_range("dc_voltage_v", dc_voltage_v, low=0.0, low_open=True, unit="V"))
-    blocks = module.ratings.v_ces_v * (2.0 if module.arrangement == "npc-leg" else 1.0)
+    blocks = module.v_dc_limit_v
     if v >= blocks:
         raise RangeError("dc_voltage_v", f"{v:g} V", f"below {blocks:g} V, what {module.name} blocks", "lower it, or choose another module")
     fsw = float(require_range("switching_frequency_hz", switching_frequency_hz, low=0.0, unit="Hz"))
@@ -673,11 +672,11 @@ def write_module(module: PowerModule, folder, *, modulation: Modulation, dc_volt
     -------
     list of Path
     """
-    from .folder import ResultFolder, write_figures
+    from .folder import ResultFolder
 
     figures = module_figures(module, modulation=modulation, dc_voltage_v=dc_voltage_v, switching_frequency_hz=switching_frequency_hz, **more)
     target = ResultFolder(folder)
-    return [*write_figures(target, figures), target.text("module.txt", module_text(module) + "\n")]
+    return [*target.figures(figures)[0], target.text("module.txt", module_text(module) + "\n")]
 
 
 # --- text ----------------------------------------------------------------------------------------------

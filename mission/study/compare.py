@@ -173,9 +173,8 @@ def _notes(results, names):
             for key in sorted(one.keys() | other.keys()):
                 if one.get(key) != other.get(key):
                     yield f"{section}.{key}: {_word(one.get(key))} with {names[0]}, {_word(other.get(key))} with {name}"
-        for key in ("residue",):
-            if getattr(first.lifetime, key) != getattr(spec.lifetime, key):
-                yield f"lifetime.{key}: {getattr(first.lifetime, key)} with {names[0]}, {getattr(spec.lifetime, key)} with {name}"
+        if first.lifetime.residue != spec.lifetime.residue:
+            yield f"lifetime.residue: {first.lifetime.residue} with {names[0]}, {spec.lifetime.residue} with {name}"
     if len({tuple((m.name, m.acts_on, m.chips, m.model.name, m.threshold_k, str(sorted(m.model.options.items()))) for m in r.study.modes) for r in results}) > 1:
         yield "failure modes, lifetime models or their options differ: a longer life may be a kinder curve"
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 import time
 from collections.abc import Callable
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 
@@ -116,7 +117,7 @@ class MissionResult:
         """Whether every limit and the target are met."""
         return all(v.met for v in self.verdicts)
 
-    @property
+    @cached_property
     def verdicts(self):
         """Limits and target with their margins; see :mod:`mission.study.verdicts`."""
         from .verdicts import verdicts

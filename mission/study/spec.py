@@ -296,8 +296,7 @@ def _check_together(study: Study) -> None:
                          "one of the two", "remove one of them")
     from_duty = "dc_voltage_v" in has
     top = profile.ranges["dc_voltage_v"][1] if from_duty else spec.inverter.dc_voltage_v
-    # the switches of a midpoint-clamped leg share the link between them
-    if top >= module.ratings.v_ces_v * (2.0 if module.arrangement == "npc-leg" else 1.0):
+    if top >= module.v_dc_limit_v:
         where = f"{profile.source}, column '{spec.duty.columns.dc_voltage.column}'" if from_duty and spec.duty.columns.dc_voltage else f"{study.source}, field inverter.dc_voltage_v"
         raise InputError(where, f"{top:g} V", f"below {'twice ' if module.arrangement == 'npc-leg' else ''}the blocking voltage of {module.name}, {module.ratings.v_ces_v:g} V",
                          "check the unit, or choose a module of a higher voltage class")

@@ -13,6 +13,7 @@ Every kind is a section of a TOML file (a frozen model, told apart by ``kind``);
 from __future__ import annotations
 
 import math
+from abc import ABC, abstractmethod
 from collections.abc import Callable
 from dataclasses import dataclass, replace
 from typing import Annotated, Literal
@@ -765,7 +766,7 @@ def _meet(mover: _Mover, system_pa, where: str) -> tuple[float, tuple[str, ...]]
     return flow, tuple(flags)
 
 
-class _Stream:
+class _Stream(ABC):
     """Flow through a sink: what mover and system agree on, with the properties at the coolant's mean temperature."""
 
     where = ""
@@ -775,17 +776,17 @@ class _Stream:
         self.spec, self.inlet_c, self.heat_w = spec, inlet_c, heat_w
         self.inlet = self.mean = self.state(inlet_c)
 
-    def state(self, t_c: float) -> fd.FluidState:
-        raise NotImplementedError
+    @abstractmethod
+    def state(self, t_c: float) -> fd.FluidState: ...
 
-    def curve(self) -> FlowCurve | None:
-        raise NotImplementedError
+    @abstractmethod
+    def curve(self) -> FlowCurve | None: ...
 
-    def given_m3_per_s(self) -> float:
-        raise NotImplementedError
+    @abstractmethod
+    def given_m3_per_s(self) -> float: ...
 
-    def system_pa(self, flow: float) -> float:
-        raise NotImplementedError
+    @abstractmethod
+    def system_pa(self, flow: float) -> float: ...
 
     def mover(self, speed_ratio: float) -> _Mover | None:
         return None if self.curve() is None else _Mover(self.curve(), speed_ratio, self.inlet.rho_kg_per_m3, self.default_density)
