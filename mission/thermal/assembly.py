@@ -70,8 +70,8 @@ class NetworkBuilder:
                     waiting.append(other)
         return len(reached) == len(self._c)
 
-    def build(self, heated: list[int], watched: list[int]) -> FullNetwork:
-        """Assemble with heat entering at ``heated`` and further outputs ``watched``."""
+    def build(self, heated: list[int], watched: list[int], surfaces: list[int] | tuple[int, ...] = ()) -> FullNetwork:
+        """Assemble with heat entering at ``heated``, case points ``watched`` (one a chip) and sink ``surfaces``."""
         n = len(self._c)
         c = np.array(self._c)
         g = np.zeros((n, n))
@@ -101,6 +101,7 @@ class NetworkBuilder:
             g_w_per_k=0.5 * (g_mass + g_mass.T),
             out_junction=recover[np.asarray(heated)],
             out_case=recover[np.asarray(watched)],
+            out_surface=recover[np.asarray(surfaces, int)],
         )
 
 
@@ -116,12 +117,15 @@ class FullNetwork:
     out_junction, out_case : ndarray, shape (n, n_s)
         Rows that pick junction and case temperatures; the heat of chip i enters
         where row i of ``out_junction`` stands.
+    out_surface : ndarray, shape (m, n_s)
+        Rows that pick the temperatures of the sink surfaces.
     """
 
     c_j_per_k: np.ndarray
     g_w_per_k: np.ndarray
     out_junction: np.ndarray
     out_case: np.ndarray
+    out_surface: np.ndarray
 
     @property
     def n_chips(self) -> int:

@@ -7,7 +7,7 @@ import numpy as np
 from ..device import PowerModule
 from ..errors import InputError
 from .assembly import FullNetwork, NetworkBuilder
-from .cooling import sink_ladder
+from .cooling import sink_path
 from .layers import StackLadder, stack_ladder
 from .modes import ReducedNetwork, reduce_to_modes
 from .networks import CauerLadder, FosterNetwork, cauer_to_foster, foster_to_cauer, merge_close_branches
@@ -58,7 +58,10 @@ def _lumped_modes(module: PowerModule, cooling) -> ReducedNetwork:
         b = branches[chip // 6]
         lam[: b.tau_s.size, chip] = 1.0 / b.tau_s
         rho[: b.tau_s.size, chip] = b.r_k_per_w / b.tau_s
-    sink = sink_ladder(cooling)
+    path = sink_path(cooling)
+    if len(path.ladders) > 1:
+        raise InputError("cooling.sink_sees", "'chip-losses' with a sink for every module", "'heat-leaving'")
+    sink = path.ladders[0]
     if isinstance(sink, CauerLadder):
         found = cauer_to_foster(sink)
         r_s, tau_s = found.r_k_per_w, found.tau_s
@@ -68,7 +71,8 @@ def _lumped_modes(module: PowerModule, cooling) -> ReducedNetwork:
     legs = (np.arange(n) % 6) // 2
     if module.case_to_sink is not None:
         groups = [np.ones(n)] if module.arrangement == "six-pack" else [(legs == k).astype(float) for k in range(3)]
-        rows += [(g, g * module.case_to_sink.r_th_k_per_w / _AT_ONCE_S, g * module.case_to_sink.r_th_k_per_w / _AT_ONCE_S, 1.0 / _AT_ONCE_S) for g in groups]
+        share = path.paste * module.case_to_sink.r_th_k_per_w / _AT_ONCE_S
+        rows += [(g, g * share, g * share, 1.0 / _AT_ONCE_S) for g in groups]
     return ReducedNetwork(
         lam, rho, rho_case, np.array([r[3] for r in rows]), np.array([r[0] for r in rows]), np.array([r[1] for r in rows]).T.copy(),
         np.array([r[2] for r in rows]).T.copy(), np.zeros(len(rows)), np.zeros_like(lam), np.zeros((n, n)), 0.0, 0.0, 0.0, 0.0,
@@ -76,38 +80,37 @@ def _lumped_modes(module: PowerModule, cooling) -> ReducedNetwork:
 
 
 def inverter_network(module: PowerModule, cooling, *, materials=None) -> FullNetwork:
-    """All chips of a bridge on one sink.
+    """All chips of a bridge on their sink.
 
-    The sink is one temperature for all chips; it takes the heat that leaves the
+    A sink is one temperature for all chips on it; it takes the heat that leaves the
     ladders, not the heat that enters the chips. With a resistance per module the
     chips of a module share its case; with resistances per switch and diode every
-    chip has a case point of its own. A half-bridge or leg file stands for three modules
-    on the sink.
+    chip has a case point of its own. A half-bridge or leg file stands for three modules,
+    on one sink or (a :class:`SinkPath` with three ladders) each on its own.
 
     Parameters
     ----------
     module : PowerModule
-    cooling : FixedCooling or FosterCooling
+    cooling : FixedCooling, FosterCooling or SinkPath
     materials : dict, optional
         For layer stacks; default: the shipped ones.
 
     Returns
     -------
     FullNetwork
-        Outputs: junctions, and the case points under them (the sink surface where
-        the module's data end there).
+        Outputs: junctions, the case points under them (the sink surface where
+        the module's data end there), and the sink surfaces. The coolant's own rise along a row of
+        sinks is not in it (see :func:`mission.thermal.downstream.with_coolant_rise`).
     """
     if materials is None:
         from .layers import load_materials
 
         materials = load_materials()
+    path = sink_path(cooling)
     builder = NetworkBuilder()
-    sink = sink_ladder(cooling)
-    if isinstance(sink, CauerLadder):
-        surface = builder.ladder(sink, None)
-    else:
-        surface = builder.node()
-        builder.to_coolant(surface, sink)
+    surfaces = [_surface(builder, ladder) for ladder in path.ladders]
+    if len(surfaces) > 1 and module.arrangement == "six-pack":
+        raise InputError("cooling", f"{len(surfaces)} sinks under {module.name}", "one sink under a six-pack, which is one module")
     pairs = module.chip_pairs()
     stacks = [chip_ladder(pair.thermal, materials, f"{pair.place}.thermal") for pair in pairs]
     per = module.case_to_sink.per if module.case_to_sink is not None else None
@@ -115,20 +118,30 @@ def inverter_network(module: PowerModule, cooling, *, materials=None) -> FullNet
     heated, cases = [], []
     for chip in range(6 * len(pairs)):
         pair, stack = pairs[chip // 6], stacks[chip // 6]
+        leg = (chip % 6) // 2
+        surface = surfaces[leg if len(surfaces) > 1 else 0]
         if per is None:
             case = surface
         elif per == "module":
-            number = 0 if module.arrangement == "six-pack" else (chip % 6) // 2
+            number = 0 if module.arrangement == "six-pack" else leg
             if number not in shared:
                 shared[number] = builder.node()
-                builder.resistance(shared[number], surface, module.case_to_sink.r_th_k_per_w)
+                builder.resistance(shared[number], surface, path.paste * module.case_to_sink.r_th_k_per_w)
             case = shared[number]
         else:
             case = builder.node()
             r = module.case_to_sink.r_th_diode_k_per_w if pair.is_diode else module.case_to_sink.r_th_switch_k_per_w
-            builder.resistance(case, surface, r)
+            builder.resistance(case, surface, path.paste * r)
         if stack.c_end_j_per_k > 0.0:
             builder.add_capacity(case, stack.c_end_j_per_k)
         heated.append(builder.ladder(stack.ladder, case))
         cases.append(case)
-    return builder.build(heated, cases)
+    return builder.build(heated, cases, surfaces)
+
+
+def _surface(builder: NetworkBuilder, sink: CauerLadder | float) -> int:
+    if isinstance(sink, CauerLadder):
+        return builder.ladder(sink, None)
+    surface = builder.node()
+    builder.to_coolant(surface, sink)
+    return surface

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from typing import Annotated, Literal
 
 import numpy as np
@@ -61,3 +62,25 @@ def sink_ladder(spec) -> CauerLadder | float:
     if isinstance(spec, FosterCooling):
         return foster_to_cauer(merge_close_branches(FosterNetwork(np.array(spec.r_k_per_w), np.array(spec.tau_s))))
     raise InputError("cooling.kind", f"{spec!r}", "fixed or foster")
+
+
+@dataclass(frozen=True)
+class SinkPath:
+    """What the network needs to know of a cooling.
+
+    Attributes
+    ----------
+    ladders : tuple
+        From a mounting surface to the coolant, as :func:`sink_ladder` gives them: one for all modules, or one for each of
+        the three modules of a bridge, in the order of the legs a, b, c.
+    paste : float
+        Factor on the module's case-to-sink resistances: above 1 for aged grease.
+    """
+
+    ladders: tuple[CauerLadder | float, ...]
+    paste: float = 1.0
+
+
+def sink_path(cooling) -> SinkPath:
+    """The path of a given cooling; a :class:`SinkPath` is handed through."""
+    return cooling if isinstance(cooling, SinkPath) else SinkPath((sink_ladder(cooling),))
