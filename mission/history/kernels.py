@@ -56,9 +56,9 @@ N_NOW = 10
 DT, FREQ, DIRECTION, I_PEAK, MOD, PHI, ANGLE_OFFSET, T_COOLANT, CLIP_FIRST, CLIP_LAST, FSW, V_DC = range(12)
 N_ROW = 12
 # settings
-F_SLOW, STEPS, H0, H_MAX, SETTLE_PERIODS, SETTLE_K, T_STOP, SHARED_EVERY_S = range(8)
+F_SLOW, STEPS, H0, H_MAX, SETTLE_PERIODS, SETTLE_K, T_STOP, SHARED_EVERY_S, SURFACE_UP, SURFACE_DOWN, SURFACE_RISE = range(11)
 IDLE, MEAN, ANGLE = 0, 1, 2
-OK, RUNAWAY = 0, 1
+OK, RUNAWAY, CHANGE = 0, 1, 2
 NODES, RIPPLE_NODES = 128, 64  # along a turn of the current
 CHUNK = 256
 U_NODE_LAST = np.uint64(NODES - 1)
@@ -690,15 +690,15 @@ def close_window(now, op, window, pair, pair_time, pair_ripple,
 
 
 @njit(cache=True)
-def march_rows(lanes, begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_local, levels, odd,
+def march_rows(lanes, begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_cool, g_local, surface_l, surface_s, levels, odd,
                group, group_position, flows, group_lam, group_rho,
                drive, conduction, switching, knot_c, i_step, voltage, energy, v_ref, exponent, gate, derate_c, derate_hz,
                settings, now, old, ripple_op, ripple, nodes, window, last, heading,
                p_value, p_time, p_half, p_ripple, p_phase, p_count, rip, rip_row, rip_count, row_temps, row_loss):
-    """March rows from ``begin`` until the end of the block or until the point buffers are nearly full.
+    """March rows from ``begin`` until the end of the block, until the point buffers are nearly full, or until the cooling changes.
 
     ``row_temps`` (rows, 4, n): junction minimum, maximum, case minimum, maximum;
-    ``row_loss`` (rows, n) [J]. Returns (row to go on with, OK or RUNAWAY).
+    ``row_loss`` (rows, n) [J]. Returns (row to go on with, OK, RUNAWAY or CHANGE).
     """
     n = len(lanes)
     cap = p_value.shape[1]
@@ -745,6 +745,20 @@ def march_rows(lanes, begin, table, phases, w, n_l, n_s, lam_l, rho, lam_s, g_co
                     w[X_L + k * LANE + i] -= g_local[k, i] * change
             now[COOLANT] = op[T_COOLANT]
             shared_part(lanes, w, n_s, now[COOLANT])
+        if settings[SURFACE_UP] < np.inf or settings[SURFACE_DOWN] > -np.inf:
+            hottest = -np.inf
+            for m in range(surface_s.shape[0]):
+                rise = 0.0
+                for s in range(n_s):
+                    rise += surface_s[m, s] * w[X_S + s]
+                for k in range(n_l):
+                    for i in range(n):
+                        rise += surface_l[m, k, i] * w[X_L + k * LANE + i]
+                hottest = max(hottest, rise)
+            if settings[SURFACE_RISE] == 0.0:
+                hottest += now[COOLANT]
+            if hottest > settings[SURFACE_UP] or hottest < settings[SURFACE_DOWN]:
+                return row, CHANGE
         if derate_c.size > 0:
             hot = w[T]
             for i in range(group.size):

@@ -9,19 +9,24 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from typing import NamedTuple
 
 import numpy as np
 
 from ..errors import InputError, NoStableTemperature
 from ..losses import LossTables, reference_for
 from ..machine import OperatingPoints
-from ..thermal import ReducedNetwork
+from ..thermal import CoolingLevels, ReducedNetwork
 from .steady import HeldPoint
 
 _POINT_CAPACITY = 32768
 _LEVELS = 19
 #: A switching frequency that follows the temperature is set anew this often [s].
 DERATE_EVERY_S = 0.1
+#: A cooling that follows the temperature of the sink looks at it this often [s].
+LOOK_EVERY_S = 1.0
+#: Changes of the cooling that are kept with their time.
+_CHANGES_KEPT = 1000
 #: Pieces that a block may have: memory goes with them, so callers cut their rows by :meth:`ElectrothermalMarch.pieces`.
 MOST_PIECES = 65536
 #: Nodes along a turn for the ripple where losses jump.
@@ -92,7 +97,7 @@ class RowEnvelope:
     """Extremes and heat of every row of a block; r rows, n chips.
 
     ``switching_hz`` (r,): as it was at the end of the row, derating included. ``theta_rad`` (r,): angle of the current of
-    phase a there. ``piece_s`` (p,), ``piece_above`` (p, n): stretches of up to a second and whether the junction
+    phase a there. ``level`` (r,): level of the cooling there. ``piece_s`` (p,), ``piece_above`` (p, n): stretches of up to a second and whether the junction
     passed the watched temperature in them; empty if none is watched.
     """
 
@@ -107,8 +112,21 @@ class RowEnvelope:
     coolant_c: np.ndarray
     switching_hz: np.ndarray
     theta_rad: np.ndarray
+    level: np.ndarray
     piece_s: np.ndarray
     piece_above: np.ndarray
+
+
+class MarchState(NamedTuple):
+    """Modes, coolant and level of the cooling at one moment; see :attr:`ElectrothermalMarch.states`.
+
+    ``local`` (L n,): local modes, scaled with their output weight; ``shared`` (S,).
+    """
+
+    local: np.ndarray
+    shared: np.ndarray
+    coolant_c: float
+    level: int = 0
 
 
 #: Room of the kernels: local modes a chip, shared modes, corner temperatures.
@@ -129,8 +147,9 @@ class ElectrothermalMarch:
     Parameters
     ----------
     tables : LossTables
-    network : ReducedNetwork
-        For the six chips of every pair of the leg's positions: a-upper, a-lower, b-upper ...
+    network : ReducedNetwork or CoolingLevels
+        For the six chips of every pair of the leg's positions: a-upper, a-lower, b-upper ... With levels the cooling changes
+        during the mission, exactly between the changes.
     settings : MarchSettings
     derating : tuple of ndarray, optional
         Junction temperatures of the hottest chip, rising [degC], and the switching frequencies that they allow
@@ -139,87 +158,155 @@ class ElectrothermalMarch:
         Receive :class:`PointBlock` and :class:`RippleBlock` as they arise.
     """
 
-    def __init__(self, tables: LossTables, network: ReducedNetwork, settings: MarchSettings | None = None, *, derating=None,
+    def __init__(self, tables: LossTables, network: ReducedNetwork | CoolingLevels, settings: MarchSettings | None = None, *, derating=None,
                  on_points: Callable[[PointBlock], None] | None = None,
                  on_ripple: Callable[[RippleBlock], None] | None = None):
         from . import kernels as k
 
+        self._levels = network if isinstance(network, CoolingLevels) else CoolingLevels.fixed(network)
+        self._controlled = any(len(g.levels) > 1 for g in self._levels.groups)
+        network = self._levels.network(0)
         n_chips = 3 * len(tables.plan.positions)
         if network.n_chips != n_chips:
             raise InputError("thermal network", f"{network.n_chips} chips", f"{n_chips}: six for every pair of positions of the leg")
         self.n_chips = n_chips
         self.chip_names = _chip_names(tables.plan.positions)
         self._k = k
-        self.tables, self.network = tables, network
+        self.tables = tables
         self.settings = settings or MarchSettings()
         self._on_points, self._on_ripple = on_points, on_ripple
-        check_fit(tables, network)
-        s = self.settings
-        self._settings = np.array([s.f_slow_hz, s.steps_per_period, s.first_step_s, s.longest_step_s, s.settle_periods, s.settle_above_k,
-                                   s.t_stop_c, min(SHARED_WITHIN_S, 0.1 / network.lam_shared_per_s.max(initial=1.0))], float)
-        lanes = self._lanes = next(n for n in k.LANES if n >= n_chips)
-        lam, rho = _padded(network.lam_local_per_s, lanes, 1.0), _padded(network.rho_local, lanes, 0.0)
-        lam_s = network.lam_shared_per_s
-        n_l, n_s = lam.shape[0], lam_s.size
-        levels = np.empty((_LEVELS, 2 * n_l * lanes + lanes + 2 * n_s))
-        for v in range(_LEVELS):
-            k.step_factors(s.first_step_s * 2.0**v, lam, rho, lam_s, levels[v])
-        position = 2 * (np.arange(n_chips) // 6) + np.arange(n_chips) % 2
-        like = position if not tables.modulation.half_wave_symmetric else position - position % 2
-        group, members, group_lam, group_rho = _ripple_groups(*_own_response(network), like)
-        self._net = (n_l, n_s, lam, rho, np.ascontiguousarray(lam_s), np.ascontiguousarray(network.g_coolant),
-                     _padded(network.g_coolant_local, lanes, 0.0), levels, np.empty(levels.shape[1]))
-        self._groups = (group, position[members], tables.plan.flows, group_lam, group_rho)
+        self._lanes = next(n for n in k.LANES if n >= n_chips)
+        self._bundles: dict[int, tuple] = {}
+        self._bundle(0)
         derate = (np.empty(0), np.empty(0)) if derating is None else tuple(np.ascontiguousarray(v, float) for v in derating)
         self._derates = derating is not None
         self._tables = (*tables.kernel_arrays(), *derate)
+        lanes = self._lanes
         self._lane_tuple = (0,) * lanes
         cap = _POINT_CAPACITY
         self._count, self._rip_count = np.zeros(2 * lanes, np.int64), np.zeros(1, np.int64)
         self._points = (*(np.empty((2 * lanes, cap)) for _ in range(4)), np.empty((2 * lanes, cap), np.int16), self._count)
         self._ripple_out = (np.empty((cap // 2, lanes, 3)), np.empty((cap // 2, 4)), self._rip_count)
 
-    def start(self, coolant_c: float, *, theta_rad: float = 0.0, states=None) -> None:
-        """Begin a mission with everything at the coolant's temperature, or with the modes ``states`` of an earlier end."""
-        k, net = self._k, self.network
+    def _bundle(self, level: int) -> tuple:
+        """What the kernels need of a level: settings, network and ripple groups as plain arrays."""
+        if level in self._bundles:
+            return self._bundles[level]
+        k, s, tables, network = self._k, self.settings, self.tables, self._levels.network(level)
+        check_fit(tables, network)
+        n_chips, lanes = self.n_chips, self._lanes
+        settings = np.array([s.f_slow_hz, s.steps_per_period, s.first_step_s, s.longest_step_s, s.settle_periods, s.settle_above_k,
+                             s.t_stop_c, min(SHARED_WITHIN_S, 0.1 / network.lam_shared_per_s.max(initial=1.0)), np.inf, -np.inf, 0.0], float)
+        lam, rho = _padded(network.lam_local_per_s, lanes, 1.0), _padded(network.rho_local, lanes, 0.0)
+        lam_s = network.lam_shared_per_s
+        n_l, n_s = lam.shape[0], lam_s.size
+        steps = np.empty((_LEVELS, 2 * n_l * lanes + lanes + 2 * n_s))
+        for v in range(_LEVELS):
+            k.step_factors(s.first_step_s * 2.0**v, lam, rho, lam_s, steps[v])
+        position = 2 * (np.arange(n_chips) // 6) + np.arange(n_chips) % 2
+        like = position if not tables.modulation.half_wave_symmetric else position - position % 2
+        group, members, group_lam, group_rho = _ripple_groups(*_own_response(network), like)
+        if self._controlled:
+            rows = self._levels.surface(level)
+            local = np.stack([_padded(row[:n_l * n_chips].reshape(n_l, n_chips), lanes, 0.0) for row in rows])
+            surface = local, np.ascontiguousarray(rows[:, n_l * n_chips:])
+        else:
+            surface = np.empty((0, n_l, lanes)), np.empty((0, n_s))
+        net = (n_l, n_s, lam, rho, np.ascontiguousarray(lam_s), np.ascontiguousarray(network.g_coolant),
+               _padded(network.g_coolant_local, lanes, 0.0), *surface, steps, np.empty(steps.shape[1]))
+        self._bundles[level] = settings, net, (group, position[members], tables.plan.flows, group_lam, group_rho)
+        return self._bundles[level]
+
+    def _enter(self, level: int, local, shared) -> None:
+        """Put a level's network and a state of its modes in place."""
+        k = self._k
+        self.level, self.network = level, self._levels.network(level)
+        self._settings, self._net, self._groups = self._bundle(level)
+        net, n, w = self.network, self.n_chips, self._w
         n_l, n_s = self._net[:2]
-        w = np.zeros(k.W_SIZE)
-        self._coolant_start = float(coolant_c)
-        n = self.n_chips
-
-        def local(place):
-            return w[place:place + n_l * k.LANE].reshape(n_l, k.LANE)[:, :n]
-
-        def shared(place):
-            return w[place:place + n_s * k.LANE].reshape(n_s, k.LANE)[:, :n]
-
-        if states is not None:
-            x_l, x_s, coolant_then = states
-            # the coolant may start elsewhere than it ended: temperatures stay
-            local(k.X_L)[:] = x_l.reshape(n_l, n) - net.g_coolant_local * (coolant_c - coolant_then)
-            w[k.X_S:k.X_S + n_s] = x_s - net.g_coolant * (coolant_c - coolant_then)
+        self._local(k.X_L)[:] = local.reshape(n_l, n)
+        w[k.X_S:k.X_S + n_s] = shared
         for s in range(n_s):
             w[k.B_S + s:k.B_S + n * k.S_MAX:k.S_MAX] = net.b_shared[s]
-        shared(k.C_S)[:] = net.c_shared.T
-        shared(k.CASE_S)[:] = net.c_case_shared.T
+        for place, rows in ((k.C_S, net.c_shared), (k.CASE_S, net.c_case_shared)):
+            w[place:place + n_s * k.LANE].reshape(n_s, k.LANE)[:, :n] = rows.T
         own = net.rho_local != 0.0
-        local(k.CASE_L)[:] = np.where(own, net.rho_case_local / np.where(own, net.rho_local, 1.0), 0.0)
-        w[k.KNOT:k.KNOT + self.tables.knot_c.size] = self.tables.knot_c
-        k.junctions(self._lane_tuple, w, n_l, n_s, coolant_c)
-        self._w = w
-        self._now = np.zeros(k.N_NOW)
-        self._now[k.COOLANT], self._now[k.THETA] = coolant_c, theta_rad
-        self._op = np.zeros(k.N_ROW)
-        self._op[k.DIRECTION] = 1.0
-        self._ripple_op = np.zeros(k.N_ROW)
+        self._local(k.CASE_L)[:] = np.where(own, net.rho_case_local / np.where(own, net.rho_local, 1.0), 0.0)
+        k.junctions(self._lane_tuple, w, n_l, n_s, self._now[k.COOLANT])
         groups = self._groups[1].size
         ripple_nodes = RIPPLE_NODES_JUMPS if self.tables.jumps else k.RIPPLE_NODES
         self._ripple, self._nodes = np.zeros((groups, 6)), np.zeros((groups, ripple_nodes + 1, self._groups[3].shape[1]))
+
+    def _local(self, place):
+        """Room of the local modes in the work array, shape (modes, chips)."""
+        k, n_l = self._k, self._net[0]
+        return self._w[place:place + n_l * k.LANE].reshape(n_l, k.LANE)[:, :self.n_chips]
+
+    def start(self, coolant_c: float, *, theta_rad: float = 0.0, states: MarchState | None = None, group: int = 0) -> None:
+        """Begin a mission with everything at the coolant's temperature and the first level of a ``group`` of the cooling, or with the ``states`` of an earlier end."""
+        k = self._k
+        self._w, self._now = np.zeros(k.W_SIZE), np.zeros(k.N_NOW)
+        self._w[k.KNOT:k.KNOT + self.tables.knot_c.size] = self.tables.knot_c
+        self._coolant_start = float(coolant_c)
+        self._now[k.COOLANT], self._now[k.THETA] = coolant_c, theta_rad
+        if states is None:
+            level = self._levels.groups[group].levels[0]
+            net = self._levels.network(level)
+            local, shared = np.zeros(net.lam_local_per_s.shape), np.zeros(net.lam_shared_per_s.size)
+        else:
+            level, net = states.level, self._levels.network(states.level)
+            # the coolant may start elsewhere than it ended: temperatures stay
+            step = coolant_c - states.coolant_c
+            local, shared = states.local.reshape(net.g_coolant_local.shape) - net.g_coolant_local * step, states.shared - net.g_coolant * step
+        self._enter(level, local, shared)
+        self._op = np.zeros(k.N_ROW)
+        self._op[k.DIRECTION] = 1.0
+        self._ripple_op = np.zeros(k.N_ROW)
         self._window = np.zeros((5, self._lanes))
         self._last, self._heading = np.zeros((2 * self._lanes, 5)), np.full(2 * self._lanes, 2, np.int64)
         self._count[:] = 0
         self._rip_count[0] = 0
         self._before_first = True
+        #: Time spent at each level [s], and the first changes: (time [s], level entered).
+        self.level_time_s, self.changes, self.n_changes = np.zeros(self._levels.count), [], 0
+        self._entered_s, self._level_start = 0.0, level
+        self._memory = None  # of the state at the start, in the modes of the latest change
+
+    def _change(self, level: int) -> None:
+        """Go on at another level of the cooling: every temperature of the masses stays."""
+        k = self._k
+        self._to_physical_states()
+        self._hand_over()
+        kept = self._kept()
+        move = self._levels.move(self.level, level).matrix
+        x = move @ np.concatenate(self.states[:2])
+        self._memory = move @ (np.diag(kept) if self._memory is None else kept[:, None] * self._memory)
+        now = float(self._now[k.TIME])
+        self.level_time_s[self.level] += now - self._entered_s
+        self._entered_s = now
+        if self.n_changes < _CHANGES_KEPT:
+            self.changes.append((now, level))
+        self.n_changes += 1
+        cut = self._levels.network(level).lam_local_per_s.size
+        self._enter(level, x[:cut], x[cut:])
+
+    def _kept(self):
+        """What is left of each mode since the latest change of the cooling."""
+        net = self.network
+        return np.exp(-np.concatenate([net.lam_local_per_s.ravel(), net.lam_shared_per_s]) * (self._now[self._k.TIME] - self._entered_s))
+
+    def _set_look(self, group: int) -> None:
+        """Tell the kernel at which temperature of the sink the level of a group gives way."""
+        k, one = self._k, self._levels.groups[group]
+        place = one.levels.index(self.level)
+        self._settings[k.SURFACE_UP] = one.up_c[place] if place < len(one.up_c) else np.inf
+        self._settings[k.SURFACE_DOWN] = one.down_c[place - 1] if place > 0 else -np.inf
+        self._settings[k.SURFACE_RISE] = float(one.on_rise)
+
+    def surface_c(self) -> float:
+        """Hottest sink surface now [degC]; only where the cooling has more than one level."""
+        x = np.concatenate(self.states[:2])
+        return float(self._now[self._k.COOLANT] + (self._levels.surface(self.level) @ x).max())
 
     @property
     def angle_rad(self) -> float:
@@ -236,32 +323,38 @@ class ElectrothermalMarch:
         """Junction temperatures now, shape (chips,) [degC] (in fast rotation: their mean over a period)."""
         return self._w[self._k.T:self._k.T + self.n_chips].copy()
 
-    def periodic_start(self, states_before, duration_s: float):
+    def periodic_start(self, states_before: MarchState, duration_s: float) -> MarchState:
         """States that a mission would start with if it were repeated for ever, judged from one pass.
 
         Each mode forgets its start at its own known rate; what the losses add is taken
         from the pass. Exact for losses that do not depend on temperature, otherwise a
-        step of a quickly closing iteration.
+        step of a quickly closing iteration. Where the cooling changed its level, the changes are taken to come at the same
+        times again; where it ended at another level than it began, the end itself is the next start.
         """
-        lam_l, lam_s = self._net[2][:, :self.n_chips].ravel(), self._net[4]
-        x_l, x_s, coolant = self.states
-        keep_l, keep_s = np.exp(-lam_l * duration_s), np.exp(-lam_s * duration_s)
+        x, x_before = (np.concatenate(s[:2]) for s in (self.states, states_before))
+        net = self.network
+        g = np.concatenate([net.g_coolant_local.ravel(), net.g_coolant])
         # the coolant may end elsewhere than it began; the next start takes its step again
-        change = self._coolant_start - coolant
-        step, step_l = self.network.g_coolant * change, self.network.g_coolant_local.ravel() * change
-        new_l = (x_l - step_l - keep_l * states_before[0]) / -np.expm1(-lam_l * duration_s)
-        new_s = (x_s - step - keep_s * states_before[1]) / -np.expm1(-lam_s * duration_s)
-        return new_l, new_s, self._coolant_start
+        x = x - g * (self._coolant_start - self.states.coolant_c)
+        if self._memory is None:
+            rate = np.concatenate([net.lam_local_per_s.ravel(), net.lam_shared_per_s])
+            new = (x - np.exp(-rate * duration_s) * x_before) / -np.expm1(-rate * duration_s)
+        elif self.level != self._level_start:
+            new = x
+        else:
+            memory = self._kept()[:, None] * self._memory
+            new = np.linalg.solve(np.eye(x.size) - memory, x - memory @ x_before)
+        cut = net.lam_local_per_s.size
+        return MarchState(new[:cut], new[cut:], self._coolant_start, self.level)
 
     @property
-    def states(self):
-        """Modes and coolant now; give them to :meth:`start` to go on from here."""
+    def states(self) -> MarchState:
+        """Modes, coolant and level now; give them to :meth:`start` to go on from here."""
         k = self._k
-        n_l, n_s = self._net[:2]
-        local = self._w[k.X_L:k.X_L + n_l * k.LANE].reshape(n_l, k.LANE)[:, :self.n_chips].ravel()
-        return local, self._w[k.X_S:k.X_S + n_s].copy(), float(self._now[k.COOLANT])
+        n_s = self._net[1]
+        return MarchState(self._local(k.X_L).ravel(), self._w[k.X_S:k.X_S + n_s].copy(), float(self._now[k.COOLANT]), self.level)
 
-    def add_block(self, points: OperatingPoints, *, dt_s, phase_id, coolant_c, switching_frequency_hz, dc_voltage_v) -> RowEnvelope:
+    def add_block(self, points: OperatingPoints, *, dt_s, phase_id, coolant_c, switching_frequency_hz, dc_voltage_v, group=None) -> RowEnvelope:
         """March one block.
 
         Parameters
@@ -271,6 +364,8 @@ class ElectrothermalMarch:
         phase_id : ndarray of int16, shape (n,)
         coolant_c : ndarray, shape (n,)
         switching_frequency_hz, dc_voltage_v : float or ndarray, shape (n,)
+        group : ndarray of int, shape (n,), optional
+            Which group of the cooling's levels every row belongs to; default: the first.
 
         Raises
         ------
@@ -299,16 +394,25 @@ class ElectrothermalMarch:
         if self._before_first:
             self._sample_start(float(phases[0]))
         start, theta = self._now[k.TIME], self._now[k.THETA]
+        groups = np.zeros(rows.size, int) if group is None else np.asarray(group)[rows]
+        level = np.empty(rows.size, np.int16)
+        borders = np.concatenate([np.flatnonzero(np.diff(groups)) + 1, [rows.size]])
         at = 0
-        while at < rows.size:
-            at, status = k.march_rows(
-                self._lane_tuple, at, table, phases, self._w, *self._net, *self._groups, *self._tables, self._settings, self._now, self._op,
-                self._ripple_op, self._ripple, self._nodes, self._window, self._last, self._heading, *self._points, *self._ripple_out, temps, loss)
-            if status == k.RUNAWAY:
-                now = self.junction_c
-                chip = int(np.argmax(np.where(np.isfinite(now), now, np.inf)))
-                raise NoStableTemperature(self._runaway_words(chip, table[at], float(points.mod_index[rows[at]])))
-            self._hand_over()
+        for end in borders.tolist():
+            self._belong(int(groups[at]))
+            while at < end:
+                before = at
+                at, status = k.march_rows(
+                    self._lane_tuple, at, table[:end], phases, self._w, *self._net, *self._groups, *self._tables, self._settings, self._now, self._op,
+                    self._ripple_op, self._ripple, self._nodes, self._window, self._last, self._heading, *self._points, *self._ripple_out, temps, loss)
+                level[before:at] = self.level
+                if status == k.RUNAWAY:
+                    now = self.junction_c
+                    chip = int(np.argmax(np.where(np.isfinite(now), now, np.inf)))
+                    raise NoStableTemperature(self._runaway_words(chip, table[at], float(points.mod_index[rows[at]])))
+                self._hand_over()
+                if status == k.CHANGE:
+                    self._step_level(int(groups[at]))
         ends = start + np.cumsum(table[:, k.DT])
         first = np.concatenate([[0], np.cumsum(pieces)[:-1]])
         t_end = ends[np.cumsum(pieces) - 1]
@@ -321,10 +425,25 @@ class ElectrothermalMarch:
             t_min_c=np.minimum.reduceat(temps[:, 0], first), t_max_c=np.maximum.reduceat(temps[:, 1], first),
             case_min_c=np.minimum.reduceat(temps[:, 2], first), case_max_c=np.maximum.reduceat(temps[:, 3], first),
             loss_j=np.add.reduceat(loss, first), coolant_c=np.broadcast_to(np.asarray(coolant_c, float), dt_s.shape),
-            switching_hz=table[last, k.FSW], theta_rad=turned + points.current_angle_rad,
+            switching_hz=table[last, k.FSW], theta_rad=turned + points.current_angle_rad, level=level[last],
             piece_s=table[:, k.DT].copy() if watching else np.empty(0),
             piece_above=temps[:, 1] > self.settings.watch_c if watching else np.empty((0, self.n_chips), bool),
         )
+
+    def _belong(self, group: int) -> None:
+        """Go over to a group of levels, if the present level is none of it, and set its thresholds."""
+        levels = self._levels.groups[group].levels
+        if self.level not in levels:
+            self._change(levels[0])
+        self._set_look(group)
+
+    def _step_level(self, group: int) -> None:
+        """The sink has passed a threshold: next level up or down."""
+        one, k = self._levels.groups[group], self._k
+        surface = self.surface_c() - (self._now[k.COOLANT] if one.on_rise else 0.0)
+        place = one.levels.index(self.level) + (1 if surface > self._settings[k.SURFACE_UP] else -1)
+        self._change(one.levels[place])
+        self._set_look(group)
 
     def _runaway_words(self, chip, op, mod_index):
         """Why a march ended beyond ``t_stop_c``: no stable temperature at all, or one that no chip survives."""
@@ -346,6 +465,14 @@ class ElectrothermalMarch:
     def finish(self) -> None:
         """Close the mission: hand over what the turning-point filters still hold; states are physical afterwards."""
         k = self._k
+        self._to_physical_states()
+        self.level_time_s[self.level] += float(self._now[k.TIME]) - self._entered_s
+        k.flush_points(self._last, self._heading, *self._points)
+        self._hand_over()
+
+    def _to_physical_states(self) -> None:
+        """Close the counting window of fast rotation and put the ripple of this moment into the modes."""
+        k = self._k
         k.close_window(self._now, self._op, self._window, np.empty((2, self._lanes)), np.empty(2), np.empty(self._lanes),
                        self._last, self._heading, *self._points, *self._ripple_out)
         if self._now[k.REGIME] == k.MEAN:
@@ -354,8 +481,6 @@ class ElectrothermalMarch:
             k.add_ripple(1.0, self._op, self._now[k.THETA], self._w, n_l, max(self.tables.knot_c.size - 1, 1), group, group_position, flows, group_lam,
                          group_rho, self._ripple, self._nodes)
             self._now[k.REGIME] = k.ANGLE
-        k.flush_points(self._last, self._heading, *self._points)
-        self._hand_over()
 
     def _sample_start(self, phase):
         k, w = self._k, self._w
@@ -378,6 +503,8 @@ class ElectrothermalMarch:
         if self._derates:
             # the switching frequency follows the temperature from piece to piece
             pieces = np.where(points.i_peak_a > 0.0, np.maximum(pieces, np.clip(np.ceil(dt_s / DERATE_EVERY_S - 1e-9), 1, 200000)), pieces)
+        if self._controlled:
+            pieces = np.maximum(pieces, np.clip(np.ceil(dt_s / LOOK_EVERY_S - 1e-9), 1, 20000))
         if np.isfinite(self.settings.watch_c):
             pieces = np.maximum(pieces, np.clip(np.ceil(dt_s - 1e-9), 1, 20000))
         return pieces.astype(int)

@@ -17,12 +17,22 @@ from ..errors import InputError
 from .networks import CauerLadder
 
 
+@dataclass(frozen=True)
+class Spot:
+    """A temperature within a body: the sum of its nodes' temperatures with ``weight`` (m,), which add up to 1."""
+
+    first: int
+    weight: np.ndarray
+
+
 @dataclass
 class NetworkBuilder:
     """Collects nodes and conductances; :meth:`build` gives the full network."""
 
     _c: list[float] = field(default_factory=list)
     _edges: list[tuple[int, int, float]] = field(default_factory=list)
+    _to_spots: list[tuple[int, Spot, float]] = field(default_factory=list)
+    _bodies: list[tuple[int, np.ndarray, int]] = field(default_factory=list)
     _to_coolant: list[tuple[int, float]] = field(default_factory=list)
 
     def node(self, c_j_per_k: float = 0.0) -> int:
@@ -34,18 +44,33 @@ class NetworkBuilder:
         """Add heat capacity at a node."""
         self._c[a] += float(c_j_per_k)
 
-    def resistance(self, a: int, b: int, r_k_per_w: float) -> None:
-        """Join two nodes."""
+    def body(self, c_j_per_k: np.ndarray, g_w_per_k: np.ndarray, surface: int) -> int:
+        """Add a body of m nodes that stands on node ``surface``; returns the number of its first node.
+
+        Parameters
+        ----------
+        c_j_per_k : ndarray, shape (m,)
+        g_w_per_k : ndarray, shape (m, m)
+            Symmetric: heat that its nodes give off, by their temperatures over the surface. What the rows add up to goes to the surface.
+        surface : int
+        """
+        first = len(self._c)
+        self._c.extend(c_j_per_k.tolist())
+        self._bodies.append((first, g_w_per_k, surface))
+        return first
+
+    def resistance(self, a: int, b: int | Spot, r_k_per_w: float) -> None:
+        """Join a node to another, or to a spot of a body."""
         require_range("r_k_per_w", r_k_per_w, low=0.0, low_open=True, unit="K/W")
-        self._edges.append((a, b, 1.0 / r_k_per_w))
+        (self._to_spots if isinstance(b, Spot) else self._edges).append((a, b, 1.0 / r_k_per_w))
 
     def to_coolant(self, a: int, r_k_per_w: float) -> None:
         """Join a node to the coolant."""
         require_range("r_k_per_w", r_k_per_w, low=0.0, low_open=True, unit="K/W")
         self._to_coolant.append((a, 1.0 / r_k_per_w))
 
-    def ladder(self, ladder: CauerLadder, end: int | None) -> int:
-        """Add a ladder that ends at node ``end`` (None: at the coolant); returns its heated node."""
+    def ladder(self, ladder: CauerLadder, end: int | Spot | None) -> int:
+        """Add a ladder that ends at node or spot ``end`` (None: at the coolant); returns its heated node."""
         nodes = [self.node(c) for c in ladder.c_j_per_k]
         for k, r in enumerate(ladder.r_k_per_w):
             if k + 1 < len(nodes):
@@ -63,6 +88,10 @@ class NetworkBuilder:
         for a, b, _ in self._edges:
             beside.setdefault(a, []).append(b)
             beside.setdefault(b, []).append(a)
+        for a, spot, _ in self._to_spots:
+            beside.setdefault(spot.first, []).append(a)
+        for first, g, surface in self._bodies:
+            beside.setdefault(surface, []).extend(range(first, first + len(g)))
         while waiting:
             for other in beside.get(waiting.pop(), []):
                 if other not in reached:
@@ -70,7 +99,7 @@ class NetworkBuilder:
                     waiting.append(other)
         return len(reached) == len(self._c)
 
-    def build(self, heated: list[int], watched: list[int], surfaces: list[int] | tuple[int, ...] = ()) -> FullNetwork:
+    def build(self, heated: list[int], watched: list[int | Spot], surfaces: list[int] | tuple[int, ...] = ()) -> FullNetwork:
         """Assemble with heat entering at ``heated``, case points ``watched`` (one a chip) and sink ``surfaces``."""
         n = len(self._c)
         c = np.array(self._c)
@@ -80,6 +109,18 @@ class NetworkBuilder:
             g[b, b] += y
             g[a, b] -= y
             g[b, a] -= y
+        for a, spot, y in self._to_spots:
+            own = slice(spot.first, spot.first + spot.weight.size)
+            g[a, a] += y
+            g[a, own] -= y * spot.weight
+            g[own, a] -= y * spot.weight
+            g[own, own] += y * np.outer(spot.weight, spot.weight)
+        for first, inner, surface in self._bodies:
+            own, out = slice(first, first + len(inner)), inner.sum(axis=1)
+            g[own, own] += inner
+            g[surface, own] -= out
+            g[own, surface] -= out
+            g[surface, surface] += out.sum()
         for a, y in self._to_coolant:
             g[a, a] += y
         mass = np.flatnonzero(c > 0.0)
@@ -100,7 +141,7 @@ class NetworkBuilder:
             c_j_per_k=c[mass],
             g_w_per_k=0.5 * (g_mass + g_mass.T),
             out_junction=recover[np.asarray(heated)],
-            out_case=recover[np.asarray(watched)],
+            out_case=np.array([w.weight @ recover[w.first : w.first + w.weight.size] if isinstance(w, Spot) else recover[w] for w in watched]),
             out_surface=recover[np.asarray(surfaces, int)],
         )
 
@@ -148,9 +189,14 @@ class FullNetwork:
             What a unit temperature of all nodes is in modes.
         """
         root = np.sqrt(self.c_j_per_k)
-        lam, vec = np.linalg.eigh(self.g_w_per_k / np.outer(root, root))
+        lam, vec = self.shapes()
         shape = vec / root[:, None]
         return lam, self.out_junction @ shape, self.out_case @ shape, vec.T @ root
+
+    def shapes(self):
+        """Decay rates, rising [1/s], and orthonormal shapes times the root of the capacity; shapes (n_s,) and (n_s, n_s)."""
+        root = np.sqrt(self.c_j_per_k)
+        return np.linalg.eigh(self.g_w_per_k / np.outer(root, root))
 
     def step_response_k_per_w(self, time_s, chip: int) -> np.ndarray:
         """Junction rises per watt in ``chip`` [K/W], shape (len(time_s), n)."""
