@@ -1,4 +1,4 @@
-"""The command line: ``mission run``, ``check``, ``compare``, ``rating``, ``module``, ``sheet``, ``schema``.
+"""The command line: ``mission run``, ``check``, ``compare``, ``rating``, ``module``, ``sheet``, ``curve``, ``schema``.
 
 Exit codes: 0 fine, 1 a limit or the target is missed (or no stable temperature
 exists), 2 the input cannot be used.
@@ -21,6 +21,7 @@ _EXAMPLES = """examples:
   mission rating profiles/ferry-hour.toml --out rating   largest current over switching and output frequency
   mission module heron-300 --out heron              curves, energies and loss split of a module in pictures
   mission sheet profiles/swift-400-sheet/sheet.toml --out swift.toml   module file from digitised data-sheet curves
+  mission curve profiles/heron-curve/greased.csv --kind cooling --power 400 --against profiles/heron-curve/dry.csv   measured curves: branches
   mission schema                                    what result.json holds
 
 A study is a TOML file; the ones in profiles/ are meant to be copied.
@@ -110,6 +111,34 @@ def _parser():
     sheet.add_argument("--out", type=Path, required=True, metavar="MODULE.toml")
     sheet.add_argument("--quiet", action="store_true", help="no report")
     sheet.set_defaults(action=_sheet)
+    curve = commands.add_parser("curve", help="branches and junction-to-case resistance from a measured heating or cooling curve",
+                                description="Start, impedance, structure function and branches of a record of the chip's temperature after a step of "
+                                            "power. With a second record of the same chip on another interface: where the two part, and the branches "
+                                            "up to the case.")
+    curve.add_argument("record", type=Path, metavar="RECORD.csv")
+    curve.add_argument("--kind", required=True, choices=("heating", "cooling"), help="whether the power was switched on or off")
+    curve.add_argument("--power", type=float, required=True, metavar="W",
+                       help="size of the step; cooling: heating power minus that of the sensing current")
+    curve.add_argument("--k-factor", type=float, metavar="MV_PER_K", help="slope of the voltage over temperature, where the record holds voltages")
+    curve.add_argument("--units", metavar="TIME,SIGNAL", help="s, ms or us, and degC, K, V or mV; default s,degC (with --k-factor s,V)")
+    curve.add_argument("--columns", metavar="TIME,SIGNAL", help="names in the header or numbers from 1; default: the file has these two only")
+    curve.add_argument("--delimiter", default=",", metavar="SIGN", help="default ,")
+    curve.add_argument("--decimal", default=".", metavar="SIGN", help="default .")
+    curve.add_argument("--step-at", type=float, default=0.0, metavar="S", help="time of the step on the record's axis; default 0")
+    curve.add_argument("--window", metavar="S,S", help="first and last time of the law of the square root of time; default: looked for")
+    curve.add_argument("--start", type=float, metavar="DEGC", help="temperature at the step where it is known, instead of that law")
+    curve.add_argument("--chip-area", type=float, metavar="MM2", help="heated area, to hold the early slope against")
+    curve.add_argument("--chip-material", default="silicon", metavar="NAME", help="of the shipped materials; default silicon")
+    curve.add_argument("--chip-at", type=float, metavar="DEGC", help="temperature that its conductivity is taken at; default: that of the data")
+    curve.add_argument("--branches", type=int, metavar="N", help="1 to 8; default: as many as are needed")
+    curve.add_argument("--against", type=Path, metavar="OTHER.csv", help="the same chip on another interface, e.g. without grease; same form of file")
+    curve.add_argument("--against-power", type=float, metavar="W", help="default: the same power")
+    curve.add_argument("--against-start", type=float, metavar="DEGC", help="beside --start")
+    curve.add_argument("--case-at", type=float, metavar="K_PER_W", help="resistance to the case where it is known; default: what --against finds")
+    curve.add_argument("--reference", choices=("case", "sink"), help="where the temperatures of the record count from, if not from the coolant")
+    curve.add_argument("--out", type=Path, metavar="DIR", help="folder for branches, tables and pictures; without it the text only")
+    curve.add_argument("--quiet", action="store_true", help="no text")
+    curve.set_defaults(action=_curve)
     schema = commands.add_parser("schema", help="print the JSON schema of result.json")
     schema.set_defaults(action=_schema)
     return parser
@@ -245,6 +274,66 @@ def _sheet(args) -> int:
         print(result.report.to_text())
         print(f"\nwritten: {args.out}")
     return FINE
+
+
+def _curve(args) -> int:
+    from dataclasses import replace
+
+    from .errors import InputError, near_match
+    from .show.curve import curve_text, write_curve
+    from .thermal import load_materials
+    from .thermal.evaluation import evaluate_curve
+    from .thermal.measured import read_record
+
+    for flag, value in (("--against-power", args.against_power), ("--against-start", args.against_start)):
+        if value is not None and args.against is None:
+            raise InputError(flag, f"{value:g} without a second record", "only beside --against")
+    materials = load_materials()
+    if args.chip_material not in materials:
+        raise InputError("--chip-material", f"'{args.chip_material}'", "one of " + ", ".join(sorted(materials)),
+                         near_match(args.chip_material, materials))
+    material = None
+    if args.chip_area is not None:
+        material = materials[args.chip_material] if args.chip_at is None else materials[args.chip_material].at(args.chip_at)
+    elif args.chip_at is not None:
+        raise InputError("--chip-at", f"{args.chip_at:g} without an area", "only beside --chip-area")
+    signal = "temperature" if args.k_factor is None else "voltage"
+    columns = None
+    if args.columns is not None:
+        columns = dict(zip(("time", signal), (int(c) if c.isdecimal() else c for c in _pair("--columns", args.columns))))
+    form = {"kind": args.kind, "signal": signal, "k_factor_mv_per_k": args.k_factor, "step_at_s": args.step_at, "columns": columns,
+            "units": None if args.units is None else _pair("--units", args.units), "delimiter": args.delimiter, "decimal": args.decimal}
+    record = read_record(args.record, power_w=args.power, **form)
+    other = None
+    if args.against is not None:
+        other = read_record(args.against, power_w=args.power if args.against_power is None else args.against_power, **form)
+        if other.label == record.label:
+            record, other = (replace(r, label=f"{p.resolve().parent.name}/{p.name}") for r, p in ((record, args.record), (other, args.against)))
+    window = None
+    if args.window is not None:
+        try:
+            window = tuple(float(w) for w in _pair("--window", args.window))
+        except ValueError:
+            raise InputError("--window", f"'{args.window}'", "two times in seconds with a comma between them") from None
+    found = evaluate_curve(
+        record, other, window_s=window, start_c=args.start, against_start_c=args.against_start, branches=args.branches, chip_area_mm2=args.chip_area,
+        chip_material=material, case_at_k_per_w=args.case_at)
+    text = curve_text(found, args.reference)
+    paths = [] if args.out is None else write_curve(found, args.out, args.reference)
+    if not args.quiet:
+        print(text)
+        if paths:
+            print(f"\nwritten to {args.out}: " + ", ".join(p.name for p in paths))
+    return FINE
+
+
+def _pair(flag, text) -> tuple[str, str]:
+    from .errors import InputError
+
+    parts = [p.strip() for p in text.split(",")]
+    if len(parts) != 2 or not all(parts):
+        raise InputError(flag, f"'{text}'", "two entries with a comma between them")
+    return tuple(parts)
 
 
 class _Bar:

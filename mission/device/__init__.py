@@ -1,5 +1,6 @@
 """Device: a module file -> ``PowerModule`` with curves, ratings, gate and thermal data."""
 
+from .coupling import Coupling
 from .curves import (
     OutsideData,
     on_state_crossing_a,
@@ -33,12 +34,15 @@ from .module import (
     SwitchingData,
     Wires,
 )
+from .plate import ChipFace, PlateChip, PlateLayerSpec, PlateSpec, chip_faces, lower_face_mm, plate_chip_names
 
 __all__ = [
     "CaseToSinkChips",
     "CaseToSinkModule",
+    "ChipFace",
     "ChipPair",
     "ChipThermal",
+    "Coupling",
     "CurrentSharing",
     "DiodeData",
     "EnergyCurve",
@@ -52,19 +56,25 @@ __all__ = [
     "OnStateLine",
     "OutsideData",
     "ParallelChips",
+    "PlateChip",
+    "PlateLayerSpec",
+    "PlateSpec",
     "PowerModule",
     "Ratings",
     "SwitchData",
     "SwitchingData",
     "Wires",
+    "chip_faces",
     "current_sharing",
     "gate_drive_power_w",
     "gate_peak_current_a",
     "load_module",
+    "lower_face_mm",
     "module_from_dict",
     "on_state_crossing_a",
     "on_state_voltage_v",
     "outside_data",
+    "plate_chip_names",
     "save_module",
     "shipped_modules",
     "switching_energy_j",

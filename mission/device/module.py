@@ -17,7 +17,9 @@ from pydantic import Field, field_validator, model_validator
 
 from ..errors import RangeError
 from ..tomlfile import FileModel
+from .coupling import Coupling, check_coupling
 from .curves import broken_line
+from .plate import PlateSpec, check_plate
 
 # A number in quotes or a true/false is a slip, not a number.
 Number = Annotated[float, Field(strict=True)]
@@ -400,9 +402,12 @@ class LayerSpec(FileModel):
 
 
 class ChipThermal(FileModel):
-    """The way of the heat from one switch or one diode, heated alone: Foster branches of a data sheet, or layers."""
+    """The way of the heat from one switch or one diode, heated alone: Foster branches of a data sheet, or layers.
 
-    reference: Literal["case", "sink"]
+    ``reference``: where they end; layers that end on the plate of the section ``[plate]`` have "plate".
+    """
+
+    reference: Literal["case", "sink", "plate"]
     r_k_per_w: tuple[Positive, ...] = ()
     tau_s: tuple[Positive, ...] = ()
     layer: tuple[LayerSpec, ...] = ()
@@ -599,6 +604,8 @@ class PowerModule(FileModel):
     inner_diode: DiodeData | None = None
     clamp_diode: DiodeData | None = None
     case_to_sink: CaseToSink | None = None
+    plate: PlateSpec | None = None
+    coupling: tuple[Coupling, ...] = ()
     wires: Wires | None = None
     failure_mode: tuple[FailureMode, ...] = ()
 
@@ -654,6 +661,7 @@ class PowerModule(FileModel):
                 "no section case_to_sink",
                 'the branches hold the paste already: remove the section, or set reference = "case"',
             )
+        check_plate(self)
         if self.case_to_sink is not None and self.case_to_sink.per == "switch-and-diode":
             has_diodes = any(p.is_diode for p in self.chip_pairs())
             if has_diodes != (self.case_to_sink.r_th_diode_k_per_w is not None):
@@ -663,6 +671,7 @@ class PowerModule(FileModel):
                     "a resistance for every kind of chip there is",
                     "enter it" if has_diodes else f"kind = '{self.kind}' has one chip for both jobs: remove the key",
                 )
+        check_coupling(self)
         names = [f.name for f in self.failure_mode]
         for name in names:
             if names.count(name) > 1:

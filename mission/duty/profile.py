@@ -37,7 +37,7 @@ class ProfileBlock:
         How long each row holds, above zero.
     columns : dict of ndarray, shape (n,)
         ``current_a`` (rms, negative generating), ``torque_nm``, ``speed_rad_s``,
-        ``frequency_hz``, ``mod_index``, ``phi_rad``, ``coolant_c``, ``dc_voltage_v``: those that are there.
+        ``frequency_hz``, ``mod_index``, ``phi_rad``, ``coolant_c``, ``flow_m3_per_s``, ``dc_voltage_v``: those that are there.
     phase_id : ndarray of int16, shape (n,)
         Index into the profile's phases.
     first_row : int

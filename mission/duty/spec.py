@@ -48,6 +48,7 @@ class ColumnMap(FileModel):
     displacement: ColumnSpec | None = None
     power_factor: ColumnSpec | None = None
     coolant: ColumnSpec | None = None
+    flow: ColumnSpec | None = None
     dc_voltage: ColumnSpec | None = None
     phase: ColumnSpec | None = None
 

@@ -50,6 +50,8 @@ QUANTITIES: dict[str, Quantity] = {
     "displacement": Quantity("phi_rad", {"deg": (math.pi / 180.0, 0.0), "rad": (1.0, 0.0)}, -2.0 * math.pi, 2.0 * math.pi, "check the unit (deg, rad)"),
     "power_factor": Quantity("power_factor", {}, -1.0, 1.0, "cos(phi): positive motoring, negative generating"),
     "coolant": Quantity("coolant_c", {"degC": (1.0, 0.0), "K": (1.0, -273.15)}, -60.0, 150.0, "check the unit (degC, K)"),
+    "flow": Quantity("flow_m3_per_s", {"l/min": (1.0 / 60000.0, 0.0), "m3/h": (1.0 / 3600.0, 0.0), "l/s": (1e-3, 0.0), "m3/s": (1.0, 0.0)}, 0.0, 10.0,
+                     "flow of coolant or air, not negative; check the unit (l/min, m3/h)"),
     "dc_voltage": Quantity("dc_voltage_v", {"V": (1.0, 0.0), "kV": (1e3, 0.0)}, 1.0, 20e3, "check the unit (V, kV)"),
     "phase": Quantity("phase", {}, -math.inf, math.inf, ""),
 }

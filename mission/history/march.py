@@ -16,7 +16,7 @@ import numpy as np
 from ..errors import InputError, NoStableTemperature
 from ..losses import LossTables, reference_for
 from ..machine import OperatingPoints
-from ..thermal import CoolingLevels, ReducedNetwork
+from ..thermal import SLOW_MODES, CoolingLevels, ReducedNetwork
 from .steady import HeldPoint
 
 _POINT_CAPACITY = 32768
@@ -120,13 +120,15 @@ class RowEnvelope:
 class MarchState(NamedTuple):
     """Modes, coolant and level of the cooling at one moment; see :attr:`ElectrothermalMarch.states`.
 
-    ``local`` (L n,): local modes, scaled with their output weight; ``shared`` (S,).
+    ``local`` (L n,): local modes, scaled with their output weight; ``shared`` (S,); ``field`` (K,): modes of the full network,
+    kept where the cooling has several levels.
     """
 
     local: np.ndarray
     shared: np.ndarray
     coolant_c: float
     level: int = 0
+    field: np.ndarray | None = None
 
 
 #: Room of the kernels: local modes a chip, shared modes, corner temperatures.
@@ -138,7 +140,7 @@ def check_fit(tables: LossTables, network: ReducedNetwork) -> None:
     found = (network.lam_local_per_s.shape[0], network.lam_shared_per_s.size, tables.knot_c.size)
     if any(a > b for a, b in zip(found, (L_MAX, S_MAX, K_MAX))):
         raise InputError("module", f"{found[0]} local and {found[1]} shared thermal modes, curves at {found[2]} different temperatures",
-                         f"at most {L_MAX}, {S_MAX} and {K_MAX}", "give all curves at the same few temperatures, or fewer thermal branches or layers")
+                         f"at most {L_MAX}, {S_MAX} and {K_MAX}", "give all curves at the same few temperatures, fewer thermal branches or layers, or couplings that share their time constants")
 
 
 class ElectrothermalMarch:
@@ -270,17 +272,55 @@ class ElectrothermalMarch:
         #: Time spent at each level [s], and the first changes: (time [s], level entered).
         self.level_time_s, self.changes, self.n_changes = np.zeros(self._levels.count), [], 0
         self._entered_s, self._level_start = 0.0, level
-        self._memory = None  # of the state at the start, in the modes of the latest change
+        self._field = self._mean_state = self._memory = None
+        if self._levels.count > 1:
+            lam, _, _, read = self._levels.field(level)
+            self._field = np.zeros(lam.size) if states is None else states.field - self._levels.field(level)[2] * (coolant_c - states.coolant_c)
+            self._mean_state = read @ self._field  # what the reduced modes would be if every row had its mean loss
+            self._memory = np.eye(min(SLOW_MODES, lam.size))  # of the slowest modes at the start
+            self._field_coolant = float(coolant_c)
+
+    def _follow(self, dt_s, coolant_c, loss_j) -> None:
+        """Take the full network through rows that were marched, with the mean loss of each: exact, because its modes are."""
+        net = self.network
+        lam, heat, even, _ = self._levels.field(self.level)
+        step = np.diff(coolant_c, prepend=self._field_coolant)
+        self._field_coolant = float(coolant_c[-1])
+        rate = np.concatenate([net.lam_local_per_s.ravel(), net.lam_shared_per_s])
+        power = loss_j / dt_s[:, None]
+        for a in range(0, dt_s.size, 4096):
+            rows = slice(a, a + 4096)
+            h = dt_s[rows]
+            left = h.sum() - np.cumsum(h)  # from the end of each row to the end of the stretch
+
+            def taken(rates, inflow, evenly, now, h=h, left=left, step=step[rows]):
+                """State at the end: what is left of it, of every coolant step and of every row's heat."""
+                fade = np.exp(-np.outer(left, rates))
+                within = np.exp(-np.outer(h, rates))
+                grown = (inflow * (fade * -np.expm1(-np.outer(h, rates)))).sum(axis=0) / rates
+                return now * np.exp(-rates * h.sum()) + grown - evenly * (step @ (fade * within))
+
+            self._field = taken(lam, power[rows] @ heat, even, self._field)
+            local = np.tile(power[rows], net.rho_local.shape[0]) * net.rho_local.ravel()
+            self._mean_state = taken(rate, np.hstack([local, power[rows] @ net.b_shared.T]),
+                                     np.concatenate([net.g_coolant_local.ravel(), net.g_coolant]), self._mean_state)
+        slow = self._memory.shape[0]
+        self._memory = np.exp(-lam[:slow] * dt_s.sum())[:, None] * self._memory
 
     def _change(self, level: int) -> None:
         """Go on at another level of the cooling: every temperature of the masses stays."""
         k = self._k
         self._to_physical_states()
         self._hand_over()
-        kept = self._kept()
-        move = self._levels.move(self.level, level).matrix
-        x = move @ np.concatenate(self.states[:2])
-        self._memory = move @ (np.diag(kept) if self._memory is None else kept[:, None] * self._memory)
+        move = self._levels.move(self.level, level)
+        rest = np.concatenate(self.states[:2]) - self._mean_state
+        self._field = move.turn @ self._field
+        mean, own = self._levels.field(level)[3] @ self._field, self._mean_state.size - self.network.n_mutual
+        mean[mean.size - self.network.n_mutual:] = self._mean_state[own:]
+        self._mean_state = mean
+        x = self._mean_state + move.rest @ rest
+        slow = self._memory.shape[0]
+        self._memory = move.turn[:slow, :slow] @ self._memory
         now = float(self._now[k.TIME])
         self.level_time_s[self.level] += now - self._entered_s
         self._entered_s = now
@@ -289,11 +329,6 @@ class ElectrothermalMarch:
         self.n_changes += 1
         cut = self._levels.network(level).lam_local_per_s.size
         self._enter(level, x[:cut], x[cut:])
-
-    def _kept(self):
-        """What is left of each mode since the latest change of the cooling."""
-        net = self.network
-        return np.exp(-np.concatenate([net.lam_local_per_s.ravel(), net.lam_shared_per_s]) * (self._now[self._k.TIME] - self._entered_s))
 
     def _set_look(self, group: int) -> None:
         """Tell the kernel at which temperature of the sink the level of a group gives way."""
@@ -331,28 +366,33 @@ class ElectrothermalMarch:
         step of a quickly closing iteration. Where the cooling changed its level, the changes are taken to come at the same
         times again; where it ended at another level than it began, the end itself is the next start.
         """
-        x, x_before = (np.concatenate(s[:2]) for s in (self.states, states_before))
-        net = self.network
-        g = np.concatenate([net.g_coolant_local.ravel(), net.g_coolant])
+        net, now = self.network, self.states
+        x = np.concatenate(now[:2])
+        change = self._coolant_start - now.coolant_c
         # the coolant may end elsewhere than it began; the next start takes its step again
-        x = x - g * (self._coolant_start - self.states.coolant_c)
-        if self._memory is None:
+        x = x - np.concatenate([net.g_coolant_local.ravel(), net.g_coolant]) * change
+        field = None
+        if self._field is None:
             rate = np.concatenate([net.lam_local_per_s.ravel(), net.lam_shared_per_s])
-            new = (x - np.exp(-rate * duration_s) * x_before) / -np.expm1(-rate * duration_s)
-        elif self.level != self._level_start:
-            new = x
+            x = (x - np.exp(-rate * duration_s) * np.concatenate(states_before[:2])) / -np.expm1(-rate * duration_s)
         else:
-            memory = self._kept()[:, None] * self._memory
-            new = np.linalg.solve(np.eye(x.size) - memory, x - memory @ x_before)
+            _, _, even, read = self._levels.field(self.level)
+            field = self._field - even * change
+            if self.level == self._level_start:
+                slow = self._memory.shape[0]
+                more = np.zeros(field.size)
+                more[:slow] = self._memory @ np.linalg.solve(np.eye(slow) - self._memory, (field - states_before.field)[:slow])
+                field, x = field + more, x + read @ more
         cut = net.lam_local_per_s.size
-        return MarchState(new[:cut], new[cut:], self._coolant_start, self.level)
+        return MarchState(x[:cut], x[cut:], self._coolant_start, self.level, field)
 
     @property
     def states(self) -> MarchState:
         """Modes, coolant and level now; give them to :meth:`start` to go on from here."""
         k = self._k
         n_s = self._net[1]
-        return MarchState(self._local(k.X_L).ravel(), self._w[k.X_S:k.X_S + n_s].copy(), float(self._now[k.COOLANT]), self.level)
+        return MarchState(self._local(k.X_L).ravel(), self._w[k.X_S:k.X_S + n_s].copy(), float(self._now[k.COOLANT]), self.level,
+                          None if self._field is None else self._field.copy())
 
     def add_block(self, points: OperatingPoints, *, dt_s, phase_id, coolant_c, switching_frequency_hz, dc_voltage_v, group=None) -> RowEnvelope:
         """March one block.
@@ -406,6 +446,8 @@ class ElectrothermalMarch:
                     self._lane_tuple, at, table[:end], phases, self._w, *self._net, *self._groups, *self._tables, self._settings, self._now, self._op,
                     self._ripple_op, self._ripple, self._nodes, self._window, self._last, self._heading, *self._points, *self._ripple_out, temps, loss)
                 level[before:at] = self.level
+                if self._field is not None and at > before:
+                    self._follow(table[before:at, k.DT], table[before:at, k.T_COOLANT], loss[before:at, :self.n_chips])
                 if status == k.RUNAWAY:
                     now = self.junction_c
                     chip = int(np.argmax(np.where(np.isfinite(now), now, np.inf)))
@@ -546,9 +588,11 @@ def _own_response(network):
     Shared modes that are too slow to ripple are left out; neighbours of the others are joined to eight at most, so that their steady part stays.
     """
     lam, rho = network.lam_local_per_s, network.rho_local
-    own = network.c_shared.T * network.b_shared  # (S, n)
-    rate = network.lam_shared_per_s
-    fast = rate > RIPPLES_ABOVE_PER_S
+    # modes of one rate count together: those of a coupling cancel in a chip's own response
+    rate, which = np.unique(network.lam_shared_per_s, return_inverse=True)
+    own = np.zeros((rate.size, network.n_chips))
+    np.add.at(own, which, network.c_shared.T * network.b_shared)
+    fast = (rate > RIPPLES_ABOVE_PER_S) & (np.abs(own) > 1e-9 * np.abs(own).max(initial=0.0)).any(axis=1)
     if not fast.any():
         return lam, rho
     extra_lam, extra_rho = [], []

@@ -195,6 +195,9 @@ def rests_on(result) -> list[str]:
         out.append(f"losses: down to {result.carriers_min:.3g} switching periods in an output period; losses are means over a switching period and mean little below {FEW_CARRIERS}")
     if study.spec.cooling.sink_sees == "chip-losses":
         out.append("heat: the sink is driven by the chips' losses at once (cooling.sink_sees = chip-losses), not by the heat that leaves the module")
+    elif study.module.plate is not None:
+        out.append("heat: layers under each chip with spreading at fixed angles (a shortcut of the trade) down to a plate that is solved in three dimensions; heat enters it "
+                   "evenly over the face that a chip's layers end with, and leaves through even paste to a sink surface of one temperature")
     elif any(pair.thermal.layer for pair in study.module.chip_pairs()):
         out.append("heat: layers under each chip with spreading at fixed angles (a shortcut of the trade); the sink takes the heat that leaves them")
     else:

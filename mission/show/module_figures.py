@@ -7,7 +7,6 @@ of each line; drawn lines go through the points of the data sheet, dotted ones a
 from __future__ import annotations
 
 import math
-import unicodedata
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -32,6 +31,7 @@ from ..errors import RangeError
 from ..losses import Modulation, leg_losses_w
 from .figures import BLUE, GREY, INK, LIGHT_BLUE, LIGHT_RED, LIGHT_YELLOW, PAPER, RED, YELLOW, _spread, part_words, plain, styled
 from .text import number
+from .text import one_line as _line
 
 #: Marks of the temperatures from cold on; the hottest is filled.
 _MARKS = ("o", "s", "^", "D", "v", "P")
@@ -684,12 +684,6 @@ _KIND_WORDS = {"igbt": "IGBT with diodes", "igbt-schottky": "IGBT with silicon c
                "reverse-conducting-igbt": "reverse-conducting IGBT (one chip is switch and diode)", "mosfet": "MOSFET (one chip with its body diode)"}
 
 
-def _line(text, longest=100) -> str:
-    """One line of somebody's text, without characters that a terminal would act on."""
-    line = " ".join("".join(" " if c.isspace() else "?" if unicodedata.category(c)[0] == "C" else c for c in str(text)).split())
-    return line if len(line) <= longest else line[: longest - 1].rstrip() + "…"
-
-
 def module_text(module: PowerModule) -> str:
     """What a module is, for the terminal.
 
@@ -793,6 +787,9 @@ def _thermal_text(module):
             continue
         branches = " + ".join(f"{ohm:.3g} ({_time(tau)})" for ohm, tau in zip(pair.thermal.r_k_per_w, pair.thermal.tau_s, strict=True))
         yield f"    {name}: {sum(pair.thermal.r_k_per_w):.3g} K/W = {branches}"
+    if module.plate is not None:
+        layers = ", ".join(f"{_line(layer.material, 30)} {layer.thickness_mm:g} mm" for layer in module.plate.layer)
+        yield f"    plate under {'all chips' if module.arrangement == 'six-pack' else 'the chips of a leg'}: {module.plate.width_mm:g} x {module.plate.length_mm:g} mm, {layers}"
     paste = module.case_to_sink
     if paste is None:
         yield "    case to sink: in the branches"

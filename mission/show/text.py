@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import unicodedata
+
 
 def number(value: float, digits: int = 4) -> str:
     """A number as people write it: no exponents where they can be avoided.
@@ -26,6 +28,18 @@ def number(value: float, digits: int = 4) -> str:
         step = 10 ** max(floor(log10(size)) + 1 - digits, 0)
         return f"{round(value / step) * step:,.0f}".replace(",", " ")
     return f"{value:.{digits}g}"
+
+
+def one_line(text, longest: int = 100) -> str:
+    """One line of somebody's text, without characters that a terminal would act on.
+
+    Examples
+    --------
+    >>> one_line("a  b\\n\\x1b[31mc"), one_line("abcdef", 4)
+    ('a b ?[31mc', 'abc…')
+    """
+    line = " ".join("".join(" " if c.isspace() else "?" if unicodedata.category(c)[0] == "C" else c for c in str(text)).split())
+    return line if len(line) <= longest else line[: longest - 1].rstrip() + "…"
 
 
 def result_text(result) -> str:

@@ -170,7 +170,7 @@ def impedance_figure(
         seen = z[:, one] > 0.0
         ax.plot(t[seen], z[seen, one], color=colour, ls=dashes, lw=1.8 if k == 0 else 1.2)
         more = " itself" if k == 0 else f" and {alike[one]} alike" if one in alike else ""
-        entries.append((max(z[-1, one], bottom), f"{words[one]}{more}\n{number(end[one], 3)} K/W", {"color": colour, "ls": dashes}))
+        entries.append((max(z[-1, one], bottom), f"{words[one]}{more}\n{end[one]:.3g} K/W", {"color": colour, "ls": dashes}))
     _right_labels(ax, entries, 0.11)
     ax.set_xlabel("time since the step of power (logarithmic)")
     ax.set_ylabel("rise per watt, K/W (logarithmic)")
@@ -247,7 +247,8 @@ def measured_figure(measured: MeasuredImpedance, fit=None) -> Figure:
         smooth = 100.0 * (m.z_th_k_per_w / fit.z_th_k_per_w(m.time_s) - 1.0)
         low.plot(m.time_s, smooth, color=BLUE, lw=1.1)
         low.axhline(0.0, color=RED, ls=_DASHED, lw=1.0)
-        reach = max(1.5 * np.percentile(np.abs(smooth), 98), 0.2)
+        # branches need not follow the law to where no sample counts
+        reach = max(1.5 * np.percentile(np.abs(smooth[samples]), 98), 0.2)
         low.set_ylim(-reach, reach)
         low.yaxis.set_major_locator(MaxNLocator(4))
         low.set_ylabel("over the fit, %")

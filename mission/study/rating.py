@@ -10,10 +10,9 @@ import numpy as np
 from ..checks import require_range
 from ..device import current_sharing
 from ..errors import InputError, MissionError, NoStableTemperature, RangeError
-from ..history import ElectrothermalMarch, HeldPoint, MarchSettings, worst_standstill_rad
+from ..history import ElectrothermalMarch, HeldPoint, MarchSettings, MarchState, worst_standstill_rad
 from ..losses import DEAD_SHARE_MAX, build_tables, current_reach_a
 from ..machine import OperatingPoints
-from ..thermal import inverter_modes
 from .verdicts import junction_limit_c
 
 #: The current is found within this share of the module's peak rating.
@@ -97,7 +96,8 @@ class RatingBench:
         self.study = study
         spec, module = study.spec, study.module
         self.tables = build_tables(module, spec.inverter.modulation, **spec.inverter.table_options())
-        self.network = inverter_modes(module, spec.cooling, materials=study.materials(), relative_tolerance=spec.march.network_tolerance)
+        plan = study.cooling_plan()
+        self.network = plan.networks().network(plan.strongest())
         self.limit_c = junction_limit_c(study)
         peak = module.ratings.i_peak_repetitive_a if spec.limits.i_peak_max_a is None else spec.limits.i_peak_max_a
         self.peak_a = min(peak, current_reach_a(module))
@@ -122,7 +122,7 @@ class RatingBench:
         if still or i_peak_a == 0.0:
             return self._with_favoured(state.t_vj_c, point.coolant_c + self.network.r_case_k_per_w() @ state.loss_w, i_peak_a)
         net, f = self.network, point.frequency_hz
-        states = (net.rho_local / net.lam_local_per_s * state.loss_w).ravel(), net.b_shared @ state.loss_w / net.lam_shared_per_s, point.coolant_c
+        states = MarchState((net.rho_local / net.lam_local_per_s * state.loss_w).ravel(), net.b_shared @ state.loss_w / net.lam_shared_per_s, point.coolant_c)
         # whole periods, long enough for the local modes to feel their own swing
         periods = max(1, round(0.2 * f)) if f < self._engine.settings.f_slow_hz else max(4, round(f))
         row = OperatingPoints(*(np.array([v]) for v in (f, 1.0, i_peak_a, m, phi, 0.0, np.nan, np.nan, np.nan, np.nan)))

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 import time
 from collections.abc import Callable
 from dataclasses import dataclass
@@ -15,7 +16,7 @@ from ..history import MOST_PIECES, ElectrothermalMarch, EnvelopeBuilder, HeldPoi
 from ..lifetime import DamageLedger
 from ..losses import LossTables, build_tables
 from ..machine import operating_points
-from ..thermal import ReducedNetwork, inverter_modes
+from ..thermal import CoolingPlan, LevelState, ReducedNetwork
 from .cyclemap import CycleMap
 from .spec import Study
 
@@ -35,7 +36,7 @@ class Stopped(MissionError):
 class HotPoint:
     """The row with the highest junction temperature, as an operating point; n chips.
 
-    ``t_vj_c`` and ``case_c`` (n,): highest temperatures in that row. ``end_s``: its end in the mission, ``theta_rad``: angle of
+    ``t_vj_c`` and ``case_c`` (n,): highest temperatures in that row. ``level``: that of the cooling at its end. ``end_s``: its end in the mission, ``theta_rad``: angle of
     the current of phase a there. The switching frequency is the one in force, derating included.
     """
 
@@ -50,6 +51,7 @@ class HotPoint:
     end_s: float
     phase_id: int
     theta_rad: float
+    level: int
     t_vj_c: np.ndarray
     case_c: np.ndarray
 
@@ -57,6 +59,59 @@ class HotPoint:
         """The point on a network, as if it lasted for ever: a :class:`mission.history.HeldPoint`."""
         return HeldPoint(tables, network, i_peak_a=self.i_peak_a, mod_index=self.mod_index, phi_rad=self.phi_rad, frequency_hz=self.frequency_hz,
                          direction=self.direction, switching_frequency_hz=self.switching_frequency_hz, dc_voltage_v=self.dc_voltage_v, theta_rad=self.theta_rad)
+
+
+@dataclass(frozen=True)
+class LevelTime:
+    """A level of the cooling and how long it held."""
+
+    level: int
+    time_s: float
+    state: LevelState
+
+
+@dataclass(frozen=True)
+class CoolingRecord:
+    """What the cooling did in the mission.
+
+    Attributes
+    ----------
+    plan : CoolingPlan
+    used : tuple of LevelTime
+        Levels that held, longest first.
+    changes : tuple of (float, int)
+        Times [s] and levels entered, the first thousand.
+    n_changes : int
+    move_error : float
+        Largest difference that a change made to a junction, over its rise; see :class:`mission.thermal.Move`.
+    """
+
+    plan: CoolingPlan
+    used: tuple[LevelTime, ...]
+    changes: tuple[tuple[float, int], ...]
+    n_changes: int
+    move_error: float
+
+    @property
+    def flags(self) -> tuple[str, ...]:
+        """What to mistrust in the levels that held, each said once, with the share of the time where it is not all of it."""
+        return _said(self.used, lambda s: s.point.flags if s.point is not None else ())
+
+    @property
+    def sources(self) -> tuple[str, ...]:
+        """Where the rules come from."""
+        return tuple(dict.fromkeys(w for one in self.used if one.state.point is not None for w in one.state.point.sources))
+
+
+def _said(used, words):
+    # flags carry numbers of their own level; the one that held longest speaks for all of its kind
+    whole, out = sum(u.time_s for u in used), {}
+    for one in used:
+        for text in words(one.state):
+            kind = re.sub(r"[0-9][0-9.,e+-]*", "#", text)
+            said, time_s = out.get(kind, (text, 0.0))
+            out[kind] = said, time_s + one.time_s
+    return tuple(text if time_s >= 0.9995 * whole else f"{text} ({time_s / whole:.1%} of the time)" for text, time_s in out.values())
 
 
 @dataclass(frozen=True)
@@ -71,6 +126,8 @@ class MissionResult:
     cycle_map : CycleMap
         Cycles and damage by range and mean, for every failure mode.
     network : ReducedNetwork
+        The one in force at the hottest point.
+    cooling : CoolingRecord
     tables : LossTables
     cycles : CycleTable or None
         Every counted cycle, if they were kept in memory.
@@ -97,6 +154,7 @@ class MissionResult:
     ledger: DamageLedger
     cycle_map: CycleMap
     network: ReducedNetwork
+    cooling: CoolingRecord
     tables: LossTables
     cycles: CycleTable | None
     hot_point: HotPoint
@@ -170,13 +228,14 @@ def run(study: Study, *, progress: Progress | None = None, keep_cycles: bool = T
     begin = time.perf_counter()
     spec = study.spec
     tables = build_tables(study.module, spec.inverter.modulation, **spec.inverter.table_options())
-    network = inverter_modes(study.module, spec.cooling, materials=study.materials(), relative_tolerance=spec.march.network_tolerance)
+    plan = study.cooling_plan()
+    networks = plan.networks()
     settings = MarchSettings(f_slow_hz=spec.march.slow_below_hz, steps_per_period=spec.march.steps_per_period,
                              watch_c=np.inf if study.module.ratings.t_vj_overload_c is None else study.module.ratings.t_vj_op_max_c)
     states, theta = None, np.radians(spec.march.start_angle_deg)
     known = None
     for passes in range(1, MAX_PASSES + 1):
-        one = _Pass(study, tables, network, settings, states, theta, progress, passes, keep_cycles, cycle_sink)
+        one = _Pass(study, tables, plan, networks, settings, states, theta, progress, passes, keep_cycles, cycle_sink)
         one.march()
         swing = float((one.envelope.peak_c - one.envelope.lowest_c).max())
         if not one.complete or spec.march.start == "coolant" or one.closes_within_k <= max(PERIODIC_WITHIN_K, PERIODIC_WITHIN_SHARE * swing):
@@ -193,7 +252,7 @@ def run(study: Study, *, progress: Progress | None = None, keep_cycles: bool = T
         one.envelope.join_ends()
     one.close(spec.lifetime.residue)
     return MissionResult(
-        study, one.envelope.finish(one.marched_s), one.ledger, one.cycle_map, network, tables, one.kept(),
+        study, one.envelope.finish(one.marched_s), one.ledger, one.cycle_map, networks.network(one.hot_point.level), one.cooling_record(networks), tables, one.kept(),
         one.hot_point, one.i_peak_max, one.dc_voltage_max, one.fsw_max, one.coolant_max, one.mod_index_max, one.frequency_max, one.carriers_min, one.complete, passes, one.closes_within_k, time.perf_counter() - begin,
     )
 
@@ -201,8 +260,8 @@ def run(study: Study, *, progress: Progress | None = None, keep_cycles: bool = T
 class _Pass:
     """One march over the mission with everything that is recorded on the way."""
 
-    def __init__(self, study, tables, network, settings, states, theta, progress, number, keep, sink):
-        self.study, self.tables, self.number = study, tables, number
+    def __init__(self, study, tables, plan, networks, settings, states, theta, progress, number, keep, sink):
+        self.study, self.tables, self.plan, self.number = study, tables, plan, number
         self._progress, self._states, self._theta, self._keep, self._sink = progress, states, theta, keep, sink
         profile = study.profile
         chips = self.chips = study.module.chip_names()
@@ -211,7 +270,7 @@ class _Pass:
         self.ledger = DamageLedger(study.modes, chips, profile.phases, missions_per_year=study.spec.lifetime.missions_per_year)
         self.cycle_map = CycleMap(study.modes, len(chips))
         self.envelope = EnvelopeBuilder(profile.duration_s, chips, profile.phases, tables.temperature_data_c)
-        self.engine = ElectrothermalMarch(tables, network, settings, derating=study.spec.inverter.derating, on_points=self._points, on_ripple=self._ripples)
+        self.engine = ElectrothermalMarch(tables, networks, settings, derating=study.spec.inverter.derating, on_points=self._points, on_ripple=self._ripples)
         self.i_peak_max = self.mod_index_max = self.frequency_max = self.dc_voltage_max = self.fsw_max = 0.0
         self.coolant_max, self.hot_c, self.hot_point, self.loaded_joint, self.carriers_min = -np.inf, -np.inf, None, False, np.inf
         self.complete, self.marched_s, self._tables_kept = True, 0.0, []
@@ -253,14 +312,19 @@ class _Pass:
                 t_cool = block.columns["coolant_c"] if coolant is None else np.full(n, coolant)
                 points = operating_points(block, spec.machine, dc_voltage_v=v_study, mod_index_max=spec.inverter.mod_index_max,
                                           where=profile.source)
+                row, start_s, dt_s = cut_rows(block.time_s, block.dt_s, self.plan.cut_s)
+                if row.size > n:
+                    points, v_dc, t_cool, n = points.rows(row), v_dc[row], t_cool[row], row.size
+                phase_id = block.phase_id[row]
+                group = self.plan.groups_of(start_s, t_cool, block.columns["flow_m3_per_s"][row] if "flow_m3_per_s" in block.columns else None)
                 if first:
-                    self.engine.start(float(t_cool[0]), theta_rad=self._theta, states=self._states)
+                    self.engine.start(float(t_cool[0]), theta_rad=self._theta, states=self._states, group=int(group[0]))
                     starts_loaded = bool(points.i_peak_a[0] > 0.0)
                     self._start_states = self.engine.states
                     self._start_c = self.engine.junction_c
                     first = False
                 # hand the kernel a few thousand rows at a time, fewer of long ones, so that a stop is heard between them and cycles do not pile up
-                work = np.concatenate([[0], np.cumsum(self.engine.pieces(points, block.dt_s))])
+                work = np.concatenate([[0], np.cumsum(self.engine.pieces(points, dt_s))])
                 a = 0
                 while a < n:
                     enough = int(np.searchsorted(work, work[a] + MOST_PIECES, side="right")) - 1
@@ -268,8 +332,8 @@ class _Pass:
                     a = b.stop
                     part = points.rows(b)
                     fsw = spec.inverter.switching_hz(part)
-                    rows = self.engine.add_block(part, dt_s=block.dt_s[b], phase_id=block.phase_id[b], coolant_c=t_cool[b],
-                                                 switching_frequency_hz=fsw, dc_voltage_v=v_dc[b])
+                    rows = self.engine.add_block(part, dt_s=dt_s[b], phase_id=phase_id[b], coolant_c=t_cool[b],
+                                                 switching_frequency_hz=fsw, dc_voltage_v=v_dc[b], group=group[b])
                     self._note_hottest(rows, part, v_dc[b])
                     self.fsw_max = max(self.fsw_max, float(fsw.max()))
                     turning = (part.frequency_hz > 0.0) & (part.i_peak_a > 0.0)
@@ -304,7 +368,13 @@ class _Pass:
             self.hot_c = float(hot[k])
             self.hot_point = HotPoint(*(float(v[k]) for v in (points.i_peak_a, points.mod_index, points.phi_rad, points.frequency_hz, points.direction,
                                                                rows.switching_hz, v_dc, rows.coolant_c, rows.end_s)),
-                                      int(rows.phase_id[k]), float(rows.theta_rad[k]), rows.t_max_c[k].copy(), rows.case_max_c[k].copy())
+                                      int(rows.phase_id[k]), float(rows.theta_rad[k]), int(rows.level[k]), rows.t_max_c[k].copy(), rows.case_max_c[k].copy())
+
+    def cooling_record(self, networks):
+        time_s, changes = self.engine.level_time_s, self.engine.changes
+        used = sorted(np.flatnonzero(time_s > 0.0).tolist(), key=lambda k: -time_s[k])
+        return CoolingRecord(self.plan, tuple(LevelTime(k, float(time_s[k]), self.plan.state(k)) for k in used), tuple(changes), self.engine.n_changes,
+                             networks.largest_move_error)
 
     def next_start(self):
         return self.engine.periodic_start(self._start_states, self.marched_s)
@@ -320,3 +390,36 @@ class _Pass:
 
     def kept(self):
         return CycleTable.concat(self._tables_kept) if self._keep else None
+
+
+def cut_rows(start_s, dt_s, cut_s):
+    """Rows cut at given times.
+
+    Parameters
+    ----------
+    start_s, dt_s : ndarray, shape (n,)
+        Rows one after the other [s].
+    cut_s : ndarray, shape (c,)
+        Rising [s].
+
+    Returns
+    -------
+    row : ndarray of int, shape (m,)
+        Which row each part belongs to.
+    start_s, dt_s : ndarray, shape (m,)
+
+    Examples
+    --------
+    >>> [v.tolist() for v in cut_rows(np.array([0.0, 10.0]), np.array([10.0, 5.0]), np.array([4.0, 10.0]))]
+    [[0, 0, 1], [0.0, 4.0, 10.0], [4.0, 6.0, 5.0]]
+    """
+    end_s = start_s + dt_s
+    row = np.searchsorted(end_s, cut_s, side="left")
+    inside = (row < start_s.size)
+    row, cut_s = row[inside], cut_s[inside]
+    inside = (cut_s > start_s[row] + 1e-9) & (cut_s < end_s[row] - 1e-9)
+    row, cut_s = row[inside], cut_s[inside]
+    which = np.insert(np.arange(start_s.size), row + 1, row)
+    begin = np.insert(start_s, row + 1, cut_s)
+    stop = np.insert(end_s, row, cut_s)
+    return which, begin, np.where(np.isin(which, row), stop - begin, dt_s[which])

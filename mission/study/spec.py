@@ -17,7 +17,7 @@ from ..errors import InputError, RangeError, near_match
 from ..lifetime import FailureMode, resolve_modes
 from ..losses import MOD_INDEX_SIX_STEP, Modulation
 from ..machine import MachineSpec
-from ..thermal import CoolingSpec, load_materials
+from ..thermal import CoolingPlan, CoolingSpec, load_materials
 from ..tomlfile import FileModel, parse_model, read_model, read_toml
 
 #: A study finds shipped modules by name whatever the current folder holds.
@@ -210,6 +210,26 @@ class Study:
         own = self.spec.module.materials
         return load_materials(None if own is None else self.folder / own)
 
+    def coolant_range_c(self) -> tuple[float, float]:
+        """Lowest and highest coolant temperature of the duty [degC]."""
+        given = self.spec.cooling.coolant_c
+        return self.profile.ranges["coolant_c"] if given is None else (given, given)
+
+    def cooling_plan(self) -> CoolingPlan:
+        """Levels of the cooling, and which holds when."""
+        flow = self.profile.ranges.get("flow_m3_per_s")
+        still = flow is not None and flow[0] == 0.0
+        if still:
+            running = [v[v > 0.0].min(initial=np.inf) for v in (b.columns["flow_m3_per_s"] for b in self.profile.blocks())]
+            flow = (float(min(running)), flow[1])
+            if not np.isfinite(flow[0]):
+                raise InputError(f"{self.profile.source}, column for flow", "no flow at all", "a flow in some rows", "take the column out and give the sink as it stands without flow")
+        try:
+            return CoolingPlan(self.spec.cooling, self.module, coolant_c=self.coolant_range_c(), flow_m3_per_s=flow, stands_still=still, duration_s=self.profile.duration_s,
+                               materials=self.materials(), relative_tolerance=self.spec.march.network_tolerance)
+        except InputError as err:
+            raise err.at(self.source) from None
+
     def with_profile(self, profile: MissionProfile) -> Study:
         """The same study on another duty."""
         changed = replace(self, profile=profile)
@@ -354,11 +374,14 @@ def check_parts(study: Study) -> None:
     """Build the loss tables and the thermal network once, so that parts which do not go together are found without a run."""
     from ..history import check_fit
     from ..losses import build_tables
-    from ..thermal import inverter_modes
 
+    plan = study.cooling_plan()
     try:
         tables = build_tables(study.module, study.spec.inverter.modulation, **study.spec.inverter.table_options())
-        network = inverter_modes(study.module, study.spec.cooling, materials=study.materials(), relative_tolerance=study.spec.march.network_tolerance)
-        check_fit(tables, network)
+        networks = plan.networks()
+        for group in plan.groups:  # first and last level of each, which are the extremes
+            for level in {group.levels[0], group.levels[-1]} if len(plan.groups) <= 4 else {group.levels[0]}:
+                plan.state(level)
+        check_fit(tables, networks.network(0))
     except InputError as err:
         raise err.at(study.source) from None

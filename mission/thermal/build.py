@@ -8,9 +8,11 @@ from ..device import PowerModule
 from ..errors import InputError
 from .assembly import FullNetwork, NetworkBuilder
 from .cooling import sink_path
+from .coupling import module_mutual, with_mutual
 from .layers import StackLadder, stack_ladder
-from .modes import ReducedNetwork, reduce_to_modes
+from .modes import ReducedNetwork, reduce_coupled, reduce_to_modes
 from .networks import CauerLadder, FosterNetwork, cauer_to_foster, foster_to_cauer, merge_close_branches
+from .plates import plated_network
 
 
 def chip_ladder(thermal, materials, where: str) -> StackLadder:
@@ -25,16 +27,21 @@ def chip_ladder(thermal, materials, where: str) -> StackLadder:
 def inverter_modes(module: PowerModule, cooling, *, materials=None, relative_tolerance: float = 1e-3) -> ReducedNetwork:
     """The modes that the march needs: the joined network reduced, or the lumped form where ``cooling.sink_sees`` asks for it.
 
+    Couplings of the module file come on top, exactly (:func:`with_mutual`).
+
     Parameters
     ----------
     module, cooling, materials
         As for :func:`inverter_network`.
     relative_tolerance : float
-        Of the reduction, see :func:`reduce_to_modes`.
+        Of the reduction, see :func:`reduce_to_modes`, or :func:`reduce_coupled` for chips on a plate.
     """
-    if cooling.sink_sees == "heat-leaving":
-        return reduce_to_modes(inverter_network(module, cooling, materials=materials), relative_tolerance=relative_tolerance)
-    return _lumped_modes(module, cooling)
+    if not sink_path(cooling).chip_losses:
+        reduce = reduce_to_modes if module.plate is None else reduce_coupled
+        network = reduce(inverter_network(module, cooling, materials=materials), relative_tolerance=relative_tolerance)
+    else:
+        network = _lumped_modes(module, cooling)
+    return with_mutual(network, module_mutual(module, materials=materials))
 
 
 #: Stands for "at once" where a resistance without capacity meets the losses directly.
@@ -113,6 +120,8 @@ def inverter_network(module: PowerModule, cooling, *, materials=None) -> FullNet
         raise InputError("cooling", f"{len(surfaces)} sinks under {module.name}", "one sink under a six-pack, which is one module")
     pairs = module.chip_pairs()
     stacks = [chip_ladder(pair.thermal, materials, f"{pair.place}.thermal") for pair in pairs]
+    if module.plate is not None:
+        return plated_network(builder, surfaces, module, stacks, materials, path.paste)
     per = module.case_to_sink.per if module.case_to_sink is not None else None
     shared = {}
     heated, cases = [], []

@@ -1,10 +1,10 @@
 """Cooling that changes: one network for every level of cooling, and the way of the state from one to the next.
 
-The temperatures of all masses go on without a jump when a fan changes its speed; what changes is how they go on. A level's full
-network knows them all, its reduced one only a few modes. A state of reduced modes stands for the field that the history behind it
-has left; :meth:`CoolingLevels.move` finds the state of another level whose junction and case points go on as that field would.
-Both halves are least squares over the same histories: each chip heated for a hundredth of its fastest time constant up to for ever,
-and a coolant step that long ago.
+The temperatures of all masses go on without a jump when a fan changes its speed; what changes is how they go on. A few reduced modes
+do not tell the temperatures of all masses, so the march keeps the exact modes of the full network beside them, driven by the mean
+losses of its rows. At a change the field of masses is the same in the modes of the other level (an orthogonal turn), and the reduced
+state of that level is the one whose junctions and case points go on as this field would (least squares). What the reduced state
+knows beyond the row means, the ripple of the moment above all, is carried over as the course that it would have taken.
 """
 
 from __future__ import annotations
@@ -15,25 +15,31 @@ from typing import NamedTuple
 import numpy as np
 
 from ..errors import InputError
+from .coupling import without_mutual
 from .modes import ReducedNetwork
 
-#: Lengths of heating that a move is fitted to, and times afterwards at which it must be right.
+#: Lengths of heating that the surface is fitted to, and times after a change at which the new state must be right.
 _HISTORIES, _AFTER = 36, 48
+#: Slowest modes whose memory of a mission's start is followed through its changes.
+SLOW_MODES = 12
 
 
 class Move(NamedTuple):
-    """From the state of one level to that of another.
+    """What happens to states when one level gives way to another.
 
     Attributes
     ----------
-    matrix : ndarray, shape (r_new, r_old)
-        Local modes (scaled with their output weight; mode by mode, chips within) and then shared modes.
+    turn : ndarray, shape (k, k)
+        Modes of the full network: new = turn @ old.
+    rest : ndarray, shape (r_new, r_old)
+        Reduced modes, for what the field does not hold. Local modes (scaled with their output weight; mode by mode, chips within), then shared.
     error : float
-        Largest difference that the move makes to a junction afterwards, over its rise before, for chips heated one by one
-        or all together for any length of time, and at the lengths between those that it was fitted to.
+        Largest difference that the new reduced state makes to a junction afterwards, over its rise before, for chips heated one
+        by one or all together for any length of time.
     """
 
-    matrix: np.ndarray
+    turn: np.ndarray
+    rest: np.ndarray
     error: float
 
 
@@ -100,8 +106,18 @@ class CoolingLevels:
         """Rise of each sink surface over the coolant, in the modes of level ``k``; shape (m, r)."""
         return self._level(k).surface
 
+    def field(self, k: int):
+        """Full modes of level ``k``: decay rates [1/s] (K,), heat inputs (n, K), an even temperature of 1 K (K,), and the reduced state of a field (r, K)."""
+        one = self._level(k)
+        return one.lam, one.junction, one.coolant, one.reader
+
+    @property
+    def largest_move_error(self) -> float:
+        """Largest error of the moves made so far; 0 without any."""
+        return max((m.error for m in self._moves.values()), default=0.0)
+
     def move(self, a: int, b: int) -> Move:
-        """How the state goes on when level ``a`` gives way to level ``b``.
+        """What happens to the states when level ``a`` gives way to level ``b``.
 
         Raises
         ------
@@ -117,7 +133,8 @@ class _Level:
     """One level with what its moves need."""
 
     def __init__(self, full, reduced: ReducedNetwork):
-        self.full, self.reduced = full, reduced
+        # mutual branches are the same at every level and no part of the full network: their modes go over as they are
+        self.full, self.reduced, self.plain = full, reduced, without_mutual(reduced)
         self.lam, self.vectors = full.shapes()
         _, self.junction, self.case, self.coolant = full.modes()
 
@@ -127,7 +144,7 @@ class _Level:
 
     def histories(self, lengths):
         """Fields (modes, h) and reduced states (r, h) after each chip, and all together, was heated for ``lengths``; and a coolant step that long ago."""
-        net = self.reduced
+        net = self.plain
         n, lam_l, lam_s = net.n_chips, net.lam_local_per_s, net.lam_shared_per_s
         t = np.asarray(lengths)
         grow = -np.expm1(-np.outer(self.lam, t)) / self.lam[:, None]
@@ -147,7 +164,7 @@ class _Level:
 
     def outputs(self, after):
         """What junctions and case points do ``after`` a time without heat: rows for the reduced state and for the full modes."""
-        net = self.reduced
+        net = self.plain
         n, t = net.n_chips, np.asarray(after)[:, None]
         own = net.rho_local != 0.0
         ratio = np.where(own, net.rho_case_local / np.where(own, net.rho_local, 1.0), 0.0)
@@ -170,24 +187,34 @@ class _Level:
         return np.concatenate([[0.0], np.geomspace(quick, 8.0 * self.slowest_s, _AFTER - 1)])
 
     @cached_property
-    def reader(self) -> np.ndarray:
-        """Reduced state (r, modes) that goes on as a field of full modes would."""
-        reduced, full = self.outputs(self.after)
+    def seen(self):
+        """The state as what it does afterwards.
+
+        Returns an orthonormal basis of courses (rows, k), the state's coordinates in it (k, r), the state of given coordinates (r, k), and the
+        weights of the rows. Directions of the state that do nothing to speak of are left out.
+        """
         weight = np.full(self.after.size, 1.0)
         weight[0] = 10.0  # no jump in the moment itself
         weight = np.tile(np.repeat(weight, self.reduced.n_chips), 2)[:, None]
-        return np.linalg.pinv(reduced * weight, rcond=1e-7) @ (full * weight)
+        course, size, turn = np.linalg.svd(self.outputs(self.after)[0] * weight, full_matrices=False)
+        keep = size > 1e-6 * size[0]
+        return course[:, keep], size[keep, None] * turn[keep], turn[keep].T / size[keep], weight
+
+    @cached_property
+    def reader(self) -> np.ndarray:
+        """Reduced state (r, modes) that goes on as a field would; mutual branches, which a field does not know, stay at rest."""
+        course, _, back, weight = self.seen
+        return np.pad(back @ (course.T @ (self.outputs(self.after)[1] * weight)), ((0, self.reduced.n_mutual), (0, 0)))
 
     @cached_property
     def surface(self) -> np.ndarray:
         """Sink surfaces in reduced modes, (m, r)."""
-        fields, states = self.histories(self.lengths)
+        lengths = np.concatenate([np.geomspace(0.01 / self.lam[-1], 12.0 * self.slowest_s, _HISTORIES - 1), [60.0 * self.slowest_s]])
+        fields, states = self.histories(lengths)
         want = self.full.out_surface @ (self.vectors / np.sqrt(self.full.c_j_per_k)[:, None]) @ fields
-        return want @ np.linalg.pinv(states, rcond=1e-9)
-
-    @cached_property
-    def lengths(self) -> np.ndarray:
-        return np.concatenate([np.geomspace(0.01 / self.lam[-1], 12.0 * self.slowest_s, _HISTORIES - 1), [60.0 * self.slowest_s]])
+        see = self.seen[1]
+        left, size, right = np.linalg.svd(see @ states, full_matrices=False)
+        return np.pad((want @ right.T * (size / (size**2 + (1e-5 * size[0]) ** 2))) @ left.T @ see, ((0, 0), (0, self.reduced.n_mutual)))
 
 
 def _move(old: _Level, new: _Level) -> Move:
@@ -195,13 +222,15 @@ def _move(old: _Level, new: _Level) -> Move:
         raise InputError("cooling levels", "masses that differ from level to level", "the same heat capacities at every level",
                          "give every level the heat capacity of the same sink")
     turn = new.vectors.T @ old.vectors
-    fields, states = old.histories(old.lengths)
-    matrix = (new.reader @ turn @ fields) @ np.linalg.pinv(states, rcond=1e-9)
-    between = np.sqrt(old.lengths[1:] * old.lengths[:-1])
-    fields, states = old.histories(between)
+    course, _, back, weight = new.seen
+    n = old.reduced.n_mutual
+    rest = np.pad(back @ (course.T @ (old.outputs(new.after)[0] * weight)), ((0, n), (0, n)))
+    rest[rest.shape[0] - n:, rest.shape[1] - n:] = np.eye(n)
+    lengths = np.concatenate([np.geomspace(0.01 / old.lam[-1], 12.0 * old.slowest_s, 24), [60.0 * old.slowest_s]])
+    fields, _ = old.histories(lengths)
+    # between the times that the state was fitted to
     after = np.concatenate([[0.0], np.sqrt(new.after[1:-1] * new.after[2:])])
     reduced, full = new.outputs(after)
     junctions = slice(0, after.size * new.reduced.n_chips)
-    miss = reduced[junctions] @ matrix @ states - full[junctions] @ turn @ fields
-    rise = (old.junction @ fields).max(axis=0)
-    return Move(matrix, float(np.abs(miss / np.maximum(rise, 1e-12)).max()))
+    miss = (reduced[junctions] @ new.reader[:reduced.shape[1]] - full[junctions]) @ (turn @ fields)
+    return Move(turn, rest, float(np.abs(miss / np.maximum((old.junction @ fields).max(axis=0), 1e-12)).max()))

@@ -22,6 +22,9 @@ import numpy as np
 from ..errors import InputError
 from .assembly import FullNetwork
 
+#: Most shared modes, and local ones of a chip, that the march has room for.
+MOST_SHARED, MOST_LOCAL = 96, 16
+
 
 @dataclass(frozen=True)
 class ReducedNetwork:
@@ -52,6 +55,8 @@ class ReducedNetwork:
         without heat capacity lets the coolant through at once.
     n_full : int
         Number of modes before reduction.
+    n_mutual : int
+        How many of the last shared modes are mutual branches given as such (:func:`mission.thermal.with_mutual`), not part of the network below.
     """
 
     lam_local_per_s: np.ndarray
@@ -69,6 +74,7 @@ class ReducedNetwork:
     case_bound: float
     case_coolant_bound: float
     n_full: int
+    n_mutual: int = 0
 
     @property
     def n_chips(self) -> int:
@@ -121,10 +127,7 @@ def reduce_to_modes(full: FullNetwork, *, relative_tolerance: float = 1e-3) -> R
         The smallest that meets the tolerance among the groupings tried; if none
         does, the most accurate one. ``relative_bound`` says what was reached.
     """
-    lam, junction, case, coolant = full.modes()
-    if lam[0] <= 1e-12 * lam[-1]:
-        raise InputError("thermal network", f"a mode that never settles ({lam[0]:.3g} 1/s beside {lam[-1]:.3g} 1/s)",
-                         "time constants within twelve decades", "check resistances and heat capacities for wrong units")
+    lam, junction, case, coolant = _settling_modes(full)
     best = None
     for gap in (1.1, 1.02, 1.002, 1.0001):
         if gap < 1.02 and _rank(best, relative_tolerance)[0] == 0:
@@ -143,6 +146,162 @@ def reduce_to_modes(full: FullNetwork, *, relative_tolerance: float = 1e-3) -> R
                 if best is None or _rank(trial, relative_tolerance) < _rank(best, relative_tolerance):
                     best = trial
     return best
+
+
+def _settling_modes(full):
+    lam, junction, case, coolant = full.modes()
+    if lam[0] <= 1e-12 * lam[-1]:
+        raise InputError("thermal network", f"a mode that never settles ({lam[0]:.3g} 1/s beside {lam[-1]:.3g} 1/s)",
+                         "time constants within twelve decades", "check resistances and heat capacities for wrong units")
+    return lam, junction, case, coolant
+
+
+def reduce_coupled(full, *, relative_tolerance: float = 1e-3) -> ReducedNetwork:
+    """Reduce a network whose chips feel each other over all time scales, as on a common plate.
+
+    There the exact modes form no groups that could be joined, as :func:`reduce_to_modes` does. Instead the network is projected on
+    the directions that hold most of what is left of the responses after the time at which neighbours first matter (balanced truncation
+    with a delayed start), and on the even temperature and what becomes of it when the coolant changes. That gives rates and heat inputs of the
+    shared modes. Their outputs are fitted to what each chip and case point feels of the others' heat and of the coolant, steady
+    resistances almost exactly. Local modes then mend each chip's own response, with its steady resistance exact.
+
+    Parameters
+    ----------
+    full : FullNetwork, or another object with its ``modes()`` and ``n_chips``
+    relative_tolerance : float
+        Wanted bound, as a share of the steady rise with all chips heated alike. Case points (steady) and the answer to a coolant
+        step may miss by five times as much.
+
+    Returns
+    -------
+    ReducedNetwork
+        With the fewest shared modes found that meet the tolerance; if :data:`MOST_SHARED` do not, the most accurate one. ``relative_bound`` says
+        what was reached.
+    """
+    problem = _Coupled(full)
+    room = min(MOST_SHARED, problem.lam.size)
+
+    def best_of(count):
+        trials = []
+        for start in problem.starts_s:
+            trials.append(problem.reduced(count, start, relative_tolerance))
+            if _misses(trials[-1]) <= relative_tolerance:
+                break
+        return min(trials, key=_misses)
+
+    found, low, high = best_of(room), 1, room
+    if _misses(found) > relative_tolerance:
+        return found
+    # to within one mode for every six chips
+    while high - low > 1 + full.n_chips // 6:
+        middle = (low + high) // 2
+        trial = best_of(middle)
+        if _misses(trial) <= relative_tolerance:
+            found, high = trial, middle
+        else:
+            low = middle
+    return found
+
+
+def _misses(net):
+    """What is held against the tolerance of :func:`reduce_coupled`."""
+    return max(net.relative_bound, 0.2 * max(net.coolant_bound, net.case_bound, net.case_coolant_bound))
+
+
+class _Coupled:
+    """Exact responses of a network on a grid of times, and reductions of it; n chips, K modes, t times."""
+
+    #: Coolant steps that the shared modes hold beside the steady field: even temperature and smoothings of it.
+    _SMOOTHINGS = 6
+
+    def __init__(self, full):
+        self.lam, self.junction, self.case, self.coolant = lam, junction, case, coolant = _settling_modes(full)
+        n = self.n = full.n_chips
+        self.ends = np.concatenate([junction, case])
+        self.steady = (self.ends / lam) @ junction.T  # (2n, n)
+        self.scale = np.tile(self.steady[:n].sum(axis=1), 2)
+        self.time = np.geomspace(1e-3 / lam[-1], 60.0 / lam[0], 400)
+        decay = np.exp(-np.outer(self.time, lam))
+        pairs = (self.ends[:, None, :] * junction).reshape(2 * n * n, lam.size)
+        self.impulse = (decay @ pairs.T).reshape(-1, 2 * n, n)
+        self.cooling = decay @ (self.ends * coolant).T  # (t, 2n)
+        # neighbours matter from the time on at which they add a thousandth
+        rise = (-np.expm1(-np.outer(self.time, lam)) / lam) @ (pairs.reshape(2 * n, n, -1)[:n].sum(axis=1) - junction**2).T
+        felt = (rise > 1e-3 * self.scale[:n]).any(axis=1)
+        matter = min(self.time[felt.argmax()], 1.0 / lam[0]) if felt.any() else 1.0 / lam[0]
+        self.starts_s = (0.35 * matter, 0.1 * matter)
+        self._directions: dict[float, np.ndarray] = {}
+
+    def _held(self, start):
+        """Directions of the state space, those first that hold most of the responses after ``start``; (K, k)."""
+        if start not in self._directions:
+            slow = self.lam < 20.0 / start  # the others have died away
+            together = self.lam[slow][:, None] + self.lam[slow]
+            # case points count nearly as much as junctions
+            seen = np.concatenate([self.junction, 0.3 * self.case * (self.scale[: self.n] / self.steady[self.n :].sum(axis=1))[:, None]])[:, slow]
+            out = np.zeros((self.lam.size, int(slow.sum())))
+            out[slow] = np.linalg.eigh((seen.T @ seen) * np.exp(-start * together) / together)[1][:, ::-1]
+            self._directions[start] = out
+        return self._directions[start]
+
+    def reduced(self, count: int, start: float, tolerance: float) -> ReducedNetwork:
+        """With ``count`` shared modes, directions of what is left after ``start`` [s], and as many local modes as help to meet ``tolerance``."""
+        lam, n, time = self.lam, self.n, self.time
+        even = self.coolant[:, None] / np.column_stack([np.ones(lam.size), *(1.0 + lam / lam[0] / 8.0**k for k in range(self._SMOOTHINGS))])
+        basis = np.linalg.qr(np.column_stack([even, self._held(start)])[:, :count])[0]
+        rate, turn = np.linalg.eigh(basis.T @ (lam[:, None] * basis))
+        basis = basis @ turn
+        right, g = (self.junction @ basis).T, basis.T @ self.coolant
+        decay = np.exp(-np.outer(time, rate))
+        left = self._outputs(self.ends @ basis, right, g, rate, decay, start)
+        gap = self.impulse - np.einsum("ts,is,sj->tij", decay, left, right, optimize=True)
+        own = np.arange(n)
+        steady_own = (left / rate * np.tile(right.T, (2, 1))).sum(axis=1)
+        rest = gap[:, np.arange(2 * n), np.tile(own, 2)]
+        rest_steady = self.steady[np.arange(2 * n), np.tile(own, 2)] - steady_own
+        at_coolant = np.abs(self.cooling - decay @ (left * g).T).max(axis=0)
+        for most in (MOST_LOCAL // 2, 3 * MOST_LOCAL // 4, MOST_LOCAL):
+            fast = np.geomspace(0.1 / start, max(0.3 * lam[-1], 1.0 / start), most)
+            rho = np.array([_fit(time, fast, rest[:, i], rest_steady[i])[0] for i in range(2 * n)])
+            error = gap[:, :n].copy()
+            error[:, own, own] -= np.exp(-np.outer(time, fast)) @ rho[:n].T
+            bound = _l1(time, error.reshape(time.size, -1)).reshape(n, n)
+            relative = float((bound.sum(axis=1) / self.scale[:n]).max())
+            if relative <= tolerance:
+                break
+        lam_l = np.repeat(fast[:, None], n, axis=1)
+        case_error = _case_steady_error(lam, self.junction, self.case, lam_l, rho[n:].T, rate, left[n:], right)
+        return ReducedNetwork(lam_l, rho[:n].T.copy(), rho[n:].T.copy(), rate, right, left[:n].copy(), left[n:].copy(), g, np.zeros_like(lam_l), bound,
+                              relative, float(at_coolant[:n].max()), float(case_error), float(at_coolant[n:].max()), lam.size)
+
+    def _outputs(self, left, right, g, rate, decay, start):
+        """Outputs of the shared modes: those of the projection, mended by least squares.
+
+        Rows are t h(t) for the heat of every other chip, the steady resistances (heavy), the coolant step, and lightly the late own response, so that
+        local modes need not undo what the shared ones make of it.
+        """
+        n = self.n
+        use = self.time > 0.02 * start
+        time, late = self.time[use], self.time[use] > 2.0 * start
+        rows = ((decay[use] * time[:, None])[:, None, :] * right.T).transpose(1, 0, 2)  # (n, t, S)
+        light = 0.1 * rows[:, late]
+        own, own_late = rows.transpose(0, 2, 1) @ rows, light.transpose(0, 2, 1) @ light
+        settled = 30.0 * right.T / rate
+        step = decay * g
+        every, every_step, every_settled = own.sum(axis=0), step.T @ step, settled.T @ settled
+        for i in range(2 * n):
+            j, weight = i % n, (0.3 * self.scale[i]) ** 2
+            miss = self.impulse[use, i].T * time - rows @ left[i]  # (n, t)
+            miss_settled = 30.0 * self.steady[i] - settled @ left[i]
+            miss[j], miss_settled[j] = 0.0, 0.0
+            miss_late = 0.1 * self.impulse[use, i, j][late] * time[late] - light[j] @ left[i]
+            square = (every - own[j] + own_late[j] + weight * every_step + every_settled - np.outer(settled[j], settled[j]))
+            seen = (np.einsum("jts,jt->s", rows, miss, optimize=True) + light[j].T @ miss_late + settled.T @ miss_settled
+                    + weight * step.T @ (self.cooling[:, i] - step @ left[i]))
+            size = np.sqrt(np.maximum(square.diagonal(), 1e-24 * square.diagonal().max()))
+            # the least change where the rows leave a choice
+            left[i] += np.linalg.solve(square / np.outer(size, size) + 1e-11 * np.eye(rate.size), seen / size) / size
+        return left
 
 
 def _rank(trial, tolerance):
@@ -344,6 +503,37 @@ def _fit(time, rates, impulse, end):
     rows = np.vstack([decay * time[:, None], heavy / rates]) * rates
     rho = np.linalg.lstsq(rows, np.append(impulse * time, heavy * end), rcond=1e-10)[0] * rates
     return rho, float(_l1(time, (impulse - decay @ rho)[:, None])[0])
+
+
+def fewer_rates(rate_per_s, weight, most: int):
+    """The same courses with fewer decay rates.
+
+    Parameters
+    ----------
+    rate_per_s : ndarray, shape (s,)
+    weight : ndarray, shape (s, n)
+        Of n courses sum of w exp(-r t).
+    most : int
+        Rates wanted, evenly spaced in their logarithm from the slowest to the fastest; with no more than that many given, nothing changes.
+
+    Returns
+    -------
+    rate_per_s : ndarray, shape (k,)
+    weight : ndarray, shape (k, n)
+        Fitted; integrals of the courses stay.
+
+    Examples
+    --------
+    >>> rate, weight = fewer_rates(np.geomspace(1.0, 100.0, 50), np.ones((50, 1)), 6)
+    >>> round(float(weight[:, 0] @ np.exp(-rate * 0.03)), 2), round(float(np.exp(-np.geomspace(1.0, 100.0, 50) * 0.03).sum()), 2)
+    (33.75, 33.75)
+    """
+    if rate_per_s.size <= most:
+        return rate_per_s, weight
+    fewer = np.geomspace(rate_per_s.min(), rate_per_s.max(), most)
+    time = np.geomspace(0.01 / rate_per_s.max(), 20.0 / rate_per_s.min(), 240)
+    course, end = np.exp(-np.outer(time, rate_per_s)) @ weight, (weight / rate_per_s[:, None]).sum(axis=0)
+    return fewer, np.column_stack([_fit(time, fewer, c, e)[0] for c, e in zip(course.T, end)])
 
 
 def _l1(time, response):

@@ -25,6 +25,7 @@ from ..checks import require_range
 from ..errors import InputError, RangeError, near_match
 from ..tomlfile import FileModel
 from . import fluids_data as fd
+from .cooling import CoolingBase, rising
 from .layers import load_materials
 
 _Positive = Annotated[float, Field(strict=True, gt=0)]
@@ -72,7 +73,7 @@ class FlowCurve(FileModel):
             raise RangeError(
                 "pressure_pa", f"{len(self.pressure_pa)} values beside {len(flow)} flows", "one pressure for every flow", "complete the shorter list"
             )
-        _rising(name, flow)
+        rising(name, flow)
         if self.pressure_pa[0] <= self.pressure_pa[-1]:
             raise RangeError("pressure_pa", f"{self.pressure_pa[0]:g} Pa at the first point and {self.pressure_pa[-1]:g} Pa at the last",
                              "a pressure that falls from the smallest to the largest flow", "check the order of the points")
@@ -104,15 +105,13 @@ class Footprint(FileModel):
     count: Annotated[int, Field(strict=True, ge=1, le=48)] = 1
 
 
-class _Sink(FileModel):
-    """What every kind has. ``sink_sees`` and ``coolant_c`` as in :mod:`mission.thermal.cooling`.
+class _Sink(CoolingBase):
+    """What every kind has.
 
     ``heat_w``: total heat for which properties and the coolant's rise are taken; ``heat_capacity_j_per_k``: of the sink,
     in place of what geometry and material give.
     """
 
-    sink_sees: Literal["heat-leaving", "chip-losses"] = "heat-leaving"
-    coolant_c: Annotated[float, Field(strict=True, ge=-60, le=150)] | None = None
     heat_w: _Positive | None = None
     heat_capacity_j_per_k: _Positive | None = None
 
@@ -139,7 +138,7 @@ class TableSink(_Sink):
     def _sensible(self):
         name = _one_of(self, "flow_l_per_min", "flow_m3_per_h")
         flow = getattr(self, name)
-        _rising(name, flow)
+        rising(name, flow)
         for other in ("r_th_k_per_w", "pressure_drop_pa"):
             column = getattr(self, other)
             if column is not None and len(column) != len(flow):
@@ -150,10 +149,10 @@ class TableSink(_Sink):
                                  "check the order of the points")
         at = "at" + name.removeprefix("flow")
         other = "at_m3_per_h" if at == "at_l_per_min" else "at_l_per_min"
-        if getattr(self, other) is not None or getattr(self, at) is None:
-            found = f"{other} beside a table in {name}" if getattr(self, other) is not None else "no flow at which the sink works"
-            raise RangeError(at, found, f"{at}, in the unit of the table", f"give {at} = ...")
-        _in_table(at, getattr(self, at), flow)
+        if getattr(self, other) is not None:
+            raise RangeError(at, f"{other} beside a table in {name}", f"{at}, in the unit of the table", f"give {at} = ...")
+        if getattr(self, at) is not None:
+            _in_table(at, getattr(self, at), flow)
         if self.fluid is not None:
             _share_fits(self.fluid, self.glycol_mass_share, "fluid")
         elif self.glycol_mass_share is not None:
@@ -169,6 +168,8 @@ class TableSink(_Sink):
     @property
     def at_m3_per_s(self) -> float:
         """Flow that the sink gets [m3/s]."""
+        if self.at_l_per_min is None and self.at_m3_per_h is None:
+            raise RangeError("cooling.at_l_per_min", "no flow at which the sink works", "at_l_per_min or at_m3_per_h, in the unit of the table")
         return float(_flow(self, "at"))
 
 
@@ -223,7 +224,8 @@ class _Finned(_Sink):
 class FanSink(_Finned):
     """Plate fins with a fan: all air goes through the channels, whose tips a shroud closes.
 
-    Either ``fan`` (a curve that meets the pressure drop of duct and channels) or ``flow_m3_per_h`` (taken at inlet density).
+    Either ``fan`` (a curve that meets the pressure drop of duct and channels) or ``flow_m3_per_h`` (taken at inlet density); neither
+    where the duty, stages or a law give the flow.
     ``outer_faces_cooled``: whether the outer faces of the first and last fin lie in the same stream.
     """
 
@@ -235,14 +237,15 @@ class FanSink(_Finned):
 
     @model_validator(mode="after")
     def _one_flow(self):
-        _one_of(self, "fan", "flow_m3_per_h")
+        _at_most_one(self, "fan", "flow_m3_per_h")
         return self
 
 
 class NaturalSink(_Finned):
     """Plate fins standing upright in still air, channels vertical and open in front; convection and radiation.
 
-    The resistance depends on the rise, so the heat (``heat_w``) or the surface temperature (``surface_c``) must be given.
+    The resistance depends on the rise: it is held at a heat (``heat_w``) or a surface temperature (``surface_c``) if one is given;
+    without either a mission follows the rise of the surface, step by step.
     ``surroundings_c``: what the sink radiates to; default: the air's temperature.
     """
 
@@ -253,7 +256,7 @@ class NaturalSink(_Finned):
 
     @model_validator(mode="after")
     def _one_load(self):
-        _one_of(self, "heat_w", "surface_c")
+        _at_most_one(self, "heat_w", "surface_c")
         return self
 
 
@@ -264,6 +267,7 @@ class LiquidPlate(_Sink):
     Either ``pump`` (a curve that meets the pressure drop) or ``flow_l_per_min``. ``loop_pa`` at ``loop_l_per_min``: pressure
     drop of hoses and cooler outside, growing with the square of flow. ``loss_coefficient``: ends of the channels, in dynamic
     pressures of the channel. ``positions``: modules one behind the other along the flow; ``heat_shares``: their parts of the heat.
+    ``legs_along_flow``: in a study with three modules in a row, which leg gets the coolant first, second, third.
     """
 
     kind: Literal["liquid-plate"]
@@ -286,11 +290,12 @@ class LiquidPlate(_Sink):
     loss_coefficient: Annotated[float, Field(strict=True, ge=0, le=100)] | None = None
     positions: Annotated[int, Field(strict=True, ge=1, le=48)] = 1
     heat_shares: Annotated[tuple[_NotNegative, ...], Field(min_length=1, max_length=48)] | None = None
+    legs_along_flow: tuple[Literal["a", "b", "c"], Literal["a", "b", "c"], Literal["a", "b", "c"]] | None = None
     footprint: Footprint | None = None
 
     @model_validator(mode="after")
     def _fits(self):
-        _one_of(self, "flow_l_per_min", "pump")
+        _at_most_one(self, "flow_l_per_min", "pump")
         _share_fits(self.fluid, self.glycol_mass_share, "fluid")
         need = self.channel_count * self.channel_width_mm + (self.channel_count - 1) * self.web_mm
         if self.width_mm is not None and need > self.width_mm * 1.0001:
@@ -313,6 +318,8 @@ class LiquidPlate(_Sink):
                 raise RangeError(
                     "heat_shares", f"shares that add up to {sum(self.heat_shares):g}", "shares that add up to 1", "divide them by their sum"
                 )
+        if self.legs_along_flow is not None and len(set(self.legs_along_flow)) < 3:
+            raise RangeError("legs_along_flow", ", ".join(self.legs_along_flow), "each of a, b, c once")
         if self.footprint is not None:
             _footprint_fits(self.footprint, self.length_mm, self.width_mm or need)
         return self
@@ -337,19 +344,16 @@ class LiquidPlate(_Sink):
 SinkSpec = Annotated[TableSink | FanSink | NaturalSink | LiquidPlate, Field(discriminator="kind")]
 
 
+def _at_most_one(spec, first: str, second: str) -> None:
+    if getattr(spec, first) is not None and getattr(spec, second) is not None:
+        raise RangeError(first, f"both {first} and {second}", "one of the two", f"give {first} or {second}")
+
+
 def _one_of(spec, first: str, second: str) -> str:
-    has = [name for name in (first, second) if getattr(spec, name) is not None]
-    if len(has) != 1:
-        raise RangeError(
-            first, f"both {first} and {second}" if has else f"neither {first} nor {second}", "one of the two", f"give {first} or {second}"
-        )
-    return has[0]
-
-
-def _rising(name: str, values) -> None:
-    for k, (a, b) in enumerate(zip(values, values[1:]), 2):
-        if b <= a:
-            raise RangeError(name, f"{b:g} at point {k} after {a:g}", "values that rise from point to point", "sort the points")
+    _at_most_one(spec, first, second)
+    if getattr(spec, first) is None and getattr(spec, second) is None:
+        raise RangeError(first, f"neither {first} nor {second}", "one of the two", f"give {first} or {second}")
+    return first if getattr(spec, first) is not None else second
 
 
 def _in_table(name: str, value: float, table) -> None:
@@ -831,6 +835,7 @@ class _FanStream(_Stream):
         return self.spec.fan
 
     def given_m3_per_s(self):
+        _one_of(self.spec, "flow_m3_per_h", "fan")
         return self.spec.flow_m3_per_h * _M3_PER_H
 
     def system_pa(self, flow):
@@ -864,6 +869,7 @@ class _PlateStream(_Stream):
         return self.spec.pump
 
     def given_m3_per_s(self):
+        _one_of(self.spec, "flow_l_per_min", "pump")
         return self.spec.flow_l_per_min * _L_PER_MIN
 
     def system_pa(self, flow):
@@ -1191,6 +1197,7 @@ def _natural_point(spec: NaturalSink, inlet_c, heat_w, flow_m3_per_s, speed_rati
     if heat_w is not None:
         state = _solve_fins(spec, inlet_c, k, heat_w=heat_w)
     else:
+        _one_of(spec, "surface_c", "heat_w")
         if spec.surface_c - inlet_c < 0.01:
             raise RangeError(
                 "surface_c", f"{spec.surface_c:g} degC in air of {inlet_c:g} degC", "a surface warmer than the air", "raise surface_c, or give heat_w"

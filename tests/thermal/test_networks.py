@@ -6,8 +6,9 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy.signal import lfilter
 
-from mission.errors import RangeError
+from mission.errors import InputError, RangeError
 from mission.thermal import CauerLadder, FosterNetwork, cauer_to_foster, foster_to_cauer, reduce_to_modes, unreduced
+from mission.thermal.measured import many_branches_to_cauer
 
 from .helpers import foster_impedance, full_response, ladder_impedance, single
 
@@ -59,15 +60,69 @@ def test_ladder_has_the_impedance_of_the_branches(branches):
         np.testing.assert_allclose(ladder_impedance(ladder.r_k_per_w, ladder.c_j_per_k, s), foster_impedance(r, tau, s), rtol=1e-10)
 
 
-@settings(derandomize=True, max_examples=60, deadline=None)
-@given(st.lists(st.tuples(st.floats(0.01, 0.1), st.floats(0.3, 0.85)), min_size=2, max_size=8))
+@settings(derandomize=True, max_examples=100, deadline=None)
+@given(st.lists(st.tuples(st.floats(0.01, 1.0), st.floats(0.3, 0.85)), min_size=1, max_size=8))
 def test_round_trip_over_six_decades(branches):
     """Time constants at least a factor of two apart: there and back to eight digits."""
     r = np.array([b[0] for b in branches])
     tau = 10.0 ** (np.cumsum([b[1] for b in branches]) - 4.0)
     back = cauer_to_foster(foster_to_cauer(FosterNetwork(r, tau)))
     np.testing.assert_allclose(back.tau_s[::-1], tau, rtol=1e-8)
-    np.testing.assert_allclose(back.r_k_per_w[::-1], r, rtol=1e-7)
+    np.testing.assert_allclose(back.r_k_per_w[::-1], r, rtol=1e-8)
+
+
+# Analytic: n equal stages R, C with the far end held; rates 4/(RC) sin^2((2k - 1) pi/(2 (2n + 1))), shapes are cosines.
+@pytest.mark.parametrize("n", [1, 2, 7, 90, 300])
+def test_even_line(n):
+    foster = cauer_to_foster(CauerLadder(np.full(n, 0.02), np.full(n, 3.0)))
+    angle = (2 * np.arange(1, n + 1) - 1) * np.pi / (2 * (2 * n + 1))
+    rate = 4 / (0.02 * 3.0) * np.sin(angle) ** 2
+    np.testing.assert_allclose(foster.tau_s, 1 / rate, rtol=1e-11)
+    np.testing.assert_allclose(foster.r_k_per_w, 4 / (2 * n + 1) * np.cos(angle) ** 2 / 3.0 / rate, rtol=1e-9, atol=1e-17)
+
+
+@settings(derandomize=True, max_examples=40, deadline=None)
+@given(st.integers(0, 2**32 - 1), st.integers(60, 120), st.floats(0.0, 10.0), st.sampled_from(["rough", "finer downwards", "coarser downwards"]))
+def test_long_ladders_over_many_decades(seed, n, decades, order):
+    """The impedance of the branches is that of the ladder, evaluated from its far end up (sums of positive terms only on the real axis)."""
+    rng = np.random.default_rng(seed)
+    r, c = 10.0 ** rng.uniform(-0.5 * decades, 0.5 * decades, (2, n))
+    if order != "rough":
+        r, c = (np.sort(v)[:: -1 if order == "finer downwards" else 1] for v in (r, c))
+    foster = cauer_to_foster(CauerLadder(r, c))
+    assert foster.r_k_per_w.sum() == pytest.approx(r.sum(), rel=1e-12)
+    assert (foster.r_k_per_w / foster.tau_s).sum() * c[0] == pytest.approx(1.0, rel=1e-12)
+    rate = np.geomspace(1e-3 / foster.tau_s.max(), 1e3 / foster.tau_s.min(), 100)
+    for s in (1j * rate, rate + 0j):
+        np.testing.assert_allclose(foster_impedance(foster.r_k_per_w, foster.tau_s, s), ladder_impedance(r, c, s), rtol=1e-10)
+
+
+@pytest.mark.parametrize("decades", [9, 12, 18])
+def test_ninety_branches_there_and_back(decades):
+    """Independent code on the way there: bidiagonal form of the branches, without an eigenproblem."""
+    rng = np.random.default_rng(decades)
+    r, tau = 10 ** rng.uniform(-2, 0, 90), np.sort(10 ** rng.uniform(-0.5 * decades, 0.5 * decades, 90))
+    back = cauer_to_foster(many_branches_to_cauer(FosterNetwork(r, tau)))
+    np.testing.assert_allclose(back.tau_s[::-1], tau, rtol=1e-11)
+    np.testing.assert_allclose(back.r_k_per_w[::-1], r, rtol=1e-8)
+
+
+def test_stages_that_no_number_holds_are_refused():
+    with pytest.raises(InputError, match="check resistances and heat capacities for wrong units"):
+        cauer_to_foster(CauerLadder([1e-200, 1e200], [1e-200, 1e200]))
+
+
+@pytest.mark.parametrize("seed", range(12))
+def test_far_beyond_any_real_ladder_it_is_right_or_refused(seed):
+    """Stages strewn over a hundred decades: some of these lose the slow branches, and must say so."""
+    r, c = 10.0 ** np.random.default_rng(seed).uniform(-25, 25, (2, 90))
+    try:
+        foster = cauer_to_foster(CauerLadder(r, c))
+    except InputError as refused:
+        assert "that the machine's numbers can hold together" in str(refused)
+        return
+    s = np.array([1e-3 / foster.tau_s.max(), 1e3 / foster.tau_s.min()]) + 0j
+    np.testing.assert_allclose(foster_impedance(foster.r_k_per_w, foster.tau_s, s), ladder_impedance(r, c, s), rtol=1e-8)
 
 
 def test_equal_time_constants_are_one_branch():

@@ -10,8 +10,8 @@ from hypothesis import strategies as st
 from scipy.integrate import quad
 
 from mission.device import LayerSpec, module_from_dict
-from mission.errors import InputError
-from mission.thermal import FixedCooling, Material, inverter_network, load_materials, shipped_materials, stack_ladder
+from mission.errors import InputError, RangeError
+from mission.thermal import FixedCooling, Material, conductivity_effect, inverter_network, load_materials, materials_at, shipped_materials, stack_ladder
 
 from ..device.factories import straight_line_data
 from .helpers import single
@@ -189,3 +189,103 @@ def test_module_with_layers_has_the_resistances_of_its_layers():
     volume = {"si": 0.12e-3 * 17e-3**2, "solder": 0.1e-3 * 17e-3**2, "cu": 3e-3 / 3 * (17e-3**2 + 23e-3**2 + 17e-3 * 23e-3)}
     capacity = volume["si"] * 2330 * 750 + volume["solder"] * 7370 * 220 + volume["cu"] * 8930 * 385
     assert full.c_j_per_k.sum() == pytest.approx(12 * capacity, rel=1e-9)
+
+
+# ------------------------------------------------------------------ conductivity over temperature
+# Published: usual handbook values (W/(m K)), from memory of handbook tables at 400 and 500 K.
+@pytest.mark.parametrize(("name", "t_k", "k", "within"), [
+    ("silicon", 400.0, 105.0, 0.035), ("silicon", 500.0, 80.0, 0.055), ("copper", 400.0, 393.0, 0.02), ("copper", 250.0, 406.0, 0.02),
+])
+def test_laws_meet_handbook_values(name, t_k, k, within):
+    assert shipped_materials()[name].at(t_k - 273.15).k_w_per_m_k == pytest.approx(k, rel=within)
+
+
+def test_conductivity_at_a_temperature():
+    shipped = shipped_materials()
+    hot = materials_at(shipped, 125.0)
+    # analytic: 148 (300/398.15)^1.3 and 394 (298.15/398.15)^0.07
+    assert hot["silicon"].k_w_per_m_k == pytest.approx(148.0 * (300.0 / 398.15) ** 1.3, rel=1e-12)
+    assert hot["copper"].k_w_per_m_k == pytest.approx(394.0 * (298.15 / 398.15) ** 0.07, rel=1e-12)
+    assert hot["silicon"].k_w_per_m_k == pytest.approx(shipped["silicon-hot"].k_w_per_m_k, rel=0.005)
+    assert hot["silicon-carbide"].k_w_per_m_k == pytest.approx(370.0 * (300.0 / 398.15) ** 1.3, rel=1e-12)
+    assert {n for n, m in hot.items() if m != shipped[n]} == {"silicon", "silicon-carbide", "copper"}
+    assert shipped["silicon"].at(26.85).k_w_per_m_k == pytest.approx(148.0, rel=1e-12)
+    # the law goes with the material: a second temperature counts from the data, not from the first
+    assert hot["silicon"].at(50.0).k_w_per_m_k == pytest.approx(shipped["silicon"].at(50.0).k_w_per_m_k, rel=1e-12)
+    assert shipped["silicon"].k_over_t.t_ref_c == 26.85
+
+
+@pytest.mark.parametrize(("t_c", "words"), [(231.0, "material silicon: conductivity: found 231 degC; allowed: -50 to 230 degC"), (-51.0, "found -51 degC"), (np.nan, "t_c: found nan")])
+def test_no_conductivity_outside_the_tested_range(t_c, words):
+    with pytest.raises(RangeError) as caught:
+        materials_at(shipped_materials(), t_c)
+    assert words in str(caught.value)
+
+
+@pytest.mark.parametrize(("line", "words"), [
+    ("t_ref_c = 300.0", ["copper.k_over_t", "300 degC", "0 to 200 degC"]), ("exponent = 20.0", ["copper.k_over_t.exponent", "20.0", "at most 3"]),
+    ('source = ""\nunit = "K"', ["'unit'", "unknown key"]), ("t_max_c = nan", ["copper.k_over_t.t_max_c", "finite"]),
+])
+def test_own_law(tmp_path, line, words):
+    path = tmp_path / "mine.toml"
+    keys = {"t_ref_c": "25.0", "exponent": "0.5", "t_min_c": "0.0", "t_max_c": "200.0", "source": '"me"', "page_or_clause": '"none"'}
+
+    def write():
+        head = 'format = 1\n[material.copper]\nk_w_per_m_k = 380.0\nrho_kg_per_m3 = 8930.0\nc_j_per_kg_k = 385.0\nsource = "me"\npage_or_clause = "none"\ntested_range = "none"\n'
+        path.write_text(head + "[material.copper.k_over_t]\n" + "\n".join(f"{k} = {v}" for k, v in keys.items()), encoding="utf-8")
+
+    write()
+    assert load_materials(path)["copper"].at(100.0).k_w_per_m_k == pytest.approx(380.0 * (298.15 / 373.15) ** 0.5, rel=1e-12)
+    key, value = line.split(" = ", 1)
+    keys[key] = value
+    write()
+    with pytest.raises(InputError) as caught:
+        load_materials(path)
+    missing = [w for w in words if w not in str(caught.value)]
+    assert not missing, f"{missing} not in: {caught.value}"
+
+
+def kirchhoff_rise(flux_length, k_ref, t_ref_k, n, cold_k):
+    """Analytic: rise across a slab whose k = k_ref (t_ref/T)^n, by the transform of Kirchhoff: q L is the integral of k over T."""
+    power = cold_k ** (1 - n) + flux_length * (1 - n) / (k_ref * t_ref_k**n)
+    return power ** (1 / (1 - n)) - cold_k
+
+
+@pytest.mark.parametrize(("rise_k", "too_large"), [(40.0, 0.00126), (120.0, 0.0115)])
+def test_one_conductivity_against_the_exact_slab(rise_k, too_large):
+    """What a constant taken at the mean of both faces leaves out, as said in the docstring; the exact slab also by quadrature of its own."""
+    mean_k, n = 398.15, 1.3
+    cold, hot = mean_k - rise_k / 2, mean_k + rise_k / 2
+    flux_length = quad(lambda t: 148.0 * (300.0 / t) ** n, cold, hot, epsrel=1e-12)[0]
+    assert kirchhoff_rise(flux_length, 148.0, 300.0, n, cold) == pytest.approx(rise_k, rel=1e-9)
+    slab = [layer("silicon", 1.0, 10.0, 10.0)]  # heat flow = (q L) area/thickness
+
+    def linearised(t_k):
+        r = sum(stack_ladder(slab, materials_at(shipped_materials(), t_k - 273.15)).r_layers_k_per_w)
+        return r * flux_length * 1e-4 / 1e-3
+
+    error = linearised(mean_k) / rise_k - 1.0
+    assert error == pytest.approx(too_large, rel=0.03)
+    assert error == pytest.approx(n * (n + 1) / 24 * (rise_k / mean_k) ** 2, rel=0.03)
+    assert linearised(mean_k - 20.0) / linearised(mean_k) - 1.0 == pytest.approx(-0.065, abs=5e-4)
+
+
+def test_effect_of_a_temperature_layer_by_layer():
+    stack = [layer("silicon", 0.15, 10.0, 10.0), layer("solder-snag", 0.1), layer("copper", 3.0, spread_deg=45.0)]
+    effect = conductivity_effect(stack, load_materials(), 125.0)
+    assert [row.material for row in effect.layers] == ["silicon", "solder-snag", "copper"] and effect.t_c == 125.0
+    # analytic
+    area, pyramid = 1e-4, 10e-3 * 16e-3
+    data = [0.15e-3 / (148 * area), 0.1e-3 / (57 * area), 3e-3 / (394 * pyramid)]
+    factor = [(398.15 / 300.0) ** 1.3, 1.0, (398.15 / 298.15) ** 0.07]
+    np.testing.assert_allclose([row.r_data_k_per_w for row in effect.layers], data, rtol=1e-9)
+    np.testing.assert_allclose([row.r_at_k_per_w for row in effect.layers], np.multiply(data, factor), rtol=1e-9)
+    np.testing.assert_allclose([row.k_at_w_per_m_k for row in effect.layers], np.divide([148.0, 57.0, 394.0], factor), rtol=1e-12)
+    np.testing.assert_allclose([row.change_percent for row in effect.layers], 100 * (np.array(factor) - 1), atol=1e-9)
+    assert effect.total.r_data_k_per_w == pytest.approx(sum(data)) and effect.total.r_at_k_per_w == pytest.approx(np.dot(data, factor))
+    assert effect.total.change_percent == pytest.approx(100 * (np.dot(data, factor) / sum(data) - 1))
+    with pytest.raises(InputError, match="did you mean 'copper'"):
+        conductivity_effect([layer("coper", 3.0, 1.0, 1.0)], load_materials(), 25.0)
+    with pytest.raises(RangeError, match="material silicon"):
+        conductivity_effect(stack, load_materials(), 300.0)
+    assert conductivity_effect([layer("solder-snag", 0.1, 5.0, 5.0)], load_materials(), 300.0).total.change_percent == 0.0  # nothing in it has a law

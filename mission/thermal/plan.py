@@ -1,0 +1,398 @@
+"""From what a study says of its cooling to levels, and to the level of every moment.
+
+A level is one network: one setting of the cooling at one coolant temperature with grease of one age. Which one holds is decided by
+the row (flow, coolant temperature, fault, age of the grease) and, within a group of levels, by the temperature of the sink (stages of
+a fan, a law, still air that draws the better the hotter the fins). Quantities that change smoothly are followed in steps.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from itertools import product
+from typing import Annotated, NamedTuple
+
+import numpy as np
+from pydantic import Field
+
+from ..device import PowerModule
+from ..errors import InputError, RangeError
+from .build import inverter_modes, inverter_network
+from .cooling import FixedCooling, FosterCooling, SinkPath, sink_ladder, with_resistance
+from .levels import CoolingLevels, LevelGroup
+from .networks import CauerLadder
+from .sinks import FanSink, LiquidPlate, NaturalSink, SinkPoint, TableSink, sink_point
+
+CoolingSpec = Annotated[FixedCooling | FosterCooling | TableSink | FanSink | NaturalSink | LiquidPlate, Field(discriminator="kind")]
+#: Kinds whose resistance is reckoned.
+COMPUTED = (TableSink, FanSink, NaturalSink, LiquidPlate)
+
+#: A quantity that changes smoothly is followed in steps that change the resistance by this share.
+STEP = 0.02
+#: Rises over which still air is followed [K], and how much of a rise lies between the step up and the step down.
+_STILL_K, _STILL_GAP = (0.5, 250.0), 0.05
+
+
+class Setting(NamedTuple):
+    """What a level is set to: ``what`` is "given", "speed", "flow" [m3/s], "resistance" [K/W] or "still air" (rise of the surface [K])."""
+
+    what: str
+    value: float = 0.0
+
+    def words(self, liquid: bool) -> str:
+        """For people."""
+        if self.what == "given":
+            return "as given"
+        if self.what == "flow":
+            return f"{self.value * 60000.0:.4g} l/min" if liquid else f"{self.value * 3600.0:.4g} m3/h"
+        return {"speed": f"{100.0 * self.value:.3g} % speed", "resistance": f"{self.value:.4g} K/W given", "still air": f"still air, {self.value:.3g} K rise"}[self.what]
+
+
+class Level(NamedTuple):
+    """One level: setting, coolant at the inlet [degC], factor on the grease."""
+
+    setting: Setting
+    coolant_c: float | None
+    paste: float
+
+
+@dataclass(frozen=True)
+class LevelState:
+    """A level worked out.
+
+    Attributes
+    ----------
+    words : str
+    r_th_k_per_w : float
+        From the surface to the coolant at the inlet, for all the heat [K/W] (a row of sinks: the mean).
+    path : SinkPath
+    point : SinkPoint or None
+        Where the resistance was reckoned.
+    """
+
+    words: str
+    r_th_k_per_w: float
+    path: SinkPath
+    point: SinkPoint | None
+
+
+class CoolingPlan:
+    """Levels of a study's cooling.
+
+    Parameters
+    ----------
+    spec : any kind of cooling
+    module : PowerModule
+    coolant_c : tuple of float
+        Lowest and highest coolant temperature of the duty [degC].
+    flow_m3_per_s : tuple of float, optional
+        Lowest and highest flow above zero that the duty has a column for.
+    stands_still : bool
+        Whether that column has rows without flow.
+    duration_s : float
+        Of the mission.
+    materials : dict of Material
+    relative_tolerance : float
+        Of the reduction.
+
+    Raises
+    ------
+    InputError, RangeError
+        Parts that do not go together.
+    """
+
+    def __init__(self, spec, module: PowerModule, *, coolant_c: tuple[float, float], flow_m3_per_s: tuple[float, float] | None = None, stands_still: bool = False,
+                 duration_s: float = 0.0, materials=None, relative_tolerance: float = 1e-3):
+        self.spec, self.module, self._materials, self._tolerance = spec, module, materials, relative_tolerance
+        self._states: dict[int, LevelState] = {}
+        self._coolant, self._range = 0.5 * (coolant_c[0] + coolant_c[1]), coolant_c
+        self._flows, self._stands_still = flow_m3_per_s, stands_still
+        _check_parts(spec, module, flow_m3_per_s, stands_still)
+        self._paste, self._paste_s = _paste_steps(spec.grease, duration_s)
+        self._coolants, self._coolant_borders = self._coolant_steps(coolant_c)
+        self._flow_values, self._flow_borders = self._flow_steps()
+        #: Times at which rows must be cut [s].
+        self.cut_s = np.unique([*self._paste_s, *(t for f in spec.fault for t in (f.at_s, f.until_s) if t is not None and 0.0 < t < duration_s)])
+        self.levels: list[Level] = []
+        groups = []
+        for fault, paste, coolant, flow in product(self._faults(), self._paste, self._coolants, self._flow_values):
+            inside, borders = self._inside(fault, coolant, flow)
+            first = len(self.levels)
+            self.levels += [Level(s, coolant, paste) for s in inside]
+            groups.append(LevelGroup(tuple(range(first, first + len(inside))), *borders))
+        self.groups = tuple(groups)
+        self._shape = (len(self._faults()), len(self._paste), len(self._coolants), len(self._flow_values))
+        if len(self.levels) > 1 and self._in_a_row():
+            raise InputError("cooling.positions", f"{spec.positions} positions with a cooling that changes", "one position, or a cooling that stays",
+                             "modules in a row feel each other through the coolant; that is reckoned for one flow only")
+        if any(len(g.levels) > 1 for g in groups) and not isinstance(self.state(0).path.ladders[0], CauerLadder):
+            raise InputError("cooling.heat_capacity_j_per_k", "a sink without heat capacity, whose stages follow its temperature", "the heat capacity of the sink",
+                             "without it the surface would jump with every stage")
+
+    # what a row says ------------------------------------------------------------------------------------------------------------
+
+    def groups_of(self, time_s, coolant_c, flow_m3_per_s=None) -> np.ndarray:
+        """Group of every row, which must not reach over a time of ``cut_s``; arrays of shape (n,)."""
+        time_s = np.asarray(time_s, float)
+        fault = np.zeros(time_s.shape, int)
+        for k, one in enumerate(self.spec.fault, 1):
+            fault[(time_s >= one.at_s - 1e-9) & (time_s < (np.inf if one.until_s is None else one.until_s) - 1e-9)] = k
+        paste = np.searchsorted(self._paste_s, time_s + 1e-9, side="right")
+        coolant = np.searchsorted(self._coolant_borders, coolant_c)
+        flow = np.zeros(time_s.shape, int)
+        if self._flows is not None:
+            flow = np.where(np.asarray(flow_m3_per_s) == 0.0, len(self._flow_values) - 1, np.searchsorted(self._flow_borders, flow_m3_per_s))
+        return np.ravel_multi_index((fault, paste, coolant, flow), self._shape)
+
+    # levels worked out ----------------------------------------------------------------------------------------------------------
+
+    def state(self, k: int) -> LevelState:
+        """Level ``k`` worked out."""
+        if k not in self._states:
+            self._states[k] = self._work_out(self.levels[k])
+        return self._states[k]
+
+    def strongest(self) -> int:
+        """Level at the start of the mission without fault, at its highest stage and largest flow, at the middle of the coolant's range.
+
+        Raises
+        ------
+        InputError
+            Still air whose resistance follows the rise: no single level stands for it.
+        """
+        if self._follows_rise():
+            raise InputError("cooling.kind", "still air that follows the rise of the sink", "heat_w or surface_c under [cooling] where a single resistance is needed",
+                             "give the heat or the surface temperature to reckon with")
+        group = np.ravel_multi_index((0, 0, len(self._coolants) // 2, len(self._flow_values) - 1 - self._stands_still), self._shape)
+        return self.groups[int(group)].levels[-1]
+
+    def networks(self) -> CoolingLevels:
+        """The networks that the march goes through."""
+        def build(k):
+            path = self.state(k).path
+            return (inverter_network(self.module, path, materials=self._materials),
+                    inverter_modes(self.module, path, materials=self._materials, relative_tolerance=self._tolerance))
+
+        if len(self.levels) == 1:
+            return CoolingLevels.fixed(inverter_modes(self.module, self.state(0).path, materials=self._materials, relative_tolerance=self._tolerance))
+        return CoolingLevels(build, len(self.levels), self.groups)
+
+    def _work_out(self, level: Level) -> LevelState:
+        point, path = self._point(level.setting, level.coolant_c), None
+        if point is not None:
+            r, capacity = point.r_th_k_per_w, point.heat_capacity_j_per_k
+            if self._in_a_row():
+                path = _row_of_sinks(self.spec, point)
+            else:
+                ladder = r if capacity is None else CauerLadder(np.array([r]), np.array([capacity]))
+        elif isinstance(self.spec, COMPUTED):
+            r = level.setting.value
+            capacity = self._capacity()
+            ladder = r if capacity is None else CauerLadder(np.array([r]), np.array([capacity]))
+        else:
+            ladder = sink_ladder(self.spec)
+            if level.setting.what == "resistance":
+                ladder = with_resistance(ladder, level.setting.value, "cooling.r_th_k_per_w")
+            r = float(ladder.r_k_per_w.sum()) if isinstance(ladder, CauerLadder) else ladder
+        path = path or SinkPath((ladder,))
+        return LevelState(level.setting.words(isinstance(self.spec, LiquidPlate) or getattr(self.spec, "fluid", "air") not in ("air", None)), r,
+                          replace(path, paste=level.paste, chip_losses=self.spec.sink_sees == "chip-losses"), point)
+
+    def _capacity(self):
+        """Heat capacity of the metal, whatever flows [J/K]."""
+        if isinstance(self.spec, TableSink) or self.spec.heat_capacity_j_per_k is not None:
+            return self.spec.heat_capacity_j_per_k
+        from .layers import load_materials
+
+        metal = (load_materials() if self._materials is None else self._materials)[self.spec.material]
+        return metal.rho_kg_per_m3 * metal.c_j_per_kg_k * self.spec.metal_m3
+
+    def _point(self, setting: Setting, coolant_c) -> SinkPoint | None:
+        """What a reckoned sink does at a setting; None where a resistance is given."""
+        if not isinstance(self.spec, COMPUTED) or setting.what == "resistance":
+            return None
+        how = {"inlet_c": self._coolant if coolant_c is None else coolant_c, "materials": self._materials}
+        if setting.what == "still air":
+            return sink_point(_still_fins(self.spec, how["inlet_c"] + setting.value), **how)
+        if setting.what == "speed":
+            return sink_point(self.spec, speed_ratio=setting.value, **how)
+        return sink_point(self.spec, flow_m3_per_s=setting.value if setting.what == "flow" else None, **how)
+
+    def _in_a_row(self) -> bool:
+        return isinstance(self.spec, LiquidPlate) and self.spec.positions > 1
+
+    # steps ----------------------------------------------------------------------------------------------------------------------
+
+    def _r(self, setting, coolant_c=None) -> float:
+        point = self._point(setting, coolant_c)
+        return setting.value if point is None else point.r_th_k_per_w
+
+    def _faults(self):
+        return (None, *self.spec.fault)
+
+    def _coolant_steps(self, coolant_c):
+        """Coolant temperatures at which levels are reckoned, and the borders between them."""
+        low, high = coolant_c
+        law = self.spec.law if self.spec.law is not None and self.spec.law.watch == "coolant" else None
+        if not isinstance(self.spec, COMPUTED) or (isinstance(self.spec, TableSink) and law is None) or high - low < 0.1 or self._in_a_row():
+            return (self._coolant,), np.empty(0)
+        if self._follows_rise() or self.spec.stage or (self.spec.law is not None and law is None):
+            trial = [self._inside(None, c, self._middle_flow())[0][0] for c in (low,)][0]
+            return _steps(lambda c: self._r(trial, c), np.linspace(low, high, 9))
+        return _steps(lambda c: self._r(self._setting(self._middle_flow(), c), c), np.union1d(np.linspace(low, high, 17), law.at_c if law else []).clip(low, high))
+
+    def _middle_flow(self):
+        return None if self._flows is None else float(np.sqrt(self._flows[0] * self._flows[1]))
+
+    def _flow_steps(self):
+        """Flows at which levels are reckoned, and the borders; the last one stands for no flow where there are rows without."""
+        if self._flows is None:
+            return (None,), np.empty(0)
+        low, high = self._flows
+        values, borders = ((low,), np.empty(0)) if high / low < 1.001 else _steps(lambda v: self._r(Setting("flow", v)), np.geomspace(low, high, 25))
+        return ((*values, 0.0) if self._stands_still else values), borders
+
+    def _setting(self, flow, coolant_c) -> Setting:
+        """Setting by what a row says, without fault, stage or rise."""
+        law = self.spec.law
+        if flow is not None:
+            return Setting("flow", flow)
+        if law is not None and law.watch == "coolant":
+            return _law_setting(law, coolant_c)
+        return Setting("given")
+
+    def _follows_rise(self) -> bool:
+        return isinstance(self.spec, NaturalSink) and self.spec.heat_w is None and self.spec.surface_c is None
+
+    def _inside(self, fault, coolant_c, flow):
+        """Settings among which the sink's temperature chooses, and (up, down, on rise) of their borders."""
+        spec = self.spec
+        if flow == 0.0 or (fault is not None and fault.share == 0.0):
+            if spec.stopped.r_th_k_per_w is not None:
+                return [Setting("resistance", spec.stopped.r_th_k_per_w)], ()
+            return self._still(coolant_c)
+        if fault is not None:
+            return [_less(spec, self._setting(flow, coolant_c), fault.share)], ()
+        if self._follows_rise():
+            return self._still(coolant_c)
+        if spec.stage:
+            return [_stage_setting(s) for s in spec.stage], (tuple(s.up_above_c for s in spec.stage[:-1]), tuple(s.down_below_c for s in spec.stage[1:]))
+        if spec.law is not None and spec.law.watch == "surface":
+            at, borders = _steps(lambda t: self._r(_law_setting(spec.law, t), coolant_c), np.union1d(np.linspace(spec.law.at_c[0], spec.law.at_c[-1], 33), spec.law.at_c))
+            return [_law_setting(spec.law, t) for t in at], (tuple(borders), tuple(borders - spec.law.hysteresis_k))
+        return [self._setting(flow, coolant_c)], ()
+
+    def _still(self, coolant_c):
+        rise, borders = _steps(lambda r: self._r(Setting("still air", r), coolant_c), np.geomspace(*_STILL_K, 41))
+        return [Setting("still air", r) for r in rise], (tuple(borders * (1.0 + 0.5 * _STILL_GAP)), tuple(borders * (1.0 - 0.5 * _STILL_GAP)), True)
+
+
+def _steps(resistance, x):
+    """Values of ``x`` (rising) for steps of ``STEP`` in the resistance, and the borders between them."""
+    r = np.log([resistance(float(v)) for v in x])
+    way = np.concatenate([[0.0], np.cumsum(np.abs(np.diff(r)))])
+    count = max(1, int(np.ceil(way[-1] / STEP - 1e-9)))
+    way += 1e-9 * np.arange(way.size)  # flat parts belong to the step before
+    at = np.interp(way[-1] * (np.arange(count) + 0.5) / count, way, x)
+    return tuple(at.tolist()), np.interp(way[-1] * np.arange(1, count) / count, way, x)
+
+
+def _stage_setting(stage) -> Setting:
+    if stage.speed_ratio is not None:
+        return Setting("speed", stage.speed_ratio)
+    if stage.r_th_k_per_w is not None:
+        return Setting("resistance", stage.r_th_k_per_w)
+    return Setting("flow", stage.flow_l_per_min / 60000.0 if stage.flow_l_per_min is not None else stage.flow_m3_per_h / 3600.0)
+
+
+def _law_setting(law, t_c: float) -> Setting:
+    value = float(np.interp(t_c, law.at_c, getattr(law, law.quantity)))
+    return Setting("speed", value) if law.quantity == "speed_ratio" else Setting("flow", value / (60000.0 if law.quantity == "flow_l_per_min" else 3600.0))
+
+
+def _has_curve(spec) -> bool:
+    return getattr(spec, "fan", None) is not None or getattr(spec, "pump", None) is not None
+
+
+def _less(spec, setting: Setting, share: float) -> Setting:
+    """What a fault leaves."""
+    if setting.what in ("flow", "speed"):
+        return Setting(setting.what, setting.value * share)
+    if _has_curve(spec):
+        return Setting("speed", share)
+    if isinstance(spec, TableSink):
+        return Setting("flow", spec.at_m3_per_s * share)
+    return Setting("flow", share * (spec.flow_l_per_min / 60000.0 if isinstance(spec, LiquidPlate) else spec.flow_m3_per_h / 3600.0))
+
+
+def _still_fins(spec, surface_c: float) -> NaturalSink:
+    """The fins as they stand in still air."""
+    shape = {n: getattr(spec, n) for n in ("base_mm", "fin_count", "fin_mm", "gap_mm", "fin_height_mm", "length_mm", "width_mm", "material", "k_w_per_m_k",
+                                           "altitude_m", "footprint", "heat_capacity_j_per_k")}
+    own = isinstance(spec, NaturalSink)
+    return NaturalSink(kind="plate-fin-natural", surface_c=surface_c, emissivity=spec.emissivity if own else spec.stopped.emissivity,
+                       surroundings_c=spec.surroundings_c if own else None, **shape)
+
+
+def _paste_steps(grease, duration_s):
+    """Factors on the grease and the times at which they change [s]."""
+    if grease is None:
+        return (1.0,), np.empty(0)
+    first, last = (float(grease.factor(t)) for t in (0.0, duration_s))
+    count = max(1, int(np.ceil(np.log(last / first) / STEP - 1e-9)))
+    if count == 1:
+        return (float(grease.factor(0.5 * duration_s)),), np.empty(0)
+    factor = first * (last / first) ** (np.arange(2 * count + 1) / (2 * count))
+    hours = grease.per_h * ((factor[2:-1:2] - 1.0) / grease.growth) ** (1.0 / grease.exponent) - grease.age_h
+    return tuple(factor[1::2].tolist()), 3600.0 * hours
+
+
+def _row_of_sinks(spec: LiquidPlate, point: SinkPoint) -> SinkPath:
+    """Each module on its own part of the plate; what the coolant takes up of one warms the next."""
+    shares = np.full(spec.positions, 1.0 / spec.positions) if spec.heat_shares is None else np.array(spec.heat_shares)
+    place = ["abc".index(leg) for leg in spec.legs_along_flow]
+    ladders: list = [None] * 3
+    for n, position in enumerate(point.positions):
+        r = (position.surface_rise_k_per_w - position.coolant_rise_k_per_w) / shares[n]
+        ladders[place[n]] = CauerLadder(np.array([r]), np.array([point.heat_capacity_j_per_k / spec.positions]))
+    return SinkPath(tuple(ladders), coolant_rise_k_per_w=point.outlet_rise_k_per_w, first_to_last=tuple(place))
+
+
+def _check_parts(spec, module, flows, stands_still) -> None:
+    kind = f"'{spec.kind}'"
+    flowing = isinstance(spec, (TableSink, FanSink, LiquidPlate))
+    settings = [(f"cooling.stage[{k}]", s) for k, s in enumerate(spec.stage, 1)] + ([("cooling.law", spec.law)] if spec.law is not None else [])
+    for where, one in settings:
+        if one.speed_ratio is not None and not _has_curve(spec):
+            raise InputError(f"{where}.speed_ratio", f"a speed with kind = {kind} and no curve of a fan or pump", "a curve (fan or pump), or a flow or resistance")
+        if (one.flow_l_per_min is not None or one.flow_m3_per_h is not None) and not flowing:
+            raise InputError(f"{where}", f"a flow with kind = {kind}", "flow-table, plate-fin-fan or liquid-plate", "give r_th_k_per_w for every stage instead")
+    if flows is not None or stands_still:
+        if not flowing:
+            raise InputError("cooling.kind", f"{kind} beside a flow column in the duty", "flow-table, plate-fin-fan or liquid-plate", "take the column out of duty.columns, or choose such a kind")
+        own = [n for n in ("stage", "law", "fan", "pump", "at_l_per_min", "at_m3_per_h") if getattr(spec, n, None)]
+        own += [n for n in ("flow_l_per_min", "flow_m3_per_h") if not isinstance(spec, TableSink) and getattr(spec, n, None)]
+        if own:
+            raise InputError(f"cooling.{own[0]}", f"{own[0]} beside a flow column in the duty", "one of the two", "take the column out of duty.columns, or the field out of [cooling]")
+        if stands_still and spec.stopped is None:
+            raise InputError("cooling.stopped", "no section stopped, and rows without flow in the duty", "what cools then", "add [cooling.stopped] with r_th_k_per_w")
+    if spec.fault and not flowing and any(f.share > 0.0 for f in spec.fault):
+        raise InputError("cooling.fault.share", f"a share of the flow with kind = {kind}, which has none", "0, with [cooling.stopped]")
+    if spec.stopped is not None:
+        if not spec.fault and not stands_still:
+            raise InputError("cooling.stopped", "a section stopped that nothing leads to", "a fault, or rows of a flow column at 0", "add [[cooling.fault]], or take it out")
+        if spec.stopped.emissivity is not None and not isinstance(spec, FanSink):
+            raise InputError("cooling.stopped.emissivity", f"an emissivity with kind = {kind}", "emissivity with kind = 'plate-fin-fan' only", "give r_th_k_per_w")
+    if isinstance(spec, NaturalSink) and (spec.stage or spec.fault or spec.law is not None):
+        raise InputError("cooling.kind", "still air with stages, a law or a fault", "none of these: nothing is driven", "choose kind = 'plate-fin-fan'")
+    if spec.grease is not None and module.case_to_sink is None:
+        raise InputError("cooling.grease", f"ageing grease, and no case_to_sink in {module.name}", "a module with a case-to-sink resistance", "its thermal branches hold the grease already")
+    if spec.sink_sees == "chip-losses" and isinstance(spec, COMPUTED):
+        raise InputError("cooling.sink_sees", f"'chip-losses' with kind = {kind}", "'heat-leaving'", "a reckoned sink takes the heat that reaches it")
+    if isinstance(spec, LiquidPlate) and (spec.positions > 1) != (spec.legs_along_flow is not None):
+        raise RangeError("cooling.legs_along_flow", "nothing beside several positions" if spec.legs_along_flow is None else "an order with one position",
+                         "the order in which the coolant reaches the modules, with three positions", 'e.g. legs_along_flow = ["a", "b", "c"]')
+    if isinstance(spec, LiquidPlate) and spec.positions > 1 and (spec.positions != 3 or module.arrangement == "six-pack"):
+        raise InputError("cooling.positions", f"{spec.positions} positions under {module.name}",
+                         "1" if module.arrangement == "six-pack" else "1, or 3: one for each leg", "a six-pack is one module" if module.arrangement == "six-pack" else "")
+    if isinstance(spec, LiquidPlate) and spec.heat_shares is not None and min(spec.heat_shares) == 0.0:
+        raise RangeError("cooling.heat_shares", "a share of 0", "shares above 0 in a study", "every module of a bridge gives off heat")
