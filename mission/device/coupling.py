@@ -3,7 +3,7 @@
     [[coupling]]
     heated = "S-up"             # in every leg; "S-a-up" names one chip of a six-pack
     felt = "D-up"
-    r_k_per_w = [-0.002, 0.014]
+    r_k_per_w = [-0.0008, 0.014]
     tau_s = [0.02, 0.3]
     source = "measured on the opened module"
 """

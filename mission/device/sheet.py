@@ -53,6 +53,7 @@ from .module import (
     Wires,
     _plausible_temperature,
 )
+from .plate import PlateSpec
 
 #: What the largest value of a curve may lie between; outside it the unit is wrong, or the columns are exchanged.
 _PLAUSIBLE = {"voltage": (0.1, 20.0), "z_th": (0.001, 20.0)}
@@ -265,7 +266,7 @@ class SheetThermal(_Points):
     quantities: ClassVar = ("time", "z_th")
     keys: ClassVar = ("time_s", "z_th_k_per_w")
 
-    reference: Literal["case", "sink"]
+    reference: Literal["case", "sink", "plate"]
     time_s: Numbers | None = None
     z_th_k_per_w: Numbers | None = None
     branches: Annotated[int, Field(strict=True, ge=1, le=MOST)] | None = None
@@ -342,6 +343,7 @@ class SheetDescription(FileModel):
     inner_diode: SheetDiode | None = None
     clamp_diode: SheetDiode | None = None
     case_to_sink: CaseToSink | None = None
+    plate: PlateSpec | None = None
     wires: Wires | None = None
     failure_mode: tuple[FailureMode, ...] = ()
 
@@ -498,7 +500,7 @@ class _Conversion:
             part = getattr(s, name)
             if part is not None:
                 data[name] = self.diode(name, part)
-        for name in ("switching", "case_to_sink", "wires"):
+        for name in ("switching", "case_to_sink", "plate", "wires"):
             if getattr(s, name) is not None:
                 data[name] = _plain(getattr(s, name))
         if s.failure_mode:

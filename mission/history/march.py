@@ -17,6 +17,7 @@ from ..errors import InputError, NoStableTemperature
 from ..losses import LossTables, reference_for
 from ..machine import OperatingPoints
 from ..thermal import SLOW_MODES, CoolingLevels, ReducedNetwork
+from ..thermal.modes import fewer_rates
 from .steady import HeldPoint
 
 _POINT_CAPACITY = 32768
@@ -585,7 +586,7 @@ def _chip_names(positions):
 def _own_response(network):
     """Rates and weights of each chip's response to its own heat, for the ripple: local modes first, then what it sees of itself through shared modes.
 
-    Shared modes that are too slow to ripple are left out; neighbours of the others are joined to eight at most, so that their steady part stays.
+    Shared modes that are too slow to ripple are left out; where more than ten are left, ten rates stand for them.
     """
     lam, rho = network.lam_local_per_s, network.rho_local
     # modes of one rate count together: those of a coupling cancel in a chip's own response
@@ -595,14 +596,8 @@ def _own_response(network):
     fast = (rate > RIPPLES_ABOVE_PER_S) & (np.abs(own) > 1e-9 * np.abs(own).max(initial=0.0)).any(axis=1)
     if not fast.any():
         return lam, rho
-    extra_lam, extra_rho = [], []
-    for part in np.array_split(np.argsort(rate[fast]), min(8, int(fast.sum()))):
-        r, weight = rate[fast][part][:, None], own[fast][part]
-        steady = (weight / r).sum(axis=0)
-        joint = np.full(steady.shape, float(np.exp(np.log(r).mean())))
-        extra_lam.append(joint)
-        extra_rho.append(steady * joint)
-    return np.vstack([lam, extra_lam]), np.vstack([rho, extra_rho])
+    rate, own = fewer_rates(rate[fast], own[fast], 10)
+    return np.vstack([lam, np.repeat(rate[:, None], own.shape[1], axis=1)]), np.vstack([rho, own])
 
 
 def _padded(values, lanes, filler):

@@ -162,7 +162,7 @@ def stack_ladder(layers, materials: dict[str, Material], *, cells: int = 6, wher
         which the widening heat cannot pass. A later layer without a size has room enough.
     materials : dict of Material
     cells : int
-        Cells per layer. Steady resistances do not depend on them. See the notes for what a transient does.
+        Cells per layer. Steady resistances do not depend on them (to 1e-7); what transients do, see the notes.
 
     Returns
     -------

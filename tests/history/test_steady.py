@@ -42,6 +42,18 @@ def test_one_slope_has_a_closed_form(p_25, gain, coolant):
     assert state.loop_gain == pytest.approx(gain if gain > 0.0 else gain * OWN / R, abs=1e-9)
 
 
+# Analytic: 200 W (1 + 0.004 (T - 25)) through 0.3 K/W over 60 degC is 150 degC; the gain is 200 x 0.004 x 0.3.
+def test_two_hundred_watts_that_grow():
+    tables = SimpleNamespace(knot_c=np.array([25.0, 125.0]), corner_means_w=lambda **_: np.tile([200.0, 280.0], (2, 1)))
+    point = HeldPoint(tables, SimpleNamespace(n_chips=6, r_th_k_per_w=lambda: 0.3 * np.eye(6)), **ANY)
+    state = point.settle(60.0)
+    np.testing.assert_allclose(state.t_vj_c, 150.0, rtol=1e-9)
+    assert state.loop_gain == pytest.approx(0.24) and point.runaway_coolant_c(60.0) is None
+    # 4.5 K/W in place of 0.3: gain 3.6, no temperature at all
+    hot = HeldPoint(tables, SimpleNamespace(n_chips=6, r_th_k_per_w=lambda: 4.5 * np.eye(6)), **ANY)
+    assert not hot.settle(60.0).exists and hot.settle(60.0).loop_gain == pytest.approx(3.6)
+
+
 def test_gain_above_one_has_no_steady_state():
     state = held([25.0, 125.0], [50.0, 50.0 + 100.0 * 1.05 / R]).settle(40.0)
     assert not state.exists and np.isnan(state.t_vj_c).all() and state.loop_gain == pytest.approx(1.05)

@@ -6,6 +6,7 @@ Shares nothing with the stage.
 from dataclasses import dataclass
 
 import numpy as np
+from scipy.sparse import block_diag, bmat
 from scipy.sparse.linalg import splu
 from skfem import Basis, BilinearForm, ElementHex2, FacetBasis, LinearForm, MeshHex, asm
 
@@ -95,3 +96,40 @@ def model(x_m, y_m, layers, chips, r_area_m2_k_per_w):
             store.append(asm(_enter, FacetBasis(mesh, element, facets=facets, intorder=4)) / ((x1 - x0) * (y1 - y0)))
     return Model(asm(_store, basis, heat=heat), asm(_conduct, basis, k=k) + asm(_leave, bottom) / r_area_m2_k_per_w,
                  np.array(loads[0]).T, np.array(loads[1]).T)
+
+
+def chips_on_plate(x_m, y_m, chip_layers, plate_layers, chips, r_area_m2_k_per_w, r_sink_k_per_w, c_sink_j_per_k):
+    """Chips with bodies of their own on a plate, on a sink of one temperature; arguments as for :func:`model`, with the chips' layers apart.
+
+    The last unknown is the sink. Nothing is beside the chips.
+    """
+    z, heights = [0.0], []
+    for _, _, thick, count in [*reversed(plate_layers), *reversed(chip_layers)]:
+        z.extend(z[-1] + thick * np.arange(1, count + 1) / count)
+        heights.append(z[-1])
+    mesh = MeshHex.init_tensor(x_m, y_m, np.array(z))
+    middle = mesh.p[:, mesh.t].mean(axis=1)
+    plate_top = sum(p[2] for p in plate_layers)
+    there = middle[2] < plate_top
+    for x0, x1, y0, y1 in chips:
+        there |= (middle[0] > x0) & (middle[0] < x1) & (middle[1] > y0) & (middle[1] < y1)
+    mesh = mesh.restrict(np.flatnonzero(there))
+    middle = mesh.p[:, mesh.t].mean(axis=1)
+    every = [*chip_layers, *plate_layers]
+    number = len(every) - 1 - np.searchsorted(heights, middle[2])
+    element = ElementHex2()
+    basis = Basis(mesh, element, intorder=4)
+    k, heat = (np.array([p[column] for p in every])[number][:, None] * np.ones(basis.dx.shape[1]) for column in (0, 1))
+    bottom = FacetBasis(mesh, element, facets=mesh.facets_satisfying(lambda p: np.abs(p[2]) < 1e-9), intorder=4)
+    out = asm(_enter, bottom) / r_area_m2_k_per_w
+    area = (x_m[-1] - x_m[0]) * (y_m[-1] - y_m[0])
+    conductance = bmat([[asm(_conduct, basis, k=k) + asm(_leave, bottom) / r_area_m2_k_per_w, -out[:, None]],
+                        [-out[None], np.array([[area / r_area_m2_k_per_w + 1.0 / r_sink_k_per_w]])]]).tocsc()
+    capacity = block_diag([asm(_store, basis, heat=heat), np.array([[c_sink_j_per_k]])]).tocsc()
+    loads = [[], []]
+    place = mesh.p[:, mesh.facets].mean(axis=1)
+    for x0, x1, y0, y1 in chips:
+        for store, level in zip(loads, (z[-1], 0.0)):
+            facets = np.flatnonzero((np.abs(place[2] - level) < 1e-9) & (place[0] > x0) & (place[0] < x1) & (place[1] > y0) & (place[1] < y1))
+            store.append(np.append(asm(_enter, FacetBasis(mesh, element, facets=facets, intorder=4)) / ((x1 - x0) * (y1 - y0)), 0.0))
+    return Model(capacity, conductance, np.array(loads[0]).T, np.array(loads[1]).T)

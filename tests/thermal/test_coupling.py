@@ -1,5 +1,8 @@
 """Mutual heating given as curves: against bodies solved as a whole, and what a file may say."""
 
+import textwrap
+import tomllib
+
 import numpy as np
 import pytest
 from hypothesis import given, settings
@@ -156,11 +159,16 @@ def test_the_way_back_with_the_same_numbers_counts_once():
 
 
 def test_file_and_back():
-    import tomllib
-
     module = coupled({**UP, "source": "measured"}, {"heated": "S-a-up", "felt": "S-b-up"})
     assert module_from_dict(tomllib.loads(to_toml(module))) == module
     assert load_module("heron-300").coupling == () and module_mutual(load_module("heron-300")) == {}
+
+
+def test_the_example_of_the_docstring_is_right():
+    from mission.device import coupling
+
+    example = tomllib.loads(textwrap.dedent(coupling.__doc__.split("\n\n", 1)[1]))
+    assert module_from_dict({**straight_line_data(), **example}).coupling[0].felt == "D-up"
 
 
 BROKEN = [
