@@ -235,6 +235,7 @@ class ElectrothermalMarch:
             w[place:place + n_s * k.LANE].reshape(n_s, k.LANE)[:, :n] = rows.T
         own = net.rho_local != 0.0
         self._local(k.CASE_L)[:] = np.where(own, net.rho_case_local / np.where(own, net.rho_local, 1.0), 0.0)
+        self._now[k.H_LOADED] = 0.0  # factors of the steps are those of the network before
         k.junctions(self._lane_tuple, w, n_l, n_s, self._now[k.COOLANT])
         groups = self._groups[1].size
         ripple_nodes = RIPPLE_NODES_JUMPS if self.tables.jumps else k.RIPPLE_NODES
@@ -475,16 +476,27 @@ class ElectrothermalMarch:
 
     def _belong(self, group: int) -> None:
         """Go over to a group of levels, if the present level is none of it, and set its thresholds."""
-        levels = self._levels.groups[group].levels
-        if self.level not in levels:
-            self._change(levels[0])
+        one = self._levels.groups[group]
+        if self.level not in one.levels:
+            self._change(one.levels[self._place(one)])
         self._set_look(group)
 
+    def _place(self, group) -> int:
+        """Which of a group's levels the sink's temperature asks for, without regard to the level before."""
+        if len(group.levels) == 1:
+            return 0
+        surface = self.surface_c() - (self._now[self._k.COOLANT] if group.on_rise else 0.0)
+        return int(np.searchsorted(group.up_c, surface))
+
     def _step_level(self, group: int) -> None:
-        """The sink has passed a threshold: next level up or down."""
+        """The sink has passed a threshold: the level that its temperature asks for, at least the next one up or down."""
         one, k = self._levels.groups[group], self._k
         surface = self.surface_c() - (self._now[k.COOLANT] if one.on_rise else 0.0)
-        place = one.levels.index(self.level) + (1 if surface > self._settings[k.SURFACE_UP] else -1)
+        place = one.levels.index(self.level)
+        if surface > self._settings[k.SURFACE_UP]:
+            place = max(place + 1, int(np.searchsorted(one.up_c, surface)))
+        else:
+            place = min(place - 1, int(np.searchsorted(one.down_c, surface)))
         self._change(one.levels[place])
         self._set_look(group)
 

@@ -203,7 +203,9 @@ def rests_on(result) -> list[str]:
     else:
         out.append("heat: data-sheet branches turned into ladders, so that case and sink take the heat that leaves the chips, not the heat that enters")
     out.append(f"heat: one sink temperature for all chips; {net.n_full} modes reduced to {net.lam_local_per_s.shape[0]} local ones a chip and "
-               f"{net.lam_shared_per_s.size} shared, error of a junction at most {net.relative_bound:.2%} of its rise")
+               f"{net.lam_shared_per_s.size} shared, error of a junction at most {net.relative_bound:.2%} of its rise"
+               + (f"; march.network_tolerance asks for {study.spec.march.network_tolerance:.2%}, for which the march has no room"
+                  if net.relative_bound > study.spec.march.network_tolerance else ""))
     if net.case_coolant_bound > 0.02 and any(m.acts_on == "case" for m in study.modes):
         out.append(f"heat: with a sink that stores no heat, case points follow a coolant step with an error of up to {net.case_coolant_bound:.0%} of the step; "
                    "give the sink's heat capacity if the coolant jumps")

@@ -9,8 +9,9 @@ from ..errors import InputError
 from .assembly import FullNetwork, NetworkBuilder
 from .cooling import sink_path
 from .coupling import module_mutual, with_mutual
+from .downstream import with_coolant_rise
 from .layers import StackLadder, stack_ladder
-from .modes import ReducedNetwork, reduce_coupled, reduce_to_modes
+from .modes import MOST_SHARED, ReducedNetwork, reduce_coupled, reduce_to_modes
 from .networks import CauerLadder, FosterNetwork, cauer_to_foster, foster_to_cauer, merge_close_branches
 from .plates import plated_network
 
@@ -36,12 +37,30 @@ def inverter_modes(module: PowerModule, cooling, *, materials=None, relative_tol
     relative_tolerance : float
         Of the reduction, see :func:`reduce_to_modes`, or :func:`reduce_coupled` for chips on a plate.
     """
-    if not sink_path(cooling).chip_losses:
-        reduce = reduce_to_modes if module.plate is None else reduce_coupled
-        network = reduce(inverter_network(module, cooling, materials=materials), relative_tolerance=relative_tolerance)
+    return full_and_reduced(module, cooling, materials=materials, relative_tolerance=relative_tolerance)[1]
+
+
+def full_and_reduced(module: PowerModule, cooling, *, materials=None, relative_tolerance: float = 1e-3,
+                     like: ReducedNetwork | None = None) -> tuple[FullNetwork | None, ReducedNetwork]:
+    """The full network beside what :func:`inverter_modes` makes of it; ``like``: reduced modes of a network that differs little.
+
+    There is no full network where the sink is driven by the chips' losses at once.
+    """
+    path = sink_path(cooling)
+    if path.chip_losses:
+        full, network = None, _lumped_modes(module, cooling)
     else:
-        network = _lumped_modes(module, cooling)
-    return with_mutual(network, module_mutual(module, materials=materials))
+        full = inverter_network(module, cooling, materials=materials)
+        if module.plate is None:
+            network = reduce_to_modes(full, relative_tolerance=relative_tolerance, like=like)
+        else:
+            # a row of modules adds shared modes of its own
+            room = MOST_SHARED - (30 if path.coolant_rise_k_per_w > 0.0 else 0)
+            network = reduce_coupled(full, relative_tolerance=relative_tolerance, most_shared=room, like=like)
+    network = with_mutual(network, module_mutual(module, materials=materials))
+    if path.coolant_rise_k_per_w > 0.0:
+        network = with_coolant_rise(network, full, path.coolant_rise_k_per_w, path.first_to_last, relative_tolerance=relative_tolerance)
+    return full, network
 
 
 #: Stands for "at once" where a resistance without capacity meets the losses directly.

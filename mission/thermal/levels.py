@@ -19,7 +19,9 @@ from .coupling import without_mutual
 from .modes import ReducedNetwork
 
 #: Lengths of heating that the surface is fitted to, and times after a change at which the new state must be right.
-_HISTORIES, _AFTER = 36, 48
+_HISTORIES, _AFTER = 36, 72
+#: Mixtures of histories that reach the outputs by less than this share of the strongest are held small.
+_RIDGE = 1e-5
 #: Slowest modes whose memory of a mission's start is followed through its changes.
 SLOW_MODES = 12
 
@@ -34,8 +36,8 @@ class Move(NamedTuple):
     rest : ndarray, shape (r_new, r_old)
         Reduced modes, for what the field does not hold. Local modes (scaled with their output weight; mode by mode, chips within), then shared.
     error : float
-        Largest difference that the new reduced state makes to a junction afterwards, over its rise before, for chips heated one
-        by one or all together for any length of time.
+        Largest difference that the new reduced state makes to a junction afterwards, over the steady rise of the hottest, for chips heated one
+        by one or all together for any length of time before.
     """
 
     turn: np.ndarray
@@ -183,38 +185,46 @@ class _Level:
     @cached_property
     def after(self) -> np.ndarray:
         """Times at which a move must be right [s]; the first is the moment itself."""
-        quick = max(1e-3 * self.slowest_s / self.lam.size, 0.05 / self.lam[-1])
+        # from before anything fades, lest a fast mode hide what a slower one does
+        quick = 0.1 / max(self.plain.lam_local_per_s.max(), self.plain.lam_shared_per_s.max(initial=0.0))
         return np.concatenate([[0.0], np.geomspace(quick, 8.0 * self.slowest_s, _AFTER - 1)])
 
     @cached_property
-    def seen(self):
-        """The state as what it does afterwards.
+    def lengths(self) -> np.ndarray:
+        """Times of heating that stand for all histories [s]."""
+        return np.concatenate([np.geomspace(0.1 * self.after[1], 12.0 * self.slowest_s, _HISTORIES - 1), [60.0 * self.slowest_s]])
 
-        Returns an orthonormal basis of courses (rows, k), the state's coordinates in it (k, r), the state of given coordinates (r, k), and the
-        weights of the rows. Directions of the state that do nothing to speak of are left out.
+    @cached_property
+    def natural(self):
+        """How a state is found for a course of the outputs (rows): the state (r, rows) in that course's place, and the weight of the rows.
+
+        Many states do the same to the outputs. The one taken is a mixture of those that heating leads to, as small a mixture as will do:
+        local and shared modes that fight each other would fade apart between the steps of the march.
         """
         weight = np.full(self.after.size, 1.0)
         weight[0] = 10.0  # no jump in the moment itself
         weight = np.tile(np.repeat(weight, self.reduced.n_chips), 2)[:, None]
-        course, size, turn = np.linalg.svd(self.outputs(self.after)[0] * weight, full_matrices=False)
-        keep = size > 1e-6 * size[0]
-        return course[:, keep], size[keep, None] * turn[keep], turn[keep].T / size[keep], weight
+        base, course = np.linalg.qr(self.outputs(self.after)[0] * weight)
+        _, states = self.histories(self.lengths)
+        left, size, right = np.linalg.svd(course @ states, full_matrices=False)
+        back = states @ (right.T * (size / (size**2 + (_RIDGE * size[0]) ** 2))) @ left.T
+        return back @ base.T, weight
 
     @cached_property
     def reader(self) -> np.ndarray:
         """Reduced state (r, modes) that goes on as a field would; mutual branches, which a field does not know, stay at rest."""
-        course, _, back, weight = self.seen
-        return np.pad(back @ (course.T @ (self.outputs(self.after)[1] * weight)), ((0, self.reduced.n_mutual), (0, 0)))
+        find, weight = self.natural
+        return np.pad(find @ (self.outputs(self.after)[1] * weight), ((0, self.reduced.n_mutual), (0, 0)))
 
     @cached_property
     def surface(self) -> np.ndarray:
         """Sink surfaces in reduced modes, (m, r)."""
-        lengths = np.concatenate([np.geomspace(0.01 / self.lam[-1], 12.0 * self.slowest_s, _HISTORIES - 1), [60.0 * self.slowest_s]])
-        fields, states = self.histories(lengths)
+        fields, states = self.histories(self.lengths)
         want = self.full.out_surface @ (self.vectors / np.sqrt(self.full.c_j_per_k)[:, None]) @ fields
-        see = self.seen[1]
-        left, size, right = np.linalg.svd(see @ states, full_matrices=False)
-        return np.pad((want @ right.T * (size / (size**2 + (1e-5 * size[0]) ** 2))) @ left.T @ see, ((0, 0), (0, self.reduced.n_mutual)))
+        scale = np.abs(states).max(axis=1, keepdims=True)
+        left, size, right = np.linalg.svd(states / scale, full_matrices=False)
+        found = (want @ right.T * (size / (size**2 + (1e-5 * size[0]) ** 2))) @ left.T / scale.T
+        return np.pad(found, ((0, 0), (0, self.reduced.n_mutual)))
 
 
 def _move(old: _Level, new: _Level) -> Move:
@@ -222,15 +232,14 @@ def _move(old: _Level, new: _Level) -> Move:
         raise InputError("cooling levels", "masses that differ from level to level", "the same heat capacities at every level",
                          "give every level the heat capacity of the same sink")
     turn = new.vectors.T @ old.vectors
-    course, _, back, weight = new.seen
+    find, weight = new.natural
     n = old.reduced.n_mutual
-    rest = np.pad(back @ (course.T @ (old.outputs(new.after)[0] * weight)), ((0, n), (0, n)))
+    rest = np.pad(find @ (old.outputs(new.after)[0] * weight), ((0, n), (0, n)))
     rest[rest.shape[0] - n:, rest.shape[1] - n:] = np.eye(n)
-    lengths = np.concatenate([np.geomspace(0.01 / old.lam[-1], 12.0 * old.slowest_s, 24), [60.0 * old.slowest_s]])
-    fields, _ = old.histories(lengths)
+    fields, _ = old.histories(np.sqrt(old.lengths[1:] * old.lengths[:-1]))
     # between the times that the state was fitted to
     after = np.concatenate([[0.0], np.sqrt(new.after[1:-1] * new.after[2:])])
     reduced, full = new.outputs(after)
     junctions = slice(0, after.size * new.reduced.n_chips)
     miss = (reduced[junctions] @ new.reader[:reduced.shape[1]] - full[junctions]) @ (turn @ fields)
-    return Move(turn, rest, float(np.abs(miss / np.maximum((old.junction @ fields).max(axis=0), 1e-12)).max()))
+    return Move(turn, rest, float(np.abs(miss).max()))

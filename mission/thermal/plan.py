@@ -16,7 +16,7 @@ from pydantic import Field
 
 from ..device import PowerModule
 from ..errors import InputError, RangeError
-from .build import inverter_modes, inverter_network
+from .build import full_and_reduced, inverter_modes
 from .cooling import FixedCooling, FosterCooling, SinkPath, sink_ladder, with_resistance
 from .levels import CoolingLevels, LevelGroup
 from .networks import CauerLadder
@@ -29,7 +29,7 @@ COMPUTED = (TableSink, FanSink, NaturalSink, LiquidPlate)
 #: A quantity that changes smoothly is followed in steps that change the resistance by this share.
 STEP = 0.02
 #: Rises over which still air is followed [K], and how much of a rise lies between the step up and the step down.
-_STILL_K, _STILL_GAP = (0.5, 250.0), 0.05
+_STILL_K, _STILL_GAP = (2.0, 250.0), 0.05
 
 
 class Setting(NamedTuple):
@@ -167,10 +167,12 @@ class CoolingPlan:
 
     def networks(self) -> CoolingLevels:
         """The networks that the march goes through."""
+        known = None
+
         def build(k):
-            path = self.state(k).path
-            return (inverter_network(self.module, path, materials=self._materials),
-                    inverter_modes(self.module, path, materials=self._materials, relative_tolerance=self._tolerance))
+            nonlocal known
+            full, known = full_and_reduced(self.module, self.state(k).path, materials=self._materials, relative_tolerance=self._tolerance, like=known)
+            return full, known
 
         if len(self.levels) == 1:
             return CoolingLevels.fixed(inverter_modes(self.module, self.state(0).path, materials=self._materials, relative_tolerance=self._tolerance))

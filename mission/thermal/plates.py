@@ -21,6 +21,8 @@ from .networks import CauerLadder
 
 #: Shortest time at which the plate must be right [s]: the chip's layers let nothing through to it sooner.
 FASTEST_S = 1e-4
+#: Factors on the paste for which the modes of the plate are right to 1 % of a chip's rise over the sink.
+PASTE_LOW, PASTE_HIGH = 0.5, 2.5
 
 
 class PlateBody(NamedTuple):
@@ -51,7 +53,7 @@ def plate_body(plate: FourierNetwork, c_face_j_per_k, *, paste: float = 1.0) -> 
     c_face_j_per_k : array_like, shape (n,)
         Heat capacity that sits on every face, such as the last half cell of the chip's ladder.
     paste : float
-        Factor on the resistance under the plate. Nodes are the same for every factor, so that temperatures can be carried over.
+        Factor on the resistance under the plate, 0.5 to 2.5. Nodes are the same for every factor, so that temperatures can be carried over.
 
     Notes
     -----
@@ -59,6 +61,9 @@ def plate_body(plate: FourierNetwork, c_face_j_per_k, *, paste: float = 1.0) -> 
     the state. A reflection then turns the state of even temperature into one with equal parts, after which every node has the same
     share of the capacity and all is an ordinary network: rows of weights add up to 1, heat is the sum of c T.
     """
+    if not PASTE_LOW <= paste <= PASTE_HIGH:
+        raise RangeError("grease", f"{paste:.3g} times the case-to-sink resistance under a plate", f"{PASTE_LOW:g} to {PASTE_HIGH:g} times",
+                         "enter the resistance of the aged grease as case_to_sink.r_th_k_per_w")
     _, face, below, even = plate.modes()
     m = even.size
     mass, turn = np.linalg.eigh(np.eye(m) + face.T @ (np.asarray(c_face_j_per_k, float)[:, None] * face))

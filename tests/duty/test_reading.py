@@ -166,6 +166,7 @@ EXACT = {  # (quantity, unit): (a number there, the same in our unit); exact by 
     ("frequency", "Hz"): (50, Fraction(50)), ("frequency", "kHz"): (0.05, Fraction(50)),
     ("displacement", "deg"): (30, math.pi / 6), ("displacement", "rad"): (-0.5, Fraction(-1, 2)),
     ("coolant", "degC"): (65, Fraction(65)), ("coolant", "K"): (338.15, 338.15 - constants.zero_Celsius),
+    ("flow", "l/min"): (12, Fraction(12, 60000)), ("flow", "m3/h"): (36, Fraction(1, 100)), ("flow", "l/s"): (2, Fraction(2, 1000)), ("flow", "m3/s"): (0.5, Fraction(1, 2)),
     ("dc_voltage", "V"): (600, Fraction(600)), ("dc_voltage", "kV"): (0.6, Fraction(600)),
 }
 

@@ -23,6 +23,11 @@ def _conduct(u, v, w):
 
 
 @BilinearForm
+def _conduct_along(u, v, w):
+    return w["side"] * (u.grad[0] * v.grad[0] + u.grad[1] * v.grad[1]) + w["k"] * u.grad[2] * v.grad[2]
+
+
+@BilinearForm
 def _store(u, v, w):
     return w["heat"] * u * v
 
@@ -98,10 +103,10 @@ def model(x_m, y_m, layers, chips, r_area_m2_k_per_w):
                  np.array(loads[0]).T, np.array(loads[1]).T)
 
 
-def chips_on_plate(x_m, y_m, chip_layers, plate_layers, chips, r_area_m2_k_per_w, r_sink_k_per_w, c_sink_j_per_k):
+def chips_on_plate(x_m, y_m, chip_layers, plate_layers, chips, r_area_m2_k_per_w, r_sink_k_per_w, c_sink_j_per_k, sideways=1.0):
     """Chips with bodies of their own on a plate, on a sink of one temperature; arguments as for :func:`model`, with the chips' layers apart.
 
-    The last unknown is the sink. Nothing is beside the chips.
+    ``sideways``: factor on the chips' conductivity along the plate. The last unknown is the sink. Nothing is beside the chips.
     """
     z, heights = [0.0], []
     for _, _, thick, count in [*reversed(plate_layers), *reversed(chip_layers)]:
@@ -120,10 +125,11 @@ def chips_on_plate(x_m, y_m, chip_layers, plate_layers, chips, r_area_m2_k_per_w
     element = ElementHex2()
     basis = Basis(mesh, element, intorder=4)
     k, heat = (np.array([p[column] for p in every])[number][:, None] * np.ones(basis.dx.shape[1]) for column in (0, 1))
+    side = np.where(middle[2] > plate_top, sideways, 1.0)[:, None] * k
     bottom = FacetBasis(mesh, element, facets=mesh.facets_satisfying(lambda p: np.abs(p[2]) < 1e-9), intorder=4)
     out = asm(_enter, bottom) / r_area_m2_k_per_w
     area = (x_m[-1] - x_m[0]) * (y_m[-1] - y_m[0])
-    conductance = bmat([[asm(_conduct, basis, k=k) + asm(_leave, bottom) / r_area_m2_k_per_w, -out[:, None]],
+    conductance = bmat([[asm(_conduct_along, basis, k=k, side=side) + asm(_leave, bottom) / r_area_m2_k_per_w, -out[:, None]],
                         [-out[None], np.array([[area / r_area_m2_k_per_w + 1.0 / r_sink_k_per_w]])]]).tocsc()
     capacity = block_diag([asm(_store, basis, heat=heat), np.array([[c_sink_j_per_k]])]).tocsc()
     loads = [[], []]
