@@ -108,6 +108,38 @@ class NetworkEntry(_Part):
     r_th_k_per_w: list[list[float]] = Field(description="steady self and mutual resistances, junction over coolant")
 
 
+class LevelEntry(_Part):
+    """One level of the cooling that held."""
+
+    setting: str
+    r_th_k_per_w: float = Field(description="sink surface to coolant at the inlet, for all the heat")
+    grease_factor: float = Field(description="on the module's case-to-sink resistances")
+    time_s: float
+    coolant_c: float | None = Field(description="coolant at the inlet that it was reckoned for [degC]; null: given, not reckoned")
+    flow_m3_per_s: float | None
+    pressure_drop_pa: float | None
+    regime: str | None = Field(description="kind of flow in the channels")
+
+
+class ChangeEntry(_Part):
+    """A change of the cooling."""
+
+    time_s: float
+    setting: str
+
+
+class CoolingEntry(_Part):
+    """The cooling as it was marched."""
+
+    kind: str
+    levels: list[LevelEntry] = Field(description="levels that held, longest first")
+    changes: int
+    first_changes: list[ChangeEntry] = Field(description="at most twenty")
+    change_error: float = Field(description="largest error that a change put into a junction, over the steady rise of its heat")
+    flags: list[str] = Field(description="use of correlations outside their range, in the transition band, and the like")
+    sources: list[str]
+
+
 class PhaseEntry(_Part):
     """One phase of the duty."""
 
@@ -159,6 +191,7 @@ class ResultDocument(_Part):
     ledger: list[LedgerEntry]
     models: list[ModelEntry]
     network: NetworkEntry
+    cooling: CoolingEntry
     gate_power_per_switch_w: float
     gate_peak_current_a: float
     thermal_stability: StabilityEntry
@@ -202,10 +235,7 @@ def rests_on(result) -> list[str]:
         out.append("heat: layers under each chip with spreading at fixed angles (a shortcut of the trade); the sink takes the heat that leaves them")
     else:
         out.append("heat: data-sheet branches turned into ladders, so that case and sink take the heat that leaves the chips, not the heat that enters")
-    out.append(f"heat: one sink temperature for all chips; {net.n_full} modes reduced to {net.lam_local_per_s.shape[0]} local ones a chip and "
-               f"{net.lam_shared_per_s.size} shared, error of a junction at most {net.relative_bound:.2%} of its rise"
-               + (f"; march.network_tolerance asks for {study.spec.march.network_tolerance:.2%}, for which the march has no room"
-                  if net.relative_bound > study.spec.march.network_tolerance else ""))
+    out.extend(_how_heat(result))
     if net.case_coolant_bound > 0.02 and any(m.acts_on == "case" for m in study.modes):
         out.append(f"heat: with a sink that stores no heat, case points follow a coolant step with an error of up to {net.case_coolant_bound:.0%} of the step; "
                    "give the sink's heat capacity if the coolant jumps")
@@ -292,12 +322,54 @@ def build_document(result) -> ResultDocument:
             relative_bound=net.relative_bound, error_bound_k=float(net.error_bound_k(peak_loss).max()), coolant_bound=net.coolant_bound,
             case_bound=net.case_bound, case_coolant_bound=net.case_coolant_bound,
             r_th_k_per_w=net.r_th_k_per_w().tolist()),
-        gate_power_per_switch_w=gate_w, gate_peak_current_a=gate_a,
+        cooling=_cooling(result), gate_power_per_switch_w=gate_w, gate_peak_current_a=gate_a,
         thermal_stability=StabilityEntry(loop_gain=steady.loop_gain, settles_at_c=steady.settles_at_c, runaway_coolant_c=steady.runaway_coolant_c,
                                          coolant_c=steady.coolant_c, words=steady.words),
         rests_on=rests_on(result), cautions=list(CAUTIONS),
         inputs=study.spec.model_dump(mode="json", exclude_none=True), versions=_versions(),
     )
+
+
+def _cooling(result) -> CoolingEntry:
+    record = result.cooling
+    levels = []
+    for one in record.used:
+        s, p = one.state, one.state.point
+        levels.append(LevelEntry(
+            setting=s.words, r_th_k_per_w=s.r_th_k_per_w, grease_factor=s.path.paste, time_s=one.time_s, coolant_c=None if p is None else p.inlet_c,
+            flow_m3_per_s=None if p is None else p.flow_m3_per_s, pressure_drop_pa=None if p is None else p.pressure_drop_pa, regime=None if p is None else p.regime))
+    changes = [ChangeEntry(time_s=t, setting=record.plan.state(k).words) for t, k in record.changes[:20]]
+    return CoolingEntry(kind=record.plan.spec.kind, levels=levels, changes=record.n_changes, first_changes=changes, change_error=record.move_error,
+                        flags=list(record.flags), sources=list(record.sources))
+
+
+def _how_heat(result):
+    """What sink and cooling rest on, in sentences."""
+    spec, record, net, asked = result.study.spec.cooling, result.cooling, result.network, result.study.spec.march.network_tolerance
+    if record.used[0].state.path.coolant_rise_k_per_w > 0.0:
+        yield ("heat: a sink of its own under each module, the coolant reaching them in the order " + ", ".join(spec.legs_along_flow)
+               + "; heat conducted along the plate from one to the other is left out")
+    else:
+        yield "heat: one sink temperature for all chips"
+    yield (f"heat: {net.n_full} modes reduced to {net.lam_local_per_s.shape[0]} local ones a chip and {net.lam_shared_per_s.size} shared, "
+           f"error of a junction at most {net.relative_bound:.2%} of its rise" + ("" if net.relative_bound <= asked else f"; {asked:.2%} was asked for (march.network_tolerance)"))
+    if record.n_changes:
+        yield (f"cooling: {record.n_changes} changes between {len(record.used)} levels; a change leaves every mass at its temperature, and junctions right to "
+               f"{record.move_error:.2%} of their steady rise")
+    if any(len(g.levels) > 1 for g in record.plan.groups):
+        yield "cooling: the sink's surface is looked at once a second; what changes smoothly is followed in steps of 2 % of the resistance"
+    if spec.fault:
+        yield "cooling: the fault happens in every mission; its life stands for missions with it"
+    if spec.grease is not None:
+        factors = [one.state.path.paste for one in record.used]
+        span = f"{min(factors):.3g}" + (f" to {max(factors):.3g}" if max(factors) > min(factors) else "")
+        yield f"cooling: case-to-sink resistances times {span} for the age of the grease, a course that the study states"
+    if record.plan.computed and spec.heat_w is None and spec.kind not in ("flow-table", "plate-fin-natural"):
+        yield "cooling: fluid properties at the inlet temperature, as no heat_w is given; the coolant's own rise is in the resistance"
+    for text in record.flags:
+        yield f"cooling, to be mistrusted: {text}"
+    for text in record.sources:
+        yield f"cooling: {text}"
 
 
 def _versions() -> dict[str, str]:

@@ -59,9 +59,21 @@ def result_text(result) -> str:
                      + (f"{phase} ({share:.0%})" if phase else "-"))
     if not study.modes:
         lines.append("  no failure mode given: temperatures only")
-    lines += ["", "  to know:"] + [f"  - {w}" for w in (stability(result).words, *result.ledger.warnings())]
+    lines += ["", *_cooling_lines(result)]
+    lines += ["", "  to know:"] + [f"  - {w}" for w in (stability(result).words, *result.ledger.warnings(), *(f"cooling: {f}" for f in result.cooling.flags))]
     lines += ["", "  An estimate; verify on the real device. High voltage, stored energy and hot surfaces: see the cautions in the report."]
     return "\n".join(lines)
+
+
+def _cooling_lines(result):
+    """Levels of the cooling that held, the longest four."""
+    record = result.cooling
+    for one in record.used[:4]:
+        p = one.state.point
+        more = "" if p is None or p.regime is None else f", {p.regime} flow"
+        yield f"  cooling  {one.state.words}: {1000.0 * one.state.r_th_k_per_w:.4g} K/kW from surface to coolant{more}, for {_span(one.time_s)}"
+    if len(record.used) > 4:
+        yield f"           and {len(record.used) - 4} more levels; {record.n_changes} changes in all"
 
 
 def check_text(study) -> str:

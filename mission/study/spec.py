@@ -17,7 +17,7 @@ from ..errors import InputError, RangeError, near_match
 from ..lifetime import FailureMode, resolve_modes
 from ..losses import MOD_INDEX_SIX_STEP, Modulation
 from ..machine import MachineSpec
-from ..thermal import CoolingPlan, CoolingSpec, load_materials
+from ..thermal import CoolingPlan, CoolingSpec, load_materials, materials_at
 from ..tomlfile import FileModel, parse_model, read_model, read_toml
 
 #: A study finds shipped modules by name whatever the current folder holds.
@@ -26,11 +26,13 @@ _Positive = Annotated[float, Field(gt=0)]
 
 
 class ModuleRef(FileModel):
-    """Which module: a shipped one by name, or a file of the user's; ``materials``: a file of further layer materials."""
+    """Which module: a shipped one by name, or a file of the user's; ``materials``: a file of further layer materials;
+    ``conductivity_at_c``: temperature at which materials with a law over temperature have their conductivity (one value, held)."""
 
     name: str | None = None
     file: str | None = None
     materials: str | None = None
+    conductivity_at_c: Annotated[float, Field(ge=-60, le=250)] | None = None
 
     @model_validator(mode="after")
     def _one(self):
@@ -207,8 +209,13 @@ class Study:
 
     def materials(self) -> dict:
         """Materials for layer stacks: the shipped ones, and the study's own over them."""
-        own = self.spec.module.materials
-        return load_materials(None if own is None else self.folder / own)
+        own, at_c = self.spec.module.materials, self.spec.module.conductivity_at_c
+        materials = load_materials(None if own is None else self.folder / own)
+        if at_c is None:
+            return materials
+        used = {layer.material for pair in self.module.chip_pairs() for layer in pair.thermal.layer}
+        used |= {layer.material for layer in self.module.plate.layer} if self.module.plate is not None else set()
+        return {**materials, **materials_at({n: m for n, m in materials.items() if n in used}, at_c)}
 
     def coolant_range_c(self) -> tuple[float, float]:
         """Lowest and highest coolant temperature of the duty [degC]."""
@@ -292,6 +299,9 @@ def _assemble(spec: StudySpec, source: str, folder: Path, profile=None) -> Study
             raise InputError(f"{source}, {err.where}", err.found, err.allowed, err.advice) from None
     study = Study(spec, module, profile, (), source, folder)
     _check_together(study)
+    if spec.module.conductivity_at_c is not None and not any(pair.thermal.layer for pair in module.chip_pairs()):
+        raise InputError(f"{source}, field module.conductivity_at_c", f"{spec.module.conductivity_at_c:g} degC, and no layers in {module.name}",
+                         "a module given by layers", "data-sheet branches hold the conductivities they were measured with: take the field out")
     if spec.module.materials is not None:
         load_materials(folder / spec.module.materials)
     modes = resolve_modes(spec.lifetime.failure_mode, module, folder=folder, where=source)

@@ -11,6 +11,7 @@ chips is kept as few shared directions, what remains on the diagonal goes to
 the local modes of each chip. Steady resistances stay exact on the diagonal.
 The error is stated as a bound: |dT_i| <= sum_j L1(h_ij - h'_ij) max p_j, with the
 norm of the impulse-response difference integrated over a fine time grid.
+Chips on a common plate need another way to the same two parts, :func:`reduce_coupled`.
 """
 
 from __future__ import annotations
@@ -65,7 +66,7 @@ class ReducedNetwork:
         How many of the last shared modes are mutual branches given as such (:func:`mission.thermal.with_mutual`), not part of the network below; the
         warming of the coolant by modules in a row counts with them.
     grouping : tuple or None
-        How the modes were grouped, for :func:`reduce_to_modes` on a like network.
+        How the modes were grouped, for the same reduction of a like network.
     """
 
     lam_local_per_s: np.ndarray
@@ -222,7 +223,7 @@ def _misses(net):
 class _Coupled:
     """Exact responses of a network on a grid of times, and reductions of it; n chips, K modes, t times."""
 
-    #: Coolant steps that the shared modes hold beside the steady field: even temperature and smoothings of it.
+    #: Fields that the shared modes hold in any case: the even temperature, and this many that are left of it when the coolant changed.
     _SMOOTHINGS = 4
 
     def __init__(self, full):
@@ -271,8 +272,9 @@ class _Coupled:
         rest = gap[:, np.arange(2 * n), np.tile(own, 2)]
         rest_steady = self.steady[np.arange(2 * n), np.tile(own, 2)] - steady_own
         at_coolant = np.abs(self.cooling - decay @ (left * g).T).max(axis=0)
+        slowest = max(min(0.1 / start, 1.0 / _SHARED_FROM_S), 0.5 * lam[0])
         for most in (MOST_LOCAL // 2, 3 * MOST_LOCAL // 4, MOST_LOCAL):
-            fast = np.geomspace(min(0.1 / start, 1.0 / _SHARED_FROM_S), max(0.3 * lam[-1], 1.0 / start), most)
+            fast = np.geomspace(slowest, max(0.3 * lam[-1], 10.0 * slowest), most)
             rho = np.array([_fit(time, fast, rest[:, i], rest_steady[i])[0] for i in range(2 * n)])
             error = gap[:, :n].copy()
             error[:, own, own] -= np.exp(-np.outer(time, fast)) @ rho[:n].T

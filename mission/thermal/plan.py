@@ -128,6 +128,11 @@ class CoolingPlan:
             raise InputError("cooling.heat_capacity_j_per_k", "a sink without heat capacity, whose stages follow its temperature", "the heat capacity of the sink",
                              "without it the surface would jump with every stage")
 
+    @property
+    def computed(self) -> bool:
+        """Whether the resistance is reckoned, not given."""
+        return isinstance(self.spec, COMPUTED)
+
     # what a row says ------------------------------------------------------------------------------------------------------------
 
     def groups_of(self, time_s, coolant_c, flow_m3_per_s=None) -> np.ndarray:

@@ -14,7 +14,7 @@ import numpy as np
 from ..device import PowerModule, chip_faces
 from ..errors import InputError, RangeError
 from .assembly import FullNetwork, NetworkBuilder, Spot
-from .cooling import SinkPath, sink_path
+from .cooling import sink_path
 from .fourier import FourierNetwork, FourierStack, Source, plate_layers
 from .layers import StackLadder, load_materials
 from .networks import CauerLadder
@@ -86,7 +86,8 @@ def plate_stack(module: PowerModule, cooling=None, *, materials=None, leg: int =
     module : PowerModule
         With a section ``[plate]``.
     cooling : FixedCooling, FosterCooling or SinkPath, optional
-        What lies below; without it the stack ends at the sink's surface.
+        What lies below. Without it the stack ends at the sink's surface, which has one temperature as in :func:`mission.thermal.inverter_network`: give
+        that to the maps as the coolant's.
     materials : dict of Material, optional
         Default: the shipped ones.
     leg : int
@@ -95,8 +96,9 @@ def plate_stack(module: PowerModule, cooling=None, *, materials=None, leg: int =
     Returns
     -------
     FourierStack
-        Sources are named and ordered as :func:`mission.device.plate_chip_names`. Paste and sink are one even area resistance, so the sink's surface
-        has one temperature only on average. A sink that three modules share counts threefold: each is taken to give off the same heat.
+        Sources are named and ordered as :func:`mission.device.plate_chip_names`. With ``cooling`` paste and sink are one even area resistance: the sink
+        carries no heat sideways, so loaded chips come out warmer than on a surface of one temperature. A sink that three modules share counts threefold:
+        each is taken to give off the same heat.
 
     Examples
     --------
@@ -107,16 +109,17 @@ def plate_stack(module: PowerModule, cooling=None, *, materials=None, leg: int =
     """
     if module.plate is None:
         raise InputError("module", f"{module.name}, which has no section plate", "a module with chips on a plate")
+    if not 0 <= leg < 3:
+        raise RangeError("leg", f"{leg}", "0, 1 or 2")
     plate = module.plate
     materials = load_materials() if materials is None else materials
-    path = SinkPath(()) if cooling is None else sink_path(cooling)
-    r_below = path.paste * module.case_to_sink.r_th_k_per_w
-    if path.ladders:
-        if not 0 <= leg < 3:
-            raise RangeError("leg", f"{leg}", "0, 1 or 2")
-        sink = path.ladders[leg if len(path.ladders) > 1 else 0]
-        shared = 1 if len(path.ladders) > 1 or module.arrangement == "six-pack" else 3
-        r_below += shared * (float(sink.r_k_per_w.sum()) if isinstance(sink, CauerLadder) else sink)
+    r_below = module.case_to_sink.r_th_k_per_w
+    if cooling is not None:
+        path = sink_path(cooling)
+        each = len(path.ladders) > 1
+        sink = path.ladders[leg if each else 0]
+        shared = 1 if each or module.arrangement == "six-pack" else 3
+        r_below = path.paste * r_below + shared * (float(sink.r_k_per_w.sum()) if isinstance(sink, CauerLadder) else sink)
     sources = tuple(Source(f.x_mm, f.y_mm, f.width_mm, f.length_mm, f.name) for f in chip_faces(module))
     return FourierStack(plate.width_mm, plate.length_mm, plate_layers(plate.layer, materials, where="plate.layer"), sources,
                         r_below * plate.width_mm * plate.length_mm)
