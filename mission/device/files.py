@@ -21,7 +21,7 @@ def shipped_modules() -> tuple[str, ...]:
     Examples
     --------
     >>> shipped_modules()  # doctest: +ELLIPSIS
-    ('curlew-300', ..., 'heron-300', ...)
+    ('avocet-300', ..., 'heron-300', ...)
     """
     return tuple(sorted(p.stem for p in _SHIPPED.glob("*.toml")))
 

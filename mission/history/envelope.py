@@ -21,6 +21,8 @@ class JunctionHistory:
         Extremes of junction and case points, mean losses.
     coolant_c : ndarray, shape (b,)
         Mean coolant temperature.
+    r_sink_k_per_w : ndarray, shape (b,)
+        Mean resistance from sink surface to coolant; NaN where nobody gave one.
     phase_id : ndarray, shape (b,)
         Phase that holds most of the bucket.
     peak_c, peak_time_s, peak_phase_id, lowest_c, case_peak_c, energy_j : ndarray, shape (n,)
@@ -43,6 +45,7 @@ class JunctionHistory:
     case_max_c: np.ndarray
     loss_w: np.ndarray
     coolant_c: np.ndarray
+    r_sink_k_per_w: np.ndarray
     phase_id: np.ndarray
     peak_c: np.ndarray
     peak_time_s: np.ndarray
@@ -60,11 +63,11 @@ class JunctionHistory:
         return int(np.argmax(self.peak_c))
 
     def to_frame(self):
-        """One row per bucket: times, phase, coolant, and per chip minimum, maximum, case extremes and mean loss."""
+        """One row per bucket: times, phase, coolant, resistance of the sink, and per chip minimum, maximum, case extremes and mean loss."""
         import pandas as pd
 
         columns = {"start_s": self.edge_s[:-1], "end_s": self.edge_s[1:],
-                   "phase": np.array(self.phases, dtype=object)[self.phase_id], "coolant_c": self.coolant_c}
+                   "phase": np.array(self.phases, dtype=object)[self.phase_id], "coolant_c": self.coolant_c, "sink_k_per_w": self.r_sink_k_per_w}
         for i, chip in enumerate(self.chips):
             columns[f"{chip} t_vj_min_c"] = self.t_min_c[:, i]
             columns[f"{chip} t_vj_max_c"] = self.t_max_c[:, i]
@@ -86,14 +89,15 @@ class EnvelopeBuilder:
         self._width = self.duration_s / b
         self._temps = np.empty((4, b, n))
         self._temps[::2], self._temps[1::2] = np.inf, -np.inf
-        self._loss, self._coolant = np.zeros((b, n)), np.zeros(b)
+        self._loss, self._coolant, self._sink = np.zeros((b, n)), np.zeros(b), np.zeros(b)
         self._phase_time = np.zeros((b, len(self.phases)))
         self.peak_c, self.peak_time_s, self.peak_phase_id = np.full(n, -np.inf), np.zeros(n), np.zeros(n, np.int64)
         self.lowest_c, self.case_peak_c = np.full(n, np.inf), np.full(n, -np.inf)
         self.energy_j, self.beyond_data_s = np.zeros(n), np.zeros(n)
 
-    def add(self, rows: RowEnvelope) -> None:
-        """Take the rows of one block."""
+    def add(self, rows: RowEnvelope, r_sink_k_per_w=np.nan) -> None:
+        """Take the rows of one block; ``r_sink_k_per_w``: resistance of the sink in each of them, (rows,) [K/W]."""
+        self._r_rows = np.broadcast_to(np.asarray(r_sink_k_per_w, float), rows.start_s.shape)
         span = rows.end_s - rows.start_s
         best = np.argmax(rows.t_max_c, axis=0)
         chip = np.arange(len(self.chips))
@@ -157,6 +161,7 @@ class EnvelopeBuilder:
             self._temps[k, here] = gather(self._temps[k, here], gather.reduceat(values, starts))
         self._loss[here] += np.add.reduceat(rows.loss_j[pick] * share, starts)
         self._coolant[here] += np.add.reduceat(rows.coolant_c[pick] * span, starts)
+        self._sink[here] += np.add.reduceat(self._r_rows[pick] * span, starts)
         np.add.at(self._phase_time, (bucket, rows.phase_id[pick].astype(int)), span)
 
     def finish(self, end_s: float | None = None) -> JunctionHistory:
@@ -169,7 +174,7 @@ class EnvelopeBuilder:
         edge = np.append(np.flatnonzero(used) * width, min(end, self.duration_s))
         return JunctionHistory(
             self.chips, self.phases, float(end), edge, *(self._temps[k][used] for k in range(4)),
-            self._loss[used] / time[used, None], self._coolant[used] / time[used], self._phase_time[used].argmax(axis=1),
+            self._loss[used] / time[used, None], self._coolant[used] / time[used], self._sink[used] / time[used], self._phase_time[used].argmax(axis=1),
             self.peak_c, self.peak_time_s, self.peak_phase_id, self.lowest_c, self.case_peak_c, self.energy_j, self.beyond_data_s,
             self.above_s, self.longest_above_s,
         )

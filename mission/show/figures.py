@@ -657,6 +657,41 @@ def life_figure(result) -> Figure:
 
 # --- 7: losses -----------------------------------------------------------------------------
 @styled
+def cooling_figure(result) -> Figure:
+    """Resistance of the sink over the mission, where it changed.
+
+    Parameters
+    ----------
+    result : MissionResult
+
+    Returns
+    -------
+    Figure
+    """
+    history, record = result.history, result.cooling
+    unit, s = time_unit(history.duration_s)
+    figure = Figure(figsize=(10.0, 3.0), layout="constrained")
+    ax = figure.subplots()
+    starts, edges = _columns(history)
+    r = 1000.0 * history.r_sink_k_per_w
+    low, high = np.minimum.reduceat(r, starts), np.maximum.reduceat(r, starts)
+    x, top = _steps(edges / s, high)
+    ax.fill_between(x, _steps(edges / s, low)[1], top, color=LIGHT_BLUE, lw=0)
+    ax.plot(x, top, color=BLUE, lw=1.0)
+    ax.set(xlim=(0.0, edges[-1] / s), xlabel=f"time from the start of the mission, {unit}", ylabel="sink surface to coolant, K/kW")
+    ax.set_ylim(0.0, 1.08 * high.max())
+    shown = sorted(record.used[:6], key=lambda u: u.state.r_th_k_per_w)
+    heights = _spread([1000.0 * u.state.r_th_k_per_w / (1.08 * high.max()) for u in shown], 0.1)
+    for one, height in zip(shown, heights):
+        ax.text(1.01, height, f"{plain(one.state.words, 24)}: {_percent(one.time_s / history.duration_s)}", transform=ax.transAxes, va="center", fontsize=8, color=INK)
+    ax.text(1.01, 1.04, "share of the time", transform=ax.transAxes, fontsize=8, color=GREY, style="italic")
+    if len(record.used) > len(shown):
+        ax.text(1.01, -0.12, f"and {len(record.used) - len(shown)} more levels", transform=ax.transAxes, va="center", fontsize=8, color=GREY)
+    _stopped(result, figure)
+    return figure
+
+
+@styled
 def loss_figure(result) -> Figure:
     """Mean loss of every chip over the mission, with its energy."""
     history = result.history
@@ -700,6 +735,7 @@ FIGURES = {
     "damage-by-swing": damage_swing_figure,
     "cycle-map": cycle_figure,
     "losses": loss_figure,
+    "cooling": cooling_figure,
 }
 _NEED_MODES = {"life", "damage-by-phase", "damage-by-swing", "cycle-map"}
 
@@ -714,9 +750,10 @@ def all_figures(result) -> dict[str, Figure]:
     Returns
     -------
     dict of str to Figure
-        In the order of the report. Without failure modes those about damage are left out.
+        In the order of the report. Without failure modes those about damage are left out, without changes that of the cooling.
     """
-    return {name: draw(result) for name, draw in FIGURES.items() if result.study.modes or name not in _NEED_MODES}
+    return {name: draw(result) for name, draw in FIGURES.items()
+            if (result.study.modes or name not in _NEED_MODES) and (result.cooling.n_changes or name != "cooling")}
 
 
 def captions(result) -> dict[str, str]:
@@ -734,6 +771,10 @@ def captions(result) -> dict[str, str]:
                        "the band runs from the lowest to the highest temperature, the thin grey line follows the hottest chip of the same kind.",
         "losses": f"Mean loss of each chip. Together they turn {number(history.energy_j.sum() / 3.6e6)} kWh into heat in a mission.",
     }
+    if result.cooling.n_changes:
+        longest = result.cooling.used[0]
+        out["cooling"] = (f"Resistance from the sink's surface to the coolant over the mission, {result.cooling.n_changes} changes; the longest level was "
+                          f"‘{longest.state.words}’ with {number(1000.0 * longest.state.r_th_k_per_w)} K/kW.")
     ranked = rows_by_mode(result)
     if not ranked:
         return out

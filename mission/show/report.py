@@ -24,9 +24,9 @@ _THEMED = {
 _TITLES = {
     "temperatures": "Temperatures over the mission", "hot-stretch": "The hottest stretch, chip by chip", "life": "Lives",
     "damage-by-phase": "Where time and life go", "damage-by-swing": "Which swings do the damage", "cycle-map": "Cycles and their damage",
-    "losses": "Losses",
+    "losses": "Losses", "cooling": "What the cooling did",
 }
-_WHERE = {"temperatures": "heat", "hot-stretch": "heat", "losses": "heat", "life": "ledger"}
+_WHERE = {"temperatures": "heat", "hot-stretch": "heat", "losses": "heat", "cooling": "heat", "life": "ledger"}
 _RANGE_WORDS = {
     "range_k": ("swing", "K"), "mean_c": ("mean temperature", "°C"), "min_c": ("lowest temperature", "°C"), "max_c": ("highest temperature", "°C"),
     "heating_s": ("heating time", "s"), "current_per_foot_a": ("current per wire foot", "A"), "v_class": ("voltage class", "100 V"),

@@ -82,8 +82,13 @@ def check_text(study) -> str:
     lines = [f"{study.name}: usable",
              f"  duty    {p.source}: {p.rows} rows, {_span(p.duration_s)}, steps {p.shortest_step_s:g} to {p.longest_step_s:g} s, {len(p.phases)} phases",
              f"  module  {study.module.name} ({study.module.technology})"]
+    plan = study.cooling_plan()
+    first = plan.state(0)
+    lines.append(f"  cooling {study.spec.cooling.kind}: {first.words}, {1000.0 * first.r_th_k_per_w:.4g} K/kW from surface to coolant"
+                 + (f", the first of {len(plan.levels)} levels" if len(plan.levels) > 1 else ""))
     lines += [f"  life    {m.name}: {m.model.name}" for m in study.modes] or ["  life    no failure mode: temperatures only"]
-    lines += [f"  note    {n}" for n in (*study.module.notes, *p.notes)]
+    flags = first.point.flags if first.point is not None else ()
+    lines += [f"  note    {n}" for n in (*study.module.notes, *p.notes, *(f"cooling: {f}" for f in flags))]
     return "\n".join(lines)
 
 

@@ -339,7 +339,8 @@ class _Pass:
                     turning = (part.frequency_hz > 0.0) & (part.i_peak_a > 0.0)
                     if turning.any():
                         self.carriers_min = min(self.carriers_min, float((rows.switching_hz / np.where(turning, part.frequency_hz, 1.0))[turning].min()))
-                    self.envelope.add(rows)
+                    levels, back = np.unique(rows.level, return_inverse=True)
+                    self.envelope.add(rows, np.array([self.plan.state(int(k)).r_th_k_per_w for k in levels])[back])
                     self.marched_s = float(rows.end_s[-1])
                     self._take(self.counter.drain())
                     if self._progress is not None:

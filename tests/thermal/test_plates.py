@@ -446,9 +446,9 @@ def leg_on_a_plate(name):
     return module_from_dict(data)
 
 
-@pytest.mark.parametrize(("name", "chips", "reached"), [("curlew-300", 30, 0.016), ("dunlin-300", 24, 0.01)])
+@pytest.mark.parametrize(("name", "chips", "reached"), [("curlew-300", 30, 0.012), ("dunlin-300", 24, 0.008)])
 def test_three_level_legs(name, chips, reached):
-    """One leg's plate is solved once and stands three times. Measured: 3 s built and reduced, a bound of 1.2 and 0.7 % with all the room there is."""
+    """One leg's plate is solved once and stands three times. Measured: 2.5 and 1.5 s built and reduced, a bound of 0.9 and 0.6 % with all the room there is."""
     net = inverter_modes(leg_on_a_plate(name), FOSTER)
     assert net.n_chips == chips and net.relative_bound <= reached
     assert net.lam_shared_per_s.size <= MOST_SHARED and net.lam_local_per_s.shape[0] <= MOST_LOCAL
