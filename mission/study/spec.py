@@ -232,10 +232,12 @@ class Study:
             if not np.isfinite(flow[0]):
                 raise InputError(f"{self.profile.source}, column for flow", "no flow at all", "a flow in some rows", "take the column out and give the sink as it stands without flow")
         try:
-            return CoolingPlan(self.spec.cooling, self.module, coolant_c=self.coolant_range_c(), flow_m3_per_s=flow, stands_still=still, duration_s=self.profile.duration_s,
+            plan = CoolingPlan(self.spec.cooling, self.module, coolant_c=self.coolant_range_c(), flow_m3_per_s=flow, stands_still=still, duration_s=self.profile.duration_s,
                                materials=self.materials(), relative_tolerance=self.spec.march.network_tolerance)
         except InputError as err:
             raise err.at(self.source) from None
+        plan.source = self.source
+        return plan
 
     def with_profile(self, profile: MissionProfile) -> Study:
         """The same study on another duty."""

@@ -104,6 +104,8 @@ class CoolingPlan:
                  duration_s: float = 0.0, materials=None, relative_tolerance: float = 1e-3):
         self.spec, self.module, self._materials, self._tolerance = spec, module, materials, relative_tolerance
         self._states: dict[int, LevelState] = {}
+        #: File that speaks of this cooling, put in front of what later turns out to be wrong with it.
+        self.source = ""
         self._coolant, self._range = 0.5 * (coolant_c[0] + coolant_c[1]), coolant_c
         self._flows, self._stands_still = flow_m3_per_s, stands_still
         _check_parts(spec, module, flow_m3_per_s, stands_still)
@@ -153,7 +155,10 @@ class CoolingPlan:
     def state(self, k: int) -> LevelState:
         """Level ``k`` worked out."""
         if k not in self._states:
-            self._states[k] = self._work_out(self.levels[k])
+            try:
+                self._states[k] = self._work_out(self.levels[k])
+            except InputError as err:
+                raise err.at(self.source) if self.source else err from None
         return self._states[k]
 
     def strongest(self) -> int:
