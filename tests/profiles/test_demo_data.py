@@ -28,7 +28,7 @@ PHASES = {
     "debris hold",
     "debris restart",
 }
-STUDIES = ["ferry-heron.toml", "ferry-kite.toml", "ferry-hour.toml"]
+STUDIES = ["ferry-heron.toml", "ferry-kite.toml", "ferry-hour.toml", "ferry-fan.toml"]
 
 
 def load(name):
