@@ -88,6 +88,35 @@ def test_layers_of_the_readme_make_a_module(tmp_path):
     assert load_module("own.toml", folder=tmp_path).switch.thermal.layer[0].material == "silicon"
 
 
+def test_changing_cooling_of_the_readme_is_usable(tmp_path):
+    from mission.study import load_study
+
+    fan = (ROOT / "profiles" / "ferry-fan.toml").read_text(encoding="utf-8")
+    changes = next(c for c in code("toml") if "[[cooling.stage]]" in c)
+    text = re.sub(r"\[\[cooling.stage\]\].*?(?=\n\[lifetime\])", lambda _: changes, fan, flags=re.S)
+    for name, both in (("stages", text), ("law", re.sub(r"\[\[cooling.stage\]\].*?(?=# \[cooling.law\])", "", text, flags=re.S))):
+        if name == "law":
+            both = re.sub(r"^# ((\[cooling.law\]|watch|at_c|speed_ratio).*)", r"\1", both, flags=re.M)
+        (tmp_path / "ferry_day.csv").unlink(missing_ok=True)
+        (tmp_path / "ferry_day.csv").symlink_to(ROOT / "profiles" / "ferry_day.csv")
+        (tmp_path / f"{name}.toml").write_text(both, encoding="utf-8")
+        study = load_study(tmp_path / f"{name}.toml")
+        plan = study.cooling_plan()
+        assert plan.cut_s.tolist() == [57600.0, 58200.0] and bool(study.spec.cooling.stage) == (name == "stages")
+        assert plan.state(0).path.paste == pytest.approx(1.6, rel=0.01)
+
+
+def test_coupling_of_the_readme_warms_the_neighbour(tmp_path):
+    from mission.device import load_module, to_toml
+    from mission.thermal import FixedCooling, inverter_modes
+
+    coupling = next(c for c in code("toml") if "[[coupling]]" in c)
+    (tmp_path / "own.toml").write_text(to_toml(load_module("heron-300")) + "\n" + coupling, encoding="utf-8")
+    cooling = FixedCooling(kind="fixed", r_th_k_per_w=0.02)
+    more = inverter_modes(load_module("own.toml", folder=tmp_path), cooling).r_th_k_per_w() - inverter_modes(load_module("heron-300"), cooling).r_th_k_per_w()
+    assert more[6, 0] == pytest.approx(0.018, rel=1e-6) and more[7, 0] == pytest.approx(0.0, abs=1e-9)
+
+
 @pytest.mark.slow
 def test_python_of_the_readme_runs(tmp_path):
     (tmp_path / "profiles").symlink_to(ROOT / "profiles")

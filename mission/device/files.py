@@ -103,9 +103,9 @@ def to_toml(module: PowerModule) -> str:
 
 
 def _without_empty(data):
-    """Curves by points need no empty list of lines beside them, and the other way round."""
+    """Without empty lists of what may be left out: lines beside points, points beside lines, couplings, failure modes."""
     if isinstance(data, dict):
-        return {k: _without_empty(v) for k, v in data.items() if not (k in ("line", "curve") and not v)}
+        return {k: _without_empty(v) for k, v in data.items() if not (k in ("line", "curve", "coupling", "failure_mode") and not v)}
     return [_without_empty(v) for v in data] if isinstance(data, (list, tuple)) and data and isinstance(data[0], dict) else data
 
 
