@@ -368,8 +368,6 @@ def _how_heat(result):
         yield "cooling: fluid properties at the inlet temperature, as no heat_w is given; the coolant's own rise is in the resistance"
     for text in record.flags:
         yield f"cooling, to be mistrusted: {text}"
-    for text in record.sources:
-        yield f"cooling: {text}"
 
 
 def _versions() -> dict[str, str]:

@@ -44,7 +44,7 @@ def test_fan_stages_hold_and_are_told(tmp_path):
     json.dumps(document.model_dump())
     assert document.cooling.changes == record.n_changes and len(document.cooling.levels) == 2
     assert document.cooling.change_error < 0.002
-    assert any("changes between 2 levels" in t for t in document.rests_on) and any("Teertstra" in t for t in document.rests_on)
+    assert any("changes between 2 levels" in t for t in document.rests_on) and any("Teertstra" in t for t in document.cooling.sources)
     text = result_text(result)
     assert "40 % speed:" in text and "100 % speed:" in text
     assert "of 2 levels" in check_text(study)
