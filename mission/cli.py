@@ -1,4 +1,5 @@
-"""The command line: ``mission run``, ``check``, ``compare``, ``rating``, ``module``, ``sheet``, ``curve``, ``schema``.
+"""The command line: ``mission run``, ``check``, ``compare``, ``rating``, ``module``, ``sheet``, ``curve``, ``heat``,
+``schema``.
 
 Exit codes: 0 fine, 1 a limit or the target is missed (or no stable temperature
 exists), 2 the input cannot be used.
@@ -22,6 +23,7 @@ _EXAMPLES = """examples:
   mission module heron-300 --out heron              curves, energies and loss split of a module in pictures
   mission sheet profiles/swift-400-sheet/sheet.toml --out swift.toml   module file from digitised data-sheet curves
   mission curve profiles/heron-curve/greased.csv --kind cooling --power 400 --against profiles/heron-curve/dry.csv   measured curves: branches
+  mission heat profiles/ferry-fan.toml --out heat   the way of the heat: layers, case, sink, coolant
   mission schema                                    what result.json holds
 
 A study is a TOML file; the ones in profiles/ are meant to be copied.
@@ -139,6 +141,14 @@ def _parser():
     curve.add_argument("--out", type=Path, metavar="DIR", help="folder for branches, tables and pictures; without it the text only")
     curve.add_argument("--quiet", action="store_true", help="no text")
     curve.set_defaults(action=_curve)
+    heat = commands.add_parser("heat", help="the way of the heat of a study, from junctions to coolant",
+                               description="Run a study, then follow its heat at rest: temperatures and drops along the way, layers and conductivity over temperature, "
+                                           "neighbours, spreading in a plate, reduction of the network, cooling at work. Limits are not judged.")
+    heat.add_argument("study", type=Path, metavar="STUDY.toml")
+    heat.add_argument("--out", type=Path, required=True, metavar="DIR", help="folder for text, tables and pictures; made if it is not there")
+    heat.add_argument("--held", action="store_true", help="the hottest moment of the mission held for ever, not its mean losses")
+    heat.add_argument("--quiet", action="store_true", help="no progress, no text")
+    heat.set_defaults(action=_heat)
     schema = commands.add_parser("schema", help="print the JSON schema of result.json")
     schema.set_defaults(action=_schema)
     return parser
@@ -324,6 +334,26 @@ def _curve(args) -> int:
         print(text)
         if paths:
             print(f"\nwritten to {args.out}: " + ", ".join(p.name for p in paths))
+    return FINE
+
+
+def _heat(args) -> int:
+    from .show.folder import ResultFolder
+    from .show.heat import heat_text, write_heat
+    from .study import check_rows, load_study, review_heat, run
+
+    study = load_study(args.study)
+    check_rows(study)
+    ResultFolder(args.out)  # one that cannot be written is told before the march
+    with _Bar(quiet=args.quiet) as bar:
+        result = run(study, progress=bar, keep_cycles=False)
+    if not result.complete:
+        raise KeyboardInterrupt
+    review = review_heat(result, held=args.held)
+    paths = write_heat(review, args.out)
+    if not args.quiet:
+        print(heat_text(review))
+        print(f"\nwritten to {args.out}: " + ", ".join(p.name for p in paths))
     return FINE
 
 

@@ -313,7 +313,6 @@ class ElectrothermalMarch:
         """Go on at another level of the cooling: every temperature of the masses stays."""
         k = self._k
         self._to_physical_states()
-        self._hand_over()
         move = self._levels.move(self.level, level)
         rest = np.concatenate(self.states[:2]) - self._mean_state
         self._field = move.turn @ self._field
@@ -444,6 +443,9 @@ class ElectrothermalMarch:
             self._belong(int(groups[at]))
             while at < end:
                 before = at
+                # the kernel looks at the room in its buffers before every row but the first
+                if self._count.max() > _POINT_CAPACITY // 2 or self._rip_count[0] > _POINT_CAPACITY // 4:
+                    self._hand_over()
                 at, status = k.march_rows(
                     self._lane_tuple, at, table[:end], phases, self._w, *self._net, *self._groups, *self._tables, self._settings, self._now, self._op,
                     self._ripple_op, self._ripple, self._nodes, self._window, self._last, self._heading, *self._points, *self._ripple_out, temps, loss)
@@ -454,9 +456,11 @@ class ElectrothermalMarch:
                     now = self.junction_c
                     chip = int(np.argmax(np.where(np.isfinite(now), now, np.inf)))
                     raise NoStableTemperature(self._runaway_words(chip, table[at], float(points.mod_index[rows[at]])))
-                self._hand_over()
                 if status == k.CHANGE:
                     self._step_level(int(groups[at]))
+                elif at < end:
+                    self._hand_over()
+        self._hand_over()
         ends = start + np.cumsum(table[:, k.DT])
         first = np.concatenate([[0], np.cumsum(pieces)[:-1]])
         t_end = ends[np.cumsum(pieces) - 1]

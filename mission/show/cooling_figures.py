@@ -18,6 +18,7 @@ from ..thermal.fourier import FourierStack
 from ..thermal.sinks import NaturalSink, OperatingCurve, SinkPoint, SinkSpec, TableSink, natural_dependence, operating_curve, sink_point
 from ..thermal.spreading import compare_spreading
 from .figures import BLUE, GREY, INK, LIGHT_BLUE, LIGHT_YELLOW, PAPER, RED, YELLOW, _spread, plain, styled
+from .module_figures import _layout
 from .text import number
 from .thermal_figures import _BOX, _DASHED, _DOTTED, _log_axis, _names
 
@@ -145,7 +146,7 @@ def operating_point_figure(spec: SinkSpec | OperatingCurve, point: SinkPoint, *,
 
 
 def _title(words, point):
-    inlet = "" if point.inlet_c is None else f"; coolant {point.inlet_c:g} °C"
+    inlet = "" if point.inlet_c is None else f"; coolant {number(point.inlet_c)} °C"
     heat = "" if point.heat_w is None else f", heat {number(point.heat_w, 4)} W"
     return f"{plain(words, 60, 'cooling')}{inlet}{heat}"
 
@@ -336,7 +337,7 @@ def resistance_over_rise_figure(spec: NaturalSink, point: SinkPoint, *, material
 
 # --- 3: map of the baseplate ------------------------------------------------------------
 @styled
-def plate_map_figure(stack: FourierStack, power_w, coolant_c: float, *, names: Sequence[str] | None = None, title: str = "") -> Figure:
+def plate_map_figure(stack: FourierStack, power_w, coolant_c: float, *, names: Sequence[str] | None = None, title: str = "", below: str = "coolant") -> Figure:
     """Temperature of the underside of the last plate, with the chips above it and the hottest point.
 
     Parameters
@@ -349,6 +350,8 @@ def plate_map_figure(stack: FourierStack, power_w, coolant_c: float, *, names: S
     names : sequence of str, optional
         One for every source; the stack's own names without it.
     title : str
+    below : str
+        What the stack ends at, where that is not the coolant.
 
     Returns
     -------
@@ -397,7 +400,7 @@ def plate_map_figure(stack: FourierStack, power_w, coolant_c: float, *, names: S
     total = float(np.sum(power_w))
     extent = f"{number(float(t.min()), 4)} °C everywhere" if flat else f"hottest (×) {hottest}; contours in °C"
     head = plain(title or "underside of the baseplate", 60, "underside")
-    ax.set_title(f"{head}\n{extent}\n{number(total, 4)} W, coolant {coolant:g} °C", fontsize=8.5)
+    ax.set_title(f"{head}\n{extent}\n{number(total, 4)} W, {below} {number(coolant)} °C", fontsize=8.5)
     tags = _name_chips(figure, ax, stack, words, inside)
     if not flat:
         _label_contours(figure, ax, lines, tags, (x[column], y[row]))
@@ -465,7 +468,7 @@ _METHODS = {"exact": "exact", "straight down": "straight down", "whole footprint
 
 
 @styled
-def spreading_figure(stack: FourierStack, chip: int = 0, *, spread_deg=45.0, name: str = "") -> Figure:
+def spreading_figure(stack: FourierStack, chip: int = 0, *, spread_deg=45.0, name: str = "", below: str = "coolant") -> Figure:
     """Steady resistance of one chip, heated alone, by the shortcuts and exactly.
 
     Parameters
@@ -477,6 +480,8 @@ def spreading_figure(stack: FourierStack, chip: int = 0, *, spread_deg=45.0, nam
         As for :func:`mission.thermal.spreading.by_angle_k_per_w`.
     name : str
         Of the chip; the stack's own name without it.
+    below : str
+        As for :func:`plate_map_figure`.
 
     Returns
     -------
@@ -491,7 +496,7 @@ def spreading_figure(stack: FourierStack, chip: int = 0, *, spread_deg=45.0, nam
     mean, most = (table[table["rise"] == kind].reset_index(drop=True) for kind in ("mean", "maximum"))
     places = [*range(len(mean)), *(len(mean) + 0.9 + k for k in range(len(most)))]
     rows = [*mean.itertuples(), *most.itertuples()]
-    figure = Figure(figsize=(8.6, 4.6), layout="constrained")
+    figure = Figure(figsize=(8.6, 4.6), layout=_layout())
     ax = figure.subplots()
     longest = float(table["r_th_k_per_w"].max())
     for place, row in zip(places, rows, strict=True):
@@ -504,7 +509,7 @@ def spreading_figure(stack: FourierStack, chip: int = 0, *, spread_deg=45.0, nam
     for rise, first, last in ((mean, -0.45, len(mean) - 0.55), (most, places[len(mean)] - 0.45, places[-1] + 0.45)):
         exact = float(rise.loc[rise["method"] == "exact", "r_th_k_per_w"].iloc[0])
         ax.plot([exact, exact], [first, last], color=INK, lw=1.0, ls=_DASHED, zorder=3)
-    ax.set_yticks(places, [_METHODS[row.method] for row in rows])
+    ax.set_yticks(places, [_METHODS[row.method].replace("coolant", below) for row in rows])
     ax.set_ylim(places[-1] + 0.6, -0.95)
     ax.set_xlim(0.0, 1.28 * longest)
     ax.tick_params(axis="y", length=0)
@@ -514,6 +519,6 @@ def spreading_figure(stack: FourierStack, chip: int = 0, *, spread_deg=45.0, nam
     angle = np.unique(np.atleast_1d(np.asarray(spread_deg, float)))
     angles = f"{angle[0]:g}°" if angle.size == 1 else f"{angle[0]:g}° to {angle[-1]:g}°"
     called = plain(name or stack.sources[chip].name or f"chip {chip + 1}", 40, f"chip {chip + 1}")
-    ax.set_xlabel("steady resistance, chip to coolant, K/W; dashed line: exact")
+    ax.set_xlabel(f"steady resistance, chip to {below}, K/W; dashed line: exact")
     ax.set_title(f"{called} heated alone; angle {angles}")
     return figure

@@ -12,11 +12,12 @@ from matplotlib.ticker import FixedLocator, FuncFormatter, LogLocator, MaxNLocat
 from ..checks import require_range
 from ..errors import InputError
 from ..thermal.assembly import FullNetwork
-from ..thermal.cooling import sink_ladder
+from ..thermal.cooling import sink_path
 from ..thermal.layers import StackLadder
 from ..thermal.measured import MeasuredImpedance, Separation, StructureFunction
 from ..thermal.modes import ReducedNetwork
 from .figures import BLUE, GREY, INK, LIGHT_BLUE, LIGHT_RED, LIGHT_YELLOW, PAPER, RED, YELLOW, _spread, plain, styled
+from .module_figures import _layout
 from .text import number
 
 _BOX = {"boxstyle": "square,pad=0.12", "fc": PAPER, "ec": "none", "alpha": 0.85}
@@ -419,8 +420,8 @@ def stack_drops(
         One for every layer, heated face first.
     power_w : float
         Heat of the chip [W], >= 0.
-    cooling : FixedCooling or FosterCooling
-        From sink surface to coolant.
+    cooling : FixedCooling, FosterCooling, SinkPath or float
+        From sink surface to coolant: a cooling, a path with one ladder, or a resistance [K/W].
     coolant_c : float
         [degC], -60 to 150.
     case_to_sink_k_per_w : float
@@ -436,7 +437,7 @@ def stack_drops(
     Raises
     ------
     InputError
-        Names that do not match the layers.
+        Names that do not match the layers; a path with several sinks.
     RangeError
         Numbers out of range; less heat in a shared part than in the chip.
 
@@ -453,8 +454,13 @@ def stack_drops(
     ]
     if len(names) != len(stack.r_layers_k_per_w):
         raise InputError("names", f"{len(names)} names for {len(stack.r_layers_k_per_w)} layers", "one for each layer")
-    ladder = sink_ladder(cooling)
-    r_sink = float(ladder) if isinstance(ladder, (int, float)) else float(ladder.r_k_per_w.sum())
+    if isinstance(cooling, (int, float)):
+        sinks = (float(require_range("cooling", cooling, low=0.0, unit="K/W")),)
+    else:
+        sinks = sink_path(cooling).r_th_k_per_w
+    if len(sinks) != 1:
+        raise InputError("cooling", f"{len(sinks)} sinks", "one", "hand over the resistance of the chip's own sink")
+    r_sink = sinks[0]
     parts = [(plain(n, 22, f"layer {k}"), power * r, True) for k, (n, r) in enumerate(zip(names, stack.r_layers_k_per_w), 1)]
     if r_interface > 0.0:
         parts.append(("case to sink", through[0] * r_interface, False))
@@ -489,7 +495,7 @@ def stack_figure(drops: Sequence[StackDrop], *, title: str = "Temperature drop f
     if not drops:
         raise InputError("drops", "no part", "at least one")
     n = len(drops)
-    figure = Figure(figsize=(8.6, 1.5 + 0.34 * n), layout="constrained")
+    figure = Figure(figsize=(8.6, 1.5 + 0.34 * n), layout=_layout())
     ax = figure.subplots()
     top, bottom = max(d.upper_c for d in drops), min(d.lower_c for d in drops)
     span = max(top - bottom, 0.5)

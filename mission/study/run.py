@@ -273,6 +273,7 @@ class _Pass:
         self.engine = ElectrothermalMarch(tables, networks, settings, derating=study.spec.inverter.derating, on_points=self._points, on_ripple=self._ripples)
         self.i_peak_max = self.mod_index_max = self.frequency_max = self.dc_voltage_max = self.fsw_max = 0.0
         self.coolant_max, self.hot_c, self.hot_point, self.loaded_joint, self.carriers_min = -np.inf, -np.inf, None, False, np.inf
+        self._group = None  # of the cooling, in the latest row
         self.complete, self.marched_s, self._tables_kept = True, 0.0, []
 
     def _points(self, p):
@@ -316,7 +317,9 @@ class _Pass:
                 if row.size > n:
                     points, v_dc, t_cool, n = points.rows(row), v_dc[row], t_cool[row], row.size
                 phase_id = block.phase_id[row]
-                group = self.plan.groups_of(start_s, t_cool, block.columns["flow_m3_per_s"][row] if "flow_m3_per_s" in block.columns else None)
+                group = self.plan.groups_of(start_s, t_cool, block.columns["flow_m3_per_s"][row] if "flow_m3_per_s" in block.columns else None,
+                                            self._group)
+                self._group = int(group[-1])
                 if first:
                     self.engine.start(float(t_cool[0]), theta_rad=self._theta, states=self._states, group=int(group[0]))
                     starts_loaded = bool(points.i_peak_a[0] > 0.0)

@@ -235,6 +235,11 @@ class SinkPath:
     first_to_last: tuple[int, ...] = ()
     chip_losses: bool = False
 
+    @property
+    def r_th_k_per_w(self) -> tuple[float, ...]:
+        """Steady resistance of each ladder [K/W]."""
+        return tuple(float(s.r_k_per_w.sum()) if isinstance(s, CauerLadder) else float(s) for s in self.ladders)
+
 
 def sink_path(cooling) -> SinkPath:
     """The path of a given cooling; a :class:`SinkPath` is handed through."""

@@ -137,17 +137,22 @@ class CoolingPlan:
 
     # what a row says ------------------------------------------------------------------------------------------------------------
 
-    def groups_of(self, time_s, coolant_c, flow_m3_per_s=None) -> np.ndarray:
-        """Group of every row, which must not reach over a time of ``cut_s``; arrays of shape (n,)."""
+    def groups_of(self, time_s, coolant_c, flow_m3_per_s=None, before: int | None = None) -> np.ndarray:
+        """Group of every row, which must not reach over a time of ``cut_s``; arrays of shape (n,).
+
+        ``before``: group of the row before the first. A coolant or flow that hardly leaves its step stays in it, so that a noisy column does
+        not change the cooling with every row; the resistance is then right within a whole step instead of half a one.
+        """
         time_s = np.asarray(time_s, float)
         fault = np.zeros(time_s.shape, int)
         for k, one in enumerate(self.spec.fault, 1):
             fault[(time_s >= one.at_s - 1e-9) & (time_s < (np.inf if one.until_s is None else one.until_s) - 1e-9)] = k
         paste = np.searchsorted(self._paste_s, time_s + 1e-9, side="right")
-        coolant = np.searchsorted(self._coolant_borders, coolant_c)
+        places = (None, None) if before is None else np.unravel_index(before, self._shape)[2:]
+        coolant = _settled(self._coolant_borders, coolant_c, places[0])
         flow = np.zeros(time_s.shape, int)
         if self._flows is not None:
-            flow = np.where(np.asarray(flow_m3_per_s) == 0.0, len(self._flow_values) - 1, np.searchsorted(self._flow_borders, flow_m3_per_s))
+            flow = np.where(np.asarray(flow_m3_per_s) == 0.0, len(self._flow_values) - 1, _settled(self._flow_borders, flow_m3_per_s, places[1]))
         return np.ravel_multi_index((fault, paste, coolant, flow), self._shape)
 
     # levels worked out ----------------------------------------------------------------------------------------------------------
@@ -306,6 +311,22 @@ def _steps(resistance, x):
     way += 1e-9 * np.arange(way.size)  # flat parts belong to the step before
     at = np.interp(way[-1] * (np.arange(count) + 0.5) / count, way, x)
     return tuple(at.tolist()), np.interp(way[-1] * np.arange(1, count) / count, way, x)
+
+
+def _settled(borders, values, before):
+    """Step of each value; it stays while the value goes beyond a border by less than half of the step behind it."""
+    values = np.asarray(values, float)
+    if borders.size == 0:
+        return np.zeros(values.shape, int)
+    width = np.diff(borders, prepend=2.0 * borders[0] - borders[1] if borders.size > 1 else borders[0], append=2.0 * borders[-1] - borders[-2] if borders.size > 1 else borders[0])
+    least, most = np.searchsorted(borders + 0.5 * width[1:], values), np.searchsorted(borders - 0.5 * width[:-1], values)
+    plain = np.searchsorted(borders, values)
+    place = int(plain[0]) if before is None else int(before)
+    out = np.empty(values.size, int)
+    for k, (low, own, high) in enumerate(zip(least.tolist(), plain.tolist(), most.tolist())):
+        place = place if low <= place <= high else own
+        out[k] = place
+    return out
 
 
 def _stage_setting(stage) -> Setting:

@@ -82,6 +82,23 @@ def test_a_flow_column_is_followed_within_the_step(data):
         assert resistance(found, flow=flow) == pytest.approx(want, rel=0.0125)  # half a step, and the coarser grid where the kind of flow turns
 
 
+def test_a_noisy_flow_does_not_change_the_level_with_every_row():
+    found = plan({k: v for k, v in TABLE.items() if k != "at_l_per_min"}, flow_m3_per_s=(2.0 / 60000, 10.0 / 60000))
+    rng = np.random.default_rng(4)
+    border = found._flow_borders[len(found._flow_borders) // 2]
+    flow = border * (1.0 + 0.004 * rng.standard_normal(1000))
+    groups = found.groups_of(np.arange(1000.0), np.full(1000, 40.0), flow)
+    assert np.count_nonzero(np.diff(groups)) < 10 and np.count_nonzero(np.diff(np.searchsorted([border], flow))) > 300
+    slow = np.geomspace(2.0, 10.0, 500) / 60000
+    groups = found.groups_of(np.arange(500.0), np.full(500, 40.0), slow)
+    apart = found.groups_of([0.0], [40.0], slow[:1])[0]
+    for k, q in enumerate(slow):  # row by row as in one go
+        apart = found.groups_of([float(k)], [40.0], [q], before=int(apart))[0]
+        assert apart == groups[k]
+        want = np.exp(np.interp(np.log(q), np.log(found.spec.table_m3_per_s), np.log(found.spec.r_th_k_per_w)))
+        assert found.state(found.groups[groups[k]].levels[0]).r_th_k_per_w == pytest.approx(want, rel=0.022)
+
+
 def test_rows_without_flow_have_their_own_level():
     data = {k: v for k, v in TABLE.items() if k != "at_l_per_min"}
     found = plan({**data, "heat_capacity_j_per_k": 900.0, "stopped": {"r_th_k_per_w": 0.9}}, flow_m3_per_s=(2.0 / 60000, 10.0 / 60000), stands_still=True)
