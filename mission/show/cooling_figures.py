@@ -114,7 +114,10 @@ def operating_point_figure(spec: SinkSpec | OperatingCurve, point: SinkPoint, *,
     ax.plot(x, y, color=BLUE, lw=1.6)
     # its name goes left above it, where points and other lines are farthest
     frame = np.array([1.02 * right, p * top])
-    busy = np.vstack([[per * flow, p * (point.pressure_drop_pa or 0.0)]] + [[per * c.point_flow_m3_per_s, p * c.point_pa] for _, c in curves]
+    here = (per * flow, p * (point.pressure_drop_pa or 0.0))
+    near = here[0] > 0.8 * 1.02 * right  # its words go to the left then
+    words = [(here[0] + (-1 if near else 1) * share * frame[0], here[1]) for share in (0.0, 0.05, 0.1, 0.15)]
+    busy = np.vstack([words] + [[per * c.point_flow_m3_per_s, p * c.point_pa] for _, c in curves]
                      + [np.column_stack([per * c.flow_m3_per_s, p * c.mover_pa]) for c in moving]) / frame
     spots = np.column_stack([x, y])[(np.linspace(0.3, 0.95, 14) * (x.size - 1)).astype(int)]
     k = int(np.argmax([np.hypot(*(busy - spot / frame + (0.05, 0.0)).T).min() for spot in spots]))
@@ -133,10 +136,8 @@ def operating_point_figure(spec: SinkSpec | OperatingCurve, point: SinkPoint, *,
                     fontsize=8, bbox=_BOX)
         ax.plot([per * curve.point_flow_m3_per_s], [p * curve.point_pa], ls="", marker="o", ms=6, mfc=PAPER, mec=INK, mew=1.2, zorder=5)
     if point.pressure_drop_pa is not None:
-        here = (per * flow, p * point.pressure_drop_pa)
         ax.plot([here[0], here[0], 0.0], [0.0, here[1], here[1]], color=GREY, lw=0.8, ls=_DOTTED, zorder=1)
         ax.plot(*([v] for v in here), ls="", marker="o", ms=7, color=INK, zorder=6)
-        near = here[0] > 0.8 * 1.02 * right
         ax.annotate(f"{number(here[0], 3)} {unit}, {number(here[1], 3)} {p_unit}", here, xytext=(-11 if near else 11, 0), textcoords="offset points",
                     ha="right" if near else "left", va="center", fontsize=8, weight="bold", bbox=_BOX)
     ax.set_xlabel(f"flow, {unit} (at the inlet)")
@@ -398,7 +399,7 @@ def plate_map_figure(stack: FourierStack, power_w, coolant_c: float, *, names: S
     ax.set_ylabel("y, mm")
     ax.grid(visible=False)
     total = float(np.sum(power_w))
-    extent = f"{number(float(t.min()), 4)} °C everywhere" if flat else f"hottest (×) {hottest}; contours in °C"
+    extent = f"{number(float(t.min()), 4)} °C everywhere" if flat else f"hottest (×) {hottest}{chr(10) if wide < 5.5 else '; '}contours in °C"
     head = plain(title or "underside of the baseplate", 60, "underside")
     ax.set_title(f"{head}\n{extent}\n{number(total, 4)} W, {below} {number(coolant)} °C", fontsize=8.5)
     tags = _name_chips(figure, ax, stack, words, inside)

@@ -65,7 +65,7 @@ def _way_lines(way):
     yield f"  {way.name:<28} {'heat, W':>8} {'K/kW':>8} {'K':>8} {'share':>7}"
     for s in way.steps:
         through = f"{s.heat_w:8.1f} {1000.0 * s.r_k_per_w:8.2f}" if s.heat_w == s.heat_w else " " * 17
-        share = f"{s.drop_k / whole:7.1%}" if whole > 0.0 else f"{'-':>7}"
+        share = f"{s.drop_k / whole:7.1%}" if whole > 1e-6 else f"{'-':>7}"  # less is rounding
         yield f"    {one_line(s.name, 26):<26} {through} {s.drop_k:8.2f} {share}"
     yield f"    {'in all':<26} {' ' * 17} {whole:8.2f}"
 
@@ -132,7 +132,8 @@ def _cooling_lines(review):
     facts = [
         ("flow", p.flow_m3_per_s, lambda v: f"{number(per * v)} {unit.replace('³', '3')}"), ("pressure", p.pressure_drop_pa, lambda v: f"{number(v)} Pa"),
         ("kind of flow", p.regime, lambda v: v + ("" if p.reynolds is None else f", Reynolds number {number(p.reynolds, 3)}")),
-        ("reckoned for", p.heat_w, lambda v: f"{number(v)} W"), ("coolant's own rise", p.outlet_rise_k_per_w, lambda v: f"{v * review.loss_w.sum():.2f} K at these losses"),
+        ("reckoned for", p.inlet_c, lambda v: f"{number(v)} degC at the inlet" + ("" if p.heat_w is None else f" and {number(p.heat_w)} W")),
+        ("coolant's own rise", p.outlet_rise_k_per_w, lambda v: f"{v * review.loss_w.sum():.2f} K at these losses"),
         ("film", p.film_w_per_m2_k, lambda v: f"{number(v, 3)} W/(m2 K)"), ("efficiency of the fins", p.fin_efficiency, lambda v: f"{v:.1%}"),
         ("base", p.r_base_k_per_w, lambda v: f"{1000.0 * v:.3g} K/kW of the above"), ("spreading in the base", p.r_spreading_k_per_w, lambda v: f"{1000.0 * v:.3g} K/kW of the above"),
         ("radiation", p.radiated_share, lambda v: f"{v:.0%} of the heat"),
@@ -224,7 +225,8 @@ def _speeds(review):
 
     used = sorted({speed(one.level) for one in review.result.cooling.used})
     few = np.unique(np.linspace(0, len(used) - 1, min(len(used), _MOST_SPEEDS)).round().astype(int))
-    return sorted({*(used[k] for k in few), speed(review.level)})
+    own = speed(review.level)
+    return [own, *(used[k] for k in few if abs(used[k] - own) > 0.05 * own)]
 
 
 def write_heat(review: HeatReview, folder) -> list[Path]:

@@ -159,7 +159,7 @@ def impedance_figure(
             raise InputError("time_s", f"{low:g} to {high:g} s", "a first time before the last")
     t = np.geomspace(low, high, 400)
     z = step_response_k_per_w(network, t, chip)
-    figure = Figure(figsize=(8.6, 4.2), layout="constrained")
+    figure = Figure(figsize=(8.6, 4.2), layout=_layout())
     ax = figure.subplots()
     ax.set_xscale("log")
     ax.set_yscale("log")
@@ -520,7 +520,7 @@ def stack_figure(drops: Sequence[StackDrop], *, title: str = "Temperature drop f
     faces = [(drops[0].upper_c, "junction", -0.5)]
     inner = [k for k, d in enumerate(drops) if d.inside]
     if inner and inner[-1] + 1 < n:
-        faces.append((drops[inner[-1]].lower_c, "case", inner[-1] + 0.5))
+        faces.append((drops[inner[-1]].lower_c, "case" if inner[-1] + 2 < n else "sink", inner[-1] + 0.5))
         if inner[-1] + 2 < n:
             faces.append((drops[n - 1].upper_c, "sink", n - 1.5))
     for t, word, y in faces:
