@@ -196,13 +196,13 @@ def _known_keys(model, loc) -> tuple[set[str], dict[str, str]]:
         if following:
             current, others = following, set()
         else:
-            tagged = {m for m in current if _tag(m, part)}
+            tagged = {m for m in current if _tag(m, part)} or {m for m in current if not _tag(m)}  # some kinds have no word
             if tagged:
                 current, others = tagged, current - tagged
     names: set[str] = set()
     for m in current:
         names |= _names(m)
-    elsewhere = {n: _tag(m) for m in others for n in _names(m) - names}
+    elsewhere = {n: " or ".join(sorted(_tag(m) for m in others if n in _names(m))) for n in set().union(*map(_names, others)) - names}
     return names, elsewhere
 
 

@@ -122,7 +122,7 @@ class MarchState(NamedTuple):
     """Modes, coolant and level of the cooling at one moment; see :attr:`ElectrothermalMarch.states`.
 
     ``local`` (L n,): local modes, scaled with their output weight; ``shared`` (S,); ``field`` (K,): modes of the full network,
-    kept where the cooling has several levels.
+    kept where the cooling has several levels. ``places``: which of its stages the cooling holds, as shares of the last.
     """
 
     local: np.ndarray
@@ -130,6 +130,7 @@ class MarchState(NamedTuple):
     coolant_c: float
     level: int = 0
     field: np.ndarray | None = None
+    places: dict | None = None
 
 
 #: Room of the kernels: local modes a chip, shared modes, corner temperatures.
@@ -274,6 +275,9 @@ class ElectrothermalMarch:
         #: Time spent at each level [s], and the first changes: (time [s], level entered).
         self.level_time_s, self.changes, self.n_changes = np.zeros(self._levels.count), [], 0
         self._entered_s, self._level_start = 0.0, level
+        # the group in force, the place of its level, and the places last held among levels that follow temperature, and those that follow the rise
+        self._group, self._at = -1, 0
+        self._places: dict[bool, float] = {} if states is None or states.places is None else dict(states.places)
         self._field = self._mean_state = self._memory = None
         if self._levels.count > 1:
             lam, _, _, read = self._levels.field(level)
@@ -333,16 +337,17 @@ class ElectrothermalMarch:
 
     def _set_look(self, group: int) -> None:
         """Tell the kernel at which temperature of the sink the level of a group gives way."""
-        k, one = self._k, self._levels.groups[group]
-        place = one.levels.index(self.level)
+        k, one, place = self._k, self._levels.groups[group], self._at
+        if len(one.levels) > 1:
+            self._places[one.on_rise] = place / (len(one.levels) - 1)
         self._settings[k.SURFACE_UP] = one.up_c[place] if place < len(one.up_c) else np.inf
         self._settings[k.SURFACE_DOWN] = one.down_c[place - 1] if place > 0 else -np.inf
         self._settings[k.SURFACE_RISE] = float(one.on_rise)
 
-    def surface_c(self) -> float:
-        """Hottest sink surface now [degC]; only where the cooling has more than one level."""
-        x = np.concatenate(self.states[:2])
-        return float(self._now[self._k.COOLANT] + (self._levels.surface(self.level) @ x).max())
+    def surface_c(self, states: MarchState | None = None) -> float:
+        """Hottest sink surface now, or with other ``states`` [degC]; only where the cooling has more than one level."""
+        states = self.states if states is None else states
+        return float(states.coolant_c + (self._levels.surface(states.level) @ np.concatenate(states[:2])).max())
 
     @property
     def angle_rad(self) -> float:
@@ -359,13 +364,13 @@ class ElectrothermalMarch:
         """Junction temperatures now, shape (chips,) [degC] (in fast rotation: their mean over a period)."""
         return self._w[self._k.T:self._k.T + self.n_chips].copy()
 
-    def periodic_start(self, states_before: MarchState, duration_s: float) -> MarchState:
+    def periodic_start(self, states_before: MarchState, duration_s: float, far: float = 1.0) -> MarchState:
         """States that a mission would start with if it were repeated for ever, judged from one pass.
 
         Each mode forgets its start at its own known rate; what the losses add is taken
         from the pass. Exact for losses that do not depend on temperature, otherwise a
         step of a quickly closing iteration. Where the cooling changed its level, the changes are taken to come at the same
-        times again; where it ended at another level than it began, the end itself is the next start.
+        times again, which they do not if they follow the temperature: ``far`` says how much of the way to go (0: the end itself).
         """
         net, now = self.network, self.states
         x = np.concatenate(now[:2])
@@ -379,13 +384,17 @@ class ElectrothermalMarch:
         else:
             _, _, even, read = self._levels.field(self.level)
             field = self._field - even * change
-            if self.level == self._level_start:
-                slow = self._memory.shape[0]
-                more = np.zeros(field.size)
-                more[:slow] = self._memory @ np.linalg.solve(np.eye(slow) - self._memory, (field - states_before.field)[:slow])
-                field, x = field + more, x + read @ more
+            before = states_before.field
+            slow = self._memory.shape[0]
+            memory = self._memory
+            if self.level != self._level_start:
+                turn = self._levels.move(self._level_start, self.level).turn
+                before, memory = turn @ before, memory @ turn[:slow, :slow].T
+            more = np.zeros(field.size)
+            more[:slow] = far * memory @ np.linalg.solve(np.eye(slow) - memory, (field - before)[:slow])
+            field, x = field + more, x + read @ more
         cut = net.lam_local_per_s.size
-        return MarchState(x[:cut], x[cut:], self._coolant_start, self.level, field)
+        return MarchState(x[:cut], x[cut:], self._coolant_start, self.level, field, dict(self._places))
 
     @property
     def states(self) -> MarchState:
@@ -393,7 +402,7 @@ class ElectrothermalMarch:
         k = self._k
         n_s = self._net[1]
         return MarchState(self._local(k.X_L).ravel(), self._w[k.X_S:k.X_S + n_s].copy(), float(self._now[k.COOLANT]), self.level,
-                          None if self._field is None else self._field.copy())
+                          None if self._field is None else self._field.copy(), dict(self._places))
 
     def add_block(self, points: OperatingPoints, *, dt_s, phase_id, coolant_c, switching_frequency_hz, dc_voltage_v, group=None) -> RowEnvelope:
         """March one block.
@@ -479,29 +488,32 @@ class ElectrothermalMarch:
         )
 
     def _belong(self, group: int) -> None:
-        """Go over to a group of levels, if the present level is none of it, and set its thresholds."""
+        """Go over to a group of levels, if it is not the present one, and set its thresholds."""
         one = self._levels.groups[group]
-        if self.level not in one.levels:
-            self._change(one.levels[self._place(one)])
+        if group != self._group:
+            self._group, self._at = group, self._place(one)
+            if one.levels[self._at] != self.level:
+                self._change(one.levels[self._at])
         self._set_look(group)
 
     def _place(self, group) -> int:
-        """Which of a group's levels the sink's temperature asks for, without regard to the level before."""
+        """Which of a group's levels holds: the one that held when such a group was last in force, as far as the sink's temperature lets it."""
         if len(group.levels) == 1:
             return 0
         surface = self.surface_c() - (self._now[self._k.COOLANT] if group.on_rise else 0.0)
-        return int(np.searchsorted(group.up_c, surface))
+        low, high = int(np.searchsorted(group.up_c, surface)), int(np.searchsorted(group.down_c, surface))
+        share = self._places.get(group.on_rise)
+        return low if share is None else min(max(round(share * (len(group.levels) - 1)), low), high)
 
     def _step_level(self, group: int) -> None:
         """The sink has passed a threshold: the level that its temperature asks for, at least the next one up or down."""
         one, k = self._levels.groups[group], self._k
         surface = self.surface_c() - (self._now[k.COOLANT] if one.on_rise else 0.0)
-        place = one.levels.index(self.level)
         if surface > self._settings[k.SURFACE_UP]:
-            place = max(place + 1, int(np.searchsorted(one.up_c, surface)))
+            self._at = max(self._at + 1, int(np.searchsorted(one.up_c, surface)))
         else:
-            place = min(place - 1, int(np.searchsorted(one.down_c, surface)))
-        self._change(one.levels[place])
+            self._at = min(self._at - 1, int(np.searchsorted(one.down_c, surface)))
+        self._change(one.levels[self._at])
         self._set_look(group)
 
     def _runaway_words(self, chip, op, mod_index):
@@ -511,15 +523,16 @@ class ElectrothermalMarch:
                          frequency_hz=op[k.FREQ], direction=op[k.DIRECTION], switching_frequency_hz=op[k.FSW],
                          dc_voltage_v=op[k.V_DC])
         state = held.settle(op[k.T_COOLANT])
+        kept = " and the cooling of this moment" if self._levels.count > 1 else ""
         where = (f"{self.chip_names[chip]} passes {stop:g} degC at {self._now[k.TIME]:.6g} s into the mission (coolant {op[k.T_COOLANT]:g} degC, "
                  f"peak current {op[k.I_PEAK]:.4g} A, output frequency {op[k.FREQ]:.4g} Hz)")
         if state.exists:
-            return (f"far too hot: {where}. Held for ever, this operating point would settle with a mean of {state.t_vj_c.max():.0f} degC in its hottest chip; "
+            return (f"far too hot: {where}. Held for ever, this operating point{kept} would settle with a mean of {state.t_vj_c.max():.0f} degC in its hottest chip; "
                     "no device lives there: lower current, frequency or coolant, or cool better")
         limit = held.runaway_coolant_c(op[k.T_COOLANT])
         known = "at no coolant temperature" if limit is None or limit < -200.0 else f"only with a coolant below {limit:.0f} degC"
         return (f"no stable temperature exists: {where}. The losses grow faster with temperature than the cooling carries away (loop gain "
-                f"{state.loop_gain:.2f}, stable below 1); held for ever, this operating point is stable {known}: lower current, frequency or coolant, or cool better")
+                f"{state.loop_gain:.2f}, stable below 1); held for ever, this operating point{kept} is stable {known}: lower current, frequency or coolant, or cool better")
 
     def finish(self) -> None:
         """Close the mission: hand over what the turning-point filters still hold; states are physical afterwards."""
@@ -563,7 +576,7 @@ class ElectrothermalMarch:
             # the switching frequency follows the temperature from piece to piece
             pieces = np.where(points.i_peak_a > 0.0, np.maximum(pieces, np.clip(np.ceil(dt_s / DERATE_EVERY_S - 1e-9), 1, 200000)), pieces)
         if self._controlled:
-            pieces = np.maximum(pieces, np.clip(np.ceil(dt_s / LOOK_EVERY_S - 1e-9), 1, 20000))
+            pieces = np.maximum(pieces, np.clip(np.ceil(dt_s / LOOK_EVERY_S - 1e-9), 1, 200000))
         if np.isfinite(self.settings.watch_c):
             pieces = np.maximum(pieces, np.clip(np.ceil(dt_s - 1e-9), 1, 20000))
         return pieces.astype(int)

@@ -10,13 +10,36 @@ The formulas follow from the dq model
     T = 3/2 p (psi + (L_d - L_q) i_d) i_q
 
 by setting the derivative of the torque along the circle of constant current to zero.
+A saturated machine has psi_d and psi_q in place of L_d i_d + psi and L_q i_q, from a table, and
+T = 3/2 p (psi_d i_q - psi_q i_d); its places are searched.
 """
 
 from __future__ import annotations
 
 import numpy as np
 
+from .saturation import flux_map
+from .searching import close_in, first_fit, most_torque
 from .spec import SynchronousMachine
+
+
+def flux_linkages_wb(machine: SynchronousMachine, i_d_a, i_q_a):
+    """Flux linkages psi_d, psi_q [Wb peak] of peak phase currents [A]; NaN outside a saturation table.
+
+    Examples
+    --------
+    >>> m = SynchronousMachine(
+    ...     kind="synchronous",
+    ...     pole_pairs=4,
+    ...     r_s_ohm=0.02,
+    ...     saturation={"over": "current", "i_peak_a": [0, 200], "l_d_h": [4e-4, 3e-4], "l_q_h": [8e-4, 4e-4], "psi_pm_wb": [0.2, 0.2]},
+    ... )
+    >>> [round(float(x), 6) for x in flux_linkages_wb(m, 0.0, 100.0)]
+    [0.2, 0.06]
+    """
+    if machine.saturation is not None:
+        return flux_map(machine.saturation).flux_wb(i_d_a, i_q_a)
+    return machine.l_d_h * np.asarray(i_d_a, float) + machine.psi_pm_wb, machine.l_q_h * np.asarray(i_q_a, float)
 
 
 def dq_voltages_v(machine: SynchronousMachine, omega_rad_s, i_d_a, i_q_a):
@@ -35,16 +58,17 @@ def dq_voltages_v(machine: SynchronousMachine, omega_rad_s, i_d_a, i_q_a):
     v_d_v, v_q_v : ndarray
         Peak phase voltages [V].
     """
-    w = np.asarray(omega_rad_s, float)
+    w, r = np.asarray(omega_rad_s, float), machine.r_s_warm_ohm
     i_d, i_q = np.asarray(i_d_a, float), np.asarray(i_q_a, float)
-    return machine.r_s_ohm * i_d - w * machine.l_q_h * i_q, machine.r_s_ohm * i_q + w * (
-        machine.l_d_h * i_d + machine.psi_pm_wb
-    )
+    psi_d, psi_q = flux_linkages_wb(machine, i_d, i_q)
+    return r * i_d - w * psi_q, r * i_q + w * psi_d
 
 
 def torque_of_currents_nm(machine: SynchronousMachine, i_d_a, i_q_a):
     """Air-gap torque [N m] of peak phase currents in rotor coordinates [A]."""
     i_d, i_q = np.asarray(i_d_a, float), np.asarray(i_q_a, float)
+    if machine.saturation is not None:
+        return 1.5 * machine.pole_pairs * flux_map(machine.saturation).cross(i_d, i_q)
     return 1.5 * machine.pole_pairs * (machine.psi_pm_wb + (machine.l_d_h - machine.l_q_h) * i_d) * i_q
 
 
@@ -60,7 +84,7 @@ def mtpa_from_current(machine: SynchronousMachine, i_peak_a):
     Returns
     -------
     i_d_a, i_q_a : ndarray
-        ``i_q_a`` >= 0; brake with ``-i_q_a``.
+        ``i_q_a`` >= 0; brake with ``-i_q_a``. NaN beyond a saturation table.
 
     Examples
     --------
@@ -71,6 +95,8 @@ def mtpa_from_current(machine: SynchronousMachine, i_peak_a):
     [0.0, 100.0]
     """
     i = np.asarray(i_peak_a, float)
+    if machine.saturation is not None:
+        return flux_map(machine.saturation).on_line("size", i)
     dl = machine.l_q_h - machine.l_d_h
     # written without the difference of two nearly equal roots, so that dl = 0 is no special case
     below = machine.psi_pm_wb + np.sqrt(machine.psi_pm_wb**2 + 8.0 * dl**2 * i**2)
@@ -94,10 +120,13 @@ def mtpa_from_torque(machine: SynchronousMachine, torque_nm):
     Returns
     -------
     i_d_a, i_q_a : ndarray
-        ``i_q_a`` has the sign of the torque.
+        ``i_q_a`` has the sign of the torque. NaN beyond a saturation table.
     """
     torque = np.asarray(torque_nm, float)
     tau = np.abs(torque) / (1.5 * machine.pole_pairs)
+    if machine.saturation is not None:
+        i_d, i_q = flux_map(machine.saturation).on_line("cross", tau)
+        return i_d, np.copysign(i_q, torque)
     psi, dl = machine.psi_pm_wb, abs(machine.l_q_h - machine.l_d_h)
     with np.errstate(divide="ignore", invalid="ignore"):
         i_q = np.minimum(tau / psi if psi > 0 else np.inf, np.sqrt(tau / dl) if dl > 0 else np.inf)
@@ -140,76 +169,26 @@ def weaken_at_current(machine: SynchronousMachine, omega_rad_s, i_d_a, i_q_a, v_
     size, sign = np.hypot(i_d_a, i_q_a), np.where(np.signbit(i_q_a), -1.0, 1.0)
     start = np.arctan2(np.abs(i_q_a), i_d_a)
     end = np.full_like(start, np.pi)
-    if machine.l_d_h > machine.l_q_h:
+    if machine.saturation is None and machine.l_d_h > machine.l_q_h:
         # beyond this i_d the torque would change its sign
         ratio = machine.psi_pm_wb / ((machine.l_d_h - machine.l_q_h) * np.where(size > 0.0, size, 1.0))
         end = np.arccos(-np.minimum(ratio, 1.0))
 
-    def volts(angle, rows=slice(None)):
-        return np.hypot(
-            *dq_voltages_v(machine, w[rows], size[rows] * np.cos(angle), sign[rows] * size[rows] * np.sin(angle))
-        )
+    def currents(place, rows):
+        angle = start[rows] + (end - start)[rows] * place
+        # at the end of the way the sine of pi is not quite zero
+        return size[rows] * np.cos(angle), sign[rows] * size[rows] * np.abs(np.sin(angle))
 
-    # The voltage need not fall all the way (braking with a large resistance): look along the
-    # whole way for the first angle that fits, then close in on it.
-    low = start.copy()
-    high = np.full_like(start, np.nan)
-    best, best_v = start.copy(), volts(start)
-    parts = 48
-    for k in range(1, parts + 1):
-        angle = start + (end - start) * (k / parts)
-        v = volts(angle)
-        fits = np.isnan(high) & (v <= v_max)
-        high[fits] = angle[fits]
-        low = np.where(np.isnan(high), angle, low)
-        better = v < best_v
-        best, best_v = np.where(better, angle, best), np.where(better, v, best_v)
-    missed = np.flatnonzero(np.isnan(high))
-    if missed.size:
-        # a window narrower than one part: look at the lowest point itself (golden section)
-        width = (end[missed] - start[missed]) / parts
-        a, b = np.maximum(best[missed] - width, start[missed]), np.minimum(best[missed] + width, end[missed])
-        gold = (np.sqrt(5.0) - 1.0) / 2.0
-        for _ in range(40):
-            c, d = b - gold * (b - a), a + gold * (b - a)
-            left = volts(c, missed) < volts(d, missed)
-            a, b = np.where(left, a, c), np.where(left, d, b)
-        middle = 0.5 * (a + b)
-        v = volts(middle, missed)
-        better = v < best_v[missed]
-        best_v[missed] = np.where(better, v, best_v[missed])
-        fits = v <= v_max[missed]
-        high[missed[fits]] = middle[fits]
-        low[missed[fits]] = np.maximum(best[missed] - width, start[missed])[fits]
-    found = np.flatnonzero(~np.isnan(high))
-    if found.size:
-        high[found] = _close_in(lambda x: volts(x, found) - v_max[found], low[found], high[found])
-        best_v[found] = volts(high[found], found)
-    # at the end of the way the sine of pi is not quite zero
-    return size * np.cos(high), sign * size * np.abs(np.sin(high)), best_v
+    def load(place, rows):
+        i_d, i_q = currents(place, rows)
+        share = np.hypot(*dq_voltages_v(machine, w[rows], i_d, i_q)) / v_max[rows]
+        if machine.saturation is None:
+            return share
+        against = sign[rows] * torque_of_currents_nm(machine, i_d, i_q) < -1e-9 * size[rows]
+        return np.where(np.isnan(share) | against, np.inf, share)
 
-
-def _close_in(excess, low, high):
-    """Root between ``low`` (excess > 0) and ``high`` (excess <= 0), from the side that fits.
-
-    False position with the weight of a stuck end halved (Illinois), all rows at once.
-    """
-    f_low, f_high = excess(low), excess(high)
-    side = np.zeros(low.shape, int)
-    for _ in range(80):
-        with np.errstate(divide="ignore", invalid="ignore"):
-            x = (low * f_high - high * f_low) / (f_high - f_low)
-        x = np.where((x > low) & (x < high), x, 0.5 * (low + high))
-        f = excess(x)
-        fits = f <= 0.0
-        f_low = np.where(fits & (side == 1), 0.5 * f_low, f_low)
-        f_high = np.where(~fits & (side == -1), 0.5 * f_high, f_high)
-        high, f_high = np.where(fits, x, high), np.where(fits, f, f_high)
-        low, f_low = np.where(fits, low, x), np.where(fits, f_low, f)
-        side = np.where(fits, 1, -1)
-        if ((high - low) <= 4e-16 * np.abs(high)).all() or (f_high == 0.0).all():
-            break
-    return high
+    place, least = first_fit(load, size.size)
+    return *currents(place, slice(None)), least * v_max
 
 
 def weaken_at_torque(machine: SynchronousMachine, omega_rad_s, torque_nm, i_d_a, v_max_v):
@@ -236,9 +215,11 @@ def weaken_at_torque(machine: SynchronousMachine, omega_rad_s, torque_nm, i_d_a,
     i_d_a, i_q_a : ndarray, shape (n,)
         NaN where no point of the curve fits.
     """
+    if machine.saturation is not None:
+        return _weaken_saturated(machine, omega_rad_s, torque_nm, i_d_a, v_max_v)
     w, tau = np.asarray(omega_rad_s, float), np.asarray(torque_nm, float) / (1.5 * machine.pole_pairs)
     limit = np.asarray(v_max_v, float) ** 2
-    r, l_d, l_q, psi = machine.r_s_ohm, machine.l_d_h, machine.l_q_h, machine.psi_pm_wb
+    r, l_d, l_q, psi = machine.r_s_warm_ohm, machine.l_d_h, machine.l_q_h, machine.psi_pm_wb
     dl = l_q - l_d
     i_d = np.array(i_d_a, float)
     lost = np.zeros(i_d.shape, bool)
@@ -269,19 +250,81 @@ def weaken_at_torque(machine: SynchronousMachine, omega_rad_s, torque_nm, i_d_a,
     return i_d, np.where(lost, np.nan, i_q_at(np.where(lost, i_d_a, i_d)))
 
 
-def largest_torque_nm(machine: SynchronousMachine, omega_rad_s: float, v_max_v: float, wanted_nm: float) -> float:
-    """How much of ``wanted_nm`` the voltage allows at this speed, whatever the current [N m]."""
-    low, high = 0.0, 1.0
-    for _ in range(60):
-        middle = 0.5 * (low + high)
-        torque = np.array([middle * wanted_nm])
-        i_d, i_q = mtpa_from_torque(machine, torque)
-        v = np.hypot(*dq_voltages_v(machine, omega_rad_s, i_d, i_q))
-        if v[0] > v_max_v:
-            i_d, _ = (
-                weaken_at_torque(machine, np.array([omega_rad_s]), torque, i_d, np.array([v_max_v]))
-                if omega_rad_s > 0
-                else (np.array([np.nan]), None)
-            )
-        low, high = (low, middle) if np.isnan(i_d[0]) else (middle, high)
-    return low * wanted_nm
+def _weaken_saturated(machine, omega_rad_s, torque_nm, i_d_a, v_max_v):
+    """The same along the curve of constant torque of a table, whose i_q is searched for every i_d."""
+    w, torque, v_max = (np.asarray(a, float) for a in (omega_rad_s, torque_nm, v_max_v))
+    flux, tau, start = flux_map(machine.saturation), np.abs(torque) / (1.5 * machine.pole_pairs), np.array(i_d_a, float)
+
+    def currents(place, rows):
+        i_d, wanted = start[rows] + (flux.low_a - start[rows]) * place, tau[rows]
+        top = flux.top_a(i_d)
+        at_top = flux.cross(i_d, top)
+        there = (wanted > 0.0) & (at_top >= wanted)
+        share = np.zeros(i_d.shape)
+        k = np.flatnonzero(there)
+        share[k] = close_in(lambda u: wanted[k] - flux.cross(i_d[k], u * top[k]), np.zeros(k.size), np.ones(k.size))
+        return i_d, np.where(there | (wanted == 0.0), np.copysign(share * top, torque[rows]), np.nan)
+
+    def load(place, rows):
+        share = np.hypot(*dq_voltages_v(machine, w[rows], *currents(place, rows))) / v_max[rows]
+        return np.where(np.isnan(share), np.inf, share)
+
+    # every place costs a search of its own: fewer of them
+    return currents(first_fit(load, start.size, parts=16)[0], slice(None))
+
+
+def largest_torque(machine: SynchronousMachine, omega_rad_s, torque_nm, v_max_v, i_peak_max_a):
+    """Currents of the largest torque in a direction that voltage, current and table allow.
+
+    Up to the speed at which the voltage runs short that is the most torque for the
+    current; then voltage and current bind together; where the machine has such a speed, in the end
+    the most torque for the voltage, with less than the full current.
+
+    Parameters
+    ----------
+    machine : SynchronousMachine
+    omega_rad_s : ndarray, shape (n,)
+        Electrical, >= 0 [rad/s].
+    torque_nm : ndarray, shape (n,)
+        Only its sign counts: negative brakes.
+    v_max_v : ndarray, shape (n,)
+        Largest peak phase voltage [V].
+    i_peak_max_a : float
+        Largest peak phase current, may be infinite where the voltage binds [A].
+
+    Returns
+    -------
+    i_d_a, i_q_a : ndarray, shape (n,)
+        NaN where no current at all fits, or where the best lies on the edge of a saturation table.
+    """
+    w, v_max, sign = np.asarray(omega_rad_s, float), np.asarray(v_max_v, float), np.where(np.signbit(torque_nm), -1.0, 1.0)
+    if machine.saturation is None:
+        # the currents of one size of voltage are an ellipse
+        r, x_d, x_q = machine.r_s_warm_ohm, w * machine.l_d_h, w * machine.l_q_h
+        with np.errstate(divide="ignore", invalid="ignore"):
+            det = r**2 + x_d * x_q
+            middle, width = -w * x_q * machine.psi_pm_wb / det, np.hypot(r, x_q) * v_max / det
+            outer = (np.hypot(r, x_d) * v_max - sign * r * w * machine.psi_pm_wb) / det
+        still = det == 0.0
+        low, high = (np.where(still, s * i_peak_max_a, np.clip(middle + s * width, -i_peak_max_a, i_peak_max_a)) for s in (-1.0, 1.0))
+        outer = np.where(still, i_peak_max_a, np.minimum(outer, i_peak_max_a))
+
+        def top(i_d, rows):
+            return outer[rows]
+    else:
+        flux = flux_map(machine.saturation)
+        low, high = (np.full(w.shape, np.clip(end, -i_peak_max_a, i_peak_max_a)) for end in (flux.low_a, flux.high_a))
+
+        def top(i_d, rows):
+            return np.minimum(flux.top_a(i_d), i_peak_max_a)
+
+    def load(i_d, i_q, rows):
+        share = np.hypot(*dq_voltages_v(machine, w[rows], i_d, sign[rows] * i_q)) / v_max[rows]
+        return np.where(np.isnan(share), np.inf, np.maximum(share, np.hypot(i_d, i_q) / i_peak_max_a))
+
+    i_d, i_q = most_torque(load, lambda i_d, i_q, rows: torque_of_currents_nm(machine, i_d, i_q), low, high, top)
+    if machine.saturation is not None:
+        # the end of the table is no limit of the machine
+        lost = flux.on_edge(i_d, i_q)
+        i_d, i_q = np.where(lost, np.nan, i_d), np.where(lost, np.nan, i_q)
+    return i_d, sign * i_q

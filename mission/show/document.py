@@ -10,6 +10,7 @@ import math
 import platform
 from importlib.metadata import PackageNotFoundError, version
 
+import numpy as np
 from pydantic import BaseModel, ConfigDict, Field
 
 from .. import __version__
@@ -181,7 +182,8 @@ class ResultDocument(_Part):
     study_file: str
     complete: bool = Field(description="false: stopped before the mission's end; lives then stand for the part that was marched")
     passes: int = Field(description="how often the mission was marched until it closed on itself")
-    closes_within_k: float | None = Field(description="largest junction difference between start and end [K]")
+    closes_within_k: float | None = Field(description="largest junction difference between start and end, or what is left to the start that repeats itself [K]")
+    closed: bool = Field(description="false: a mission that should repeat did not close on its start; a cooling that switches differently from pass to pass does that")
     ok: bool = Field(description="every limit and the target met")
     limits: list[LimitEntry]
     duty: DutyEntry
@@ -209,6 +211,10 @@ CAUTIONS = (
 )
 
 
+NOT_CLOSED = ("the mission does not close on its start: {:.3g} K are left after {}; a cooling that switches differently from mission to mission does that. "
+              "Temperatures and damage stand for one of these missions; give several of them as one duty")
+
+
 def rests_on(result) -> list[str]:
     """What the result rests on, in sentences for the report."""
     study, history, tables, net = result.study, result.history, result.tables, result.network
@@ -223,6 +229,7 @@ def rests_on(result) -> list[str]:
     if history.beyond_data_s[worst] > 0.0:
         out.append(f"{history.chips[worst]} is under load for {history.beyond_data_s[worst]:.4g} s ({history.beyond_data_s[worst] / history.duration_s:.1%} of the mission) "
                    f"outside {low:g} to {high:g} degC, the temperatures of the data-sheet curves; losses are extended in a straight line there")
+    out.extend(result.shortfall.words())
     out.extend(_how_losses(study))
     if result.carriers_min < FEW_CARRIERS:
         out.append(f"losses: down to {result.carriers_min:.3g} switching periods in an output period; losses are means over a switching period and mean little below {FEW_CARRIERS}")
@@ -242,8 +249,11 @@ def rests_on(result) -> list[str]:
     if not result.complete:
         out.append("the run did not reach the mission's end, so it could not close on its start; the residue is counted as half cycles")
     elif study.spec.march.start == "repeat":
-        out.append(f"the mission repeats: start and end temperatures agree within {result.closes_within_k:.2g} K after {result.passes} pass"
-                   f"{'es' if result.passes > 1 else ''}")
+        passes = f"{result.passes} pass{'es' if result.passes > 1 else ''}"
+        if result.closed:
+            out.append(f"the mission repeats: start and end temperatures agree within {result.closes_within_k:.2g} K after {passes}")
+        else:
+            out.append(NOT_CLOSED.format(result.closes_within_k, passes))
     else:
         out.append(f"the mission starts with everything at the coolant's temperature and ends {result.closes_within_k:.3g} K away from its start")
     out.append("residue of the rainflow count: closed by repeating the mission" if study.spec.lifetime.residue == "repeat" else
@@ -308,7 +318,7 @@ def build_document(result) -> ResultDocument:
         tested_range=m.model.tested_range, options=dict(m.model.options), threshold_k=m.threshold_k) for m in study.modes]
     return ResultDocument(
         program=f"kelvinledger {__version__}", study=study.name, study_file=study.source, complete=result.complete, passes=result.passes,
-        closes_within_k=_end(result.closes_within_k), ok=result.ok,
+        closes_within_k=_end(result.closes_within_k), closed=result.closed, ok=result.ok,
         limits=[LimitEntry(what=v.what, value=_end(v.value), limit=v.limit, unit=v.unit, met=v.met, margin=_end(v.margin), where=v.where)
                 for v in result.verdicts],
         duty=DutyEntry(
@@ -330,6 +340,35 @@ def build_document(result) -> ResultDocument:
     )
 
 
+#: Air that warms by more than this is no longer at its inlet's temperature [K].
+_AIR_WARMS_K = 30.0
+
+
+def heat_flags(result) -> tuple[str, ...]:
+    """What to mistrust in the cooling: what its levels say, and what only the heat of the run shows."""
+    record, history, spec = result.cooling, result.history, result.study.spec.cooling
+    out = list(record.flags)
+    points = [(one, one.state.point) for one in record.used if one.state.point is not None and one.state.point.outlet_rise_k_per_w is not None]
+    if points:
+        # heat that flows for minutes: the sink does not see shorter peaks
+        width = max(1, int(np.ceil(120.0 * history.coolant_c.size / history.duration_s)))
+        heat = np.convolve(history.loss_w.sum(axis=1), np.ones(width) / width, mode="same").max()
+        least = max(points, key=lambda p: p[1].outlet_rise_k_per_w)
+        rise = heat * least[1].outlet_rise_k_per_w
+        hot = float(history.coolant_c.max()) + rise
+        liquid = spec.kind == "liquid-plate" or getattr(spec, "fluid", "air") != "air"
+        if liquid and hot > 100.0:
+            out.append(f"at {heat:.4g} W and the weakest flow that held ({least[0].state.words}) the coolant would leave at {hot:.0f} degC; boiling is not reckoned")
+        elif liquid and float(history.case_peak_c.max()) > 110.0:
+            out.append(f"the case reaches {history.case_peak_c.max():.0f} degC over a liquid; whether it boils at the channel walls is not reckoned")
+        elif not liquid and rise > _AIR_WARMS_K:
+            out.append(f"at {heat:.4g} W and the weakest flow that held ({least[0].state.words}) the air warms by {rise:.0f} K")
+        mean = history.energy_j.sum() / history.duration_s
+        if spec.heat_w is not None and not 0.5 * mean <= spec.heat_w <= 1.2 * heat:
+            out.append(f"fluid properties are taken at heat_w = {spec.heat_w:g} W; the run gives {mean:.4g} W in the mean and up to {heat:.4g} W over two minutes")
+    return tuple(out)
+
+
 def _cooling(result) -> CoolingEntry:
     record = result.cooling
     levels = []
@@ -340,7 +379,7 @@ def _cooling(result) -> CoolingEntry:
             flow_m3_per_s=None if p is None else p.flow_m3_per_s, pressure_drop_pa=None if p is None else p.pressure_drop_pa, regime=None if p is None else p.regime))
     changes = [ChangeEntry(time_s=t, setting=record.plan.state(k).words) for t, k in record.changes[:20]]
     return CoolingEntry(kind=record.plan.spec.kind, levels=levels, changes=record.n_changes, first_changes=changes, change_error=record.move_error,
-                        flags=list(record.flags), sources=list(record.sources))
+                        flags=list(heat_flags(result)), sources=list(record.sources))
 
 
 def _how_heat(result):
@@ -366,7 +405,7 @@ def _how_heat(result):
         yield f"cooling: case-to-sink resistances times {span} for the age of the grease, a course that the study states"
     if record.plan.computed and spec.heat_w is None and spec.kind not in ("flow-table", "plate-fin-natural"):
         yield "cooling: fluid properties at the inlet temperature, as no heat_w is given; the coolant's own rise is in the resistance"
-    for text in record.flags:
+    for text in heat_flags(result):
         yield f"cooling, to be mistrusted: {text}"
 
 

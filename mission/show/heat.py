@@ -39,6 +39,7 @@ def heat_text(review: HeatReview) -> str:
         case = f"{review.case_c[k]:9.1f}" if module.case_to_sink is not None else f"{'-':>9}"
         lines.append(f"  {way.name + ', ' + part_words(module, way.place):<22} {way.loss_w:8.1f} {review.junction_c[k]:9.1f} {case} "
                      f"{review.surface_c[k]:9.1f} {review.coolant_at_c[k]:9.1f}")
+    lines += [f"  to know: {one}" for one in _doubts(review)]
     for way in review.ways:
         lines += ["", *_way_lines(way)]
     effect = [line for way in review.ways for line in _conductivity_lines(way)]
@@ -57,7 +58,18 @@ def _losses_words(review):
         return f"mean losses of the mission, {whole}, at its mean coolant temperature"
     point = review.result.hot_point
     turning = f"{number(point.frequency_hz, 3)} Hz" if point.frequency_hz > 0.0 else "standstill"
-    return f"its hottest moment (at {point.end_s:.6g} s: {number(point.i_peak_a / 2**0.5, 3)} A rms, {turning}) held for ever, without ripple, {whole}"
+    load = f"{number(point.i_peak_a / 2**0.5, 3)} A rms, {turning}"
+    return f"its hottest moment (at {point.end_s:.6g} s: {load}) held for ever, without ripple, {whole}"
+
+
+def _doubts(review):
+    low, high = review.result.tables.temperature_data_c
+    if review.junction_c.max() > high or review.junction_c.min() < low:
+        yield f"junctions stand outside {low:g} to {high:g} degC, the data sheet's curves; losses there are extended in straight lines"
+    setting, rise = review.result.cooling.plan.levels[review.level].setting, review.surface_c[0] - review.coolant_c
+    # a step of the resistance is less than a tenth of a rise, so only rises beyond the first and the last step are told
+    if setting.what == "still air" and abs(rise / setting.value - 1.0) > 0.1:
+        yield f"the sink stands {number(rise, 3)} K above the air; {number(setting.value, 3)} K is the nearest rise that still air is reckoned for"
 
 
 def _way_lines(way):
@@ -77,7 +89,9 @@ def _conductivity_lines(way):
     yield f"  {way.name:<20} {'mean, degC':>11} {'reckoned':>9} {'there':>9} W/(m K) {'resistance':>11}"
     for row in rows:
         name = one_line(row.material, 12) + (" (plate)" if row.part == "plate" else "")
-        there = f"{row.k_there_w_per_m_k:9.1f}         {row.change_percent:+10.1f} %" if np.isfinite(row.k_there_w_per_m_k) else "  outside the tested range of its law"
+        there = "  outside the tested range of its law"
+        if np.isfinite(row.k_there_w_per_m_k):
+            there = f"{row.k_there_w_per_m_k:9.1f}         {row.change_percent:+10.1f} %"
         yield f"    {name:<20} {row.mean_c:9.1f} {row.k_w_per_m_k:9.1f} {there}"
     more = sum(row.drop_k * row.change_percent / 100.0 for row in rows if row.part == "chip" and np.isfinite(row.k_there_w_per_m_k))
     if any(row.part == "chip" for row in rows):
@@ -87,8 +101,8 @@ def _conductivity_lines(way):
 def _mutual_lines(review):
     hot, rise = review.hottest, review.r_junction_k_per_w[review.hottest] * review.loss_w
     module = review.result.study.module
-    yield (f"  {review.chips[hot]} stands {rise.sum():.2f} K above the coolant at the inlet: {rise[hot]:.2f} K by its own heat ({review.r_junction_k_per_w[hot, hot]:.4g} K/W), "
-           f"{rise.sum() - rise[hot]:.2f} K by that of other chips")
+    yield (f"  {review.chips[hot]} stands {rise.sum():.2f} K above the coolant at the inlet: {rise[hot]:.2f} K by its own heat "
+           f"({review.r_junction_k_per_w[hot, hot]:.4g} K/W), {rise.sum() - rise[hot]:.2f} K by that of other chips")
     if module.plate is None and not module.coupling:
         return
     r = review.r_junction_k_per_w[hot].copy()
@@ -119,8 +133,9 @@ def _reduction_lines(review):
 def _cooling_lines(review):
     state, spec = review.state, review.result.study.spec.cooling
     p = state.point
-    yield (f"  cooling: {spec.kind}, {state.words}; {1000.0 * state.r_th_k_per_w:.4g} K/kW from surface to coolant" + (" at the inlet, mean of a row of sinks" if state.path.first_to_last else "")
-           + f", {number(review.loss_w.sum())} W through it")
+    row = " at the inlet, mean of a row of sinks" if state.path.first_to_last else ""
+    yield (f"  cooling: {spec.kind}, {state.words}; {1000.0 * state.r_th_k_per_w:.4g} K/kW from surface to coolant{row}, "
+           f"{number(review.loss_w.sum())} W through it")
     if review.wavers is not None:
         yield f"    it does not come to rest, but goes to and fro with {review.wavers.words}, {1000.0 * review.wavers.r_th_k_per_w:.4g} K/kW"
     if state.path.paste != 1.0:
@@ -130,12 +145,14 @@ def _cooling_lines(review):
         return
     unit, per = _flow_unit(_is_air(p.kind, spec))
     facts = [
-        ("flow", p.flow_m3_per_s, lambda v: f"{number(per * v)} {unit.replace('³', '3')}"), ("pressure", p.pressure_drop_pa, lambda v: f"{number(v)} Pa"),
+        ("flow", p.flow_m3_per_s, lambda v: f"{number(per * v)} {unit.replace('³', '3')}"),
+        ("pressure", p.pressure_drop_pa, lambda v: f"{number(v)} Pa"),
         ("kind of flow", p.regime, lambda v: v + ("" if p.reynolds is None else f", Reynolds number {number(p.reynolds, 3)}")),
         ("reckoned for", p.inlet_c, lambda v: f"{number(v)} degC at the inlet" + ("" if p.heat_w is None else f" and {number(p.heat_w)} W")),
         ("coolant's own rise", p.outlet_rise_k_per_w, lambda v: f"{v * review.loss_w.sum():.2f} K at these losses"),
         ("film", p.film_w_per_m2_k, lambda v: f"{number(v, 3)} W/(m2 K)"), ("efficiency of the fins", p.fin_efficiency, lambda v: f"{v:.1%}"),
-        ("base", p.r_base_k_per_w, lambda v: f"{1000.0 * v:.3g} K/kW of the above"), ("spreading in the base", p.r_spreading_k_per_w, lambda v: f"{1000.0 * v:.3g} K/kW of the above"),
+        ("base", p.r_base_k_per_w, lambda v: f"{1000.0 * v:.3g} K/kW of the above"),
+        ("spreading in the base", p.r_spreading_k_per_w, lambda v: f"{1000.0 * v:.3g} K/kW of the above"),
         ("radiation", p.radiated_share, lambda v: f"{v:.0%} of the heat"),
     ]
     yield from (f"    {name:<22} {words(value)}" for name, value, words in facts if value is not None)
@@ -156,8 +173,8 @@ def heat_frames(review: HeatReview) -> dict:
     dict of DataFrame
         ``resistances``: ``chip``, ``heated``, ``r_th_junction_k_per_w``, ``r_th_case_k_per_w``, steady and over the coolant at the inlet;
         ``impedance``: ``time_s`` and the rise of every junction per watt in the hottest chip, in columns such as ``S-a-up z_th_k_per_w``;
-        ``layers``, if any: ``chip``, ``part``, ``material``, ``thickness_mm``, ``r_k_per_w``, ``upper_c``, ``lower_c``, ``drop_k`` (for each layer of a plate the
-        faces of the whole), ``k_w_per_m_k``, ``k_there_w_per_m_k``, ``change_percent``.
+        ``layers``, if any: ``chip``, ``part``, ``material``, ``thickness_mm``, ``r_k_per_w``, ``upper_c``, ``lower_c``, ``drop_k`` (for each layer
+        of a plate the faces of the whole), ``k_w_per_m_k``, ``k_there_w_per_m_k``, ``change_percent``.
     """
     import pandas as pd
 
@@ -167,13 +184,13 @@ def heat_frames(review: HeatReview) -> dict:
     t = np.geomspace(0.01 / rates.max(), 10.0 / rates.min(), 301)
     z = step_response_k_per_w(net, t, review.hottest)
     out = {
-        "resistances": pd.DataFrame({"chip": np.repeat(names, n), "heated": np.tile(names, n), "r_th_junction_k_per_w": review.r_junction_k_per_w.ravel(),
-                                     "r_th_case_k_per_w": review.r_case_k_per_w.ravel()}),
+        "resistances": pd.DataFrame({
+            "chip": np.repeat(names, n), "heated": np.tile(names, n), "r_th_junction_k_per_w": review.r_junction_k_per_w.ravel(),
+            "r_th_case_k_per_w": review.r_case_k_per_w.ravel()}),
         "impedance": pd.DataFrame({"time_s": t, **{f"{name} z_th_k_per_w": z[:, k] for k, name in enumerate(names)}}),
     }
-    layers = [{"chip": way.name, **{k: v for k, v in row._asdict().items() if k not in ("k_w_per_m_k", "k_there_w_per_m_k", "has_law")}, "drop_k": row.drop_k,
-               "k_w_per_m_k": row.k_w_per_m_k, "k_there_w_per_m_k": row.k_there_w_per_m_k, "change_percent": row.change_percent}
-              for way in review.ways for row in way.layers]
+    columns = ("part", "material", "thickness_mm", "r_k_per_w", "upper_c", "lower_c", "drop_k", "k_w_per_m_k", "k_there_w_per_m_k", "change_percent")
+    layers = [{"chip": way.name, **{name: getattr(row, name) for name in columns}} for way in review.ways for row in way.layers]
     if layers:
         out["layers"] = pd.DataFrame.from_records(layers)
     return out
@@ -190,8 +207,8 @@ def heat_figures(review: HeatReview) -> dict:
     Returns
     -------
     dict of Figure
-        ``drop``, ``impedance``; with a curve of fan or pump ``working-point``; ``resistance-over-flow`` or ``resistance-over-rise`` where the resistance is reckoned;
-        with a plate ``plate-map`` and ``spreading``.
+        ``drop``, ``impedance``; with a curve of fan or pump ``working-point``; ``resistance-over-flow`` or ``resistance-over-rise`` where the
+        resistance is reckoned; with a plate ``plate-map`` and ``spreading``.
     """
     study = review.result.study
     hot, spec, point, materials = review.hottest, study.spec.cooling, review.state.point, study.materials()
@@ -245,5 +262,6 @@ def write_heat(review: HeatReview, folder) -> list[Path]:
     from .folder import ResultFolder
 
     target = ResultFolder(folder)
-    tables = [target.text(f"{name}.csv", frame.to_csv(index=False, lineterminator="\n", float_format="%.7g")) for name, frame in heat_frames(review).items()]
+    tables = [target.text(f"{name}.csv", frame.to_csv(index=False, lineterminator="\n", float_format="%.7g"))
+              for name, frame in heat_frames(review).items()]
     return [target.text("heat.txt", heat_text(review) + "\n"), *tables, *target.figures(heat_figures(review))[0]]

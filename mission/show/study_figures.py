@@ -162,13 +162,15 @@ def rating_frame(ratings):
     return pd.DataFrame.from_records([
         {"output_frequency_hz": r.point.frequency_hz, "switching_frequency_hz": r.point.switching_frequency_hz, "coolant_c": r.point.coolant_c,
          "dc_voltage_v": r.point.dc_voltage_v, "mod_index": r.point.modulation_index(), "power_factor": r.point.power_factor,
-         "largest_current_a_rms": r.current_a, "limited_by": r.limited_by, "hottest_chip": r.chip, "t_vj_max_c": r.t_vj_max_c} for r in ratings])
+         "largest_current_a_rms": r.current_a, "limited_by": r.limited_by, "hottest_chip": r.chip, "t_vj_max_c": r.t_vj_max_c,
+         "cooling": r.cooling} for r in ratings])
 
 
 def rating_text(ratings, title: str) -> str:
     """A table for the terminal."""
     lines = [title, f"  {'output, Hz':>10} {'switching, Hz':>14} {'largest current, A rms':>24} {'junction, degC':>15}   limited by"]
     for r in ratings:
-        lines.append(f"  {r.point.frequency_hz:>10g} {r.point.switching_frequency_hz:>14g} {r.current_a:>24.1f} {r.t_vj_max_c:>15.1f}   {r.limited_by} ({r.chip})")
-    lines.append("  Held for ever, ripple included; 0 Hz: standstill at its worst angle.")
+        lines.append(f"  {r.point.frequency_hz:>10g} {r.point.switching_frequency_hz:>14g} {r.current_a:>24.1f} {r.t_vj_max_c:>15.1f}   {r.limited_by} ({r.chip})"
+                     + ("" if r.cooling == "as given" else f"; cooling {r.cooling}"))
+    lines.append("  Held for ever, ripple included, without faults of the cooling; 0 Hz: standstill at its worst angle.")
     return "\n".join(lines)

@@ -182,4 +182,8 @@ def _notes(results, names):
 def _word(value):
     if value is None:
         return "nothing"
+    if isinstance(value, dict):
+        return "{" + ", ".join(f"{k} {_word(v)}" for k, v in value.items()) + "}"
+    if isinstance(value, (list, tuple)):
+        return "[" + ", ".join(_word(v) for v in value) + "]" if value else "nothing"
     return f"{value:g}" if isinstance(value, (int, float)) and not isinstance(value, bool) else str(value)

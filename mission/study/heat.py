@@ -12,11 +12,11 @@ from typing import NamedTuple
 import numpy as np
 
 from ..errors import InputError, NoStableTemperature, RangeError
+from ..history.steady import BEYOND_C
 from ..thermal import FourierStack, FullNetwork, LevelState, ReducedNetwork, SinkPath, plate_stack
 from ..thermal.build import chip_ladder, full_and_reduced
 from ..thermal.coupling import without_mutual
 from .run import MissionResult
-from .verdicts import Stability
 
 #: Step of a way: what modules before have warmed the coolant by.
 WARMED_BEFORE = "coolant warmed before"
@@ -226,9 +226,9 @@ def review_heat(result: MissionResult, *, held: bool = False) -> HeatReview:
 
     Notes
     -----
-    Means start with the level of the cooling that held longest and the mean temperature of the coolant, the hottest point with its own. Where the temperature
-    of the sink chooses among levels, the one is taken at which it comes to rest. Resistances do not depend on temperature within a level, so
-    with means the temperatures are means too wherever the cooling keeps one level.
+    Means start with the level of the cooling that held longest and the mean temperature of the coolant, the hottest point with its own. Where
+    the temperature of the sink chooses among levels, the one is taken at which it comes to rest. Resistances do not depend on temperature
+    within a level, so with means the temperatures are means too wherever the cooling keeps one level.
     """
     if not result.complete:
         raise InputError("result", f"a run that was stopped at {result.history.duration_s:.6g} s", "a whole mission", "run it to its end")
@@ -244,7 +244,7 @@ def review_heat(result: MissionResult, *, held: bool = False) -> HeatReview:
             at.r_k_per_w = at.r_k_per_w + (plan.state(k).r_th_k_per_w - base)
             return at.settle(coolant).loss_w
     else:
-        start, coolant = result.cooling.used[0].level, float(np.average(history.coolant_c, weights=np.diff(history.edge_s)))
+        start, coolant = result.cooling.used[0].level, float(history.coolant_c.mean())  # stretches of one length
         mean = history.energy_j / history.duration_s
 
         def losses(k):
@@ -258,8 +258,11 @@ def review_heat(result: MissionResult, *, held: bool = False) -> HeatReview:
         at = point.held(result.tables, network)
         steady = at.settle(coolant)
         if not steady.exists:
-            words = Stability(at.loop_gain(point.t_vj_c), None, at.runaway_coolant_c(coolant), coolant).words
-            raise NoStableTemperature(f"{study.source}: {words}; cooling: {state.words}")
+            edge = at.runaway_coolant_c(coolant)
+            why = "" if edge is None else f"; losses run away with a coolant above {edge:.0f} degC (now {coolant:.0f} degC)"
+            raise NoStableTemperature(
+                f"{study.source}: no stable temperature below {BEYOND_C:g} degC exists if the hottest moment of the mission, at {point.end_s:.6g} s, "
+                f"lasts for ever{why}; cooling: {state.words}, {1000.0 * state.r_th_k_per_w:.4g} K/kW")
         loss = steady.loss_w
     else:
         loss = mean
@@ -268,11 +271,12 @@ def review_heat(result: MissionResult, *, held: bool = False) -> HeatReview:
     surface, coolant_at = _surfaces(state.path, loss, coolant)
     groups = np.arange(loss.size).reshape(-1, 6)
     chips = [int(g[np.argmax(junction[g])]) for g in groups]
-    ways = tuple(_way(study.module, materials, state.path, chip, loss, (junction[chip], case[chip], surface[chip], coolant_at[chip], coolant)) for chip in chips)
+    ways = tuple(_way(study.module, materials, state.path, chip, loss, (junction[chip], case[chip], surface[chip], coolant_at[chip], coolant))
+                 for chip in chips)
     hot = int(np.argmax(junction))
     plate = None if study.module.plate is None else _plate(study.module, materials, state.path, hot, loss, surface[hot])
-    return HeatReview(result, held, level, state, None if other is None else plan.state(other), coolant, loss, junction, case, surface, coolant_at, r_junction, r_case,
-                      full, network, wall, ways, plate)
+    return HeatReview(result, held, level, state, None if other is None else plan.state(other), coolant, loss, junction, case, surface, coolant_at,
+                      r_junction, r_case, full, network, wall, ways, plate)
 
 
 def _resting_level(plan, start, coolant_c, losses):
@@ -324,7 +328,8 @@ def _way(module, materials, path, chip, losses_w, temperatures_c) -> ChipWay:
     pair = module.chip_pairs()[chip // 6]
     thermal, under = pair.thermal, module.case_to_sink
     if thermal.layer:
-        own = [(f"{layer.material}, {layer.thickness_mm:g} mm", r) for layer, r in zip(thermal.layer, chip_ladder(thermal, materials, f"{pair.place}.thermal").r_layers_k_per_w)]
+        shares = chip_ladder(thermal, materials, f"{pair.place}.thermal").r_layers_k_per_w
+        own = [(f"{layer.material}, {layer.thickness_mm:g} mm", r) for layer, r in zip(thermal.layer, shares)]
     else:
         own = [(f"junction to {'sink' if under is None else 'case'}", sum(thermal.r_k_per_w))]
     steps, face = [], junction

@@ -64,6 +64,8 @@ class Rating:
     t_vj_max_c : float
         Its highest temperature in the periodic state, ripple included [degC].
     point : RatingPoint
+    cooling : str
+        Setting of the cooling that the sink's temperature keeps there, without faults, with the grease of the mission's start.
     """
 
     current_a: float
@@ -71,6 +73,7 @@ class Rating:
     chip: str
     t_vj_max_c: float
     point: RatingPoint
+    cooling: str = "as given"
 
 
 class RatingBench:
@@ -96,16 +99,32 @@ class RatingBench:
         self.study = study
         spec, module = study.spec, study.module
         self.tables = build_tables(module, spec.inverter.modulation, **spec.inverter.table_options())
-        plan = study.cooling_plan()
-        self.network = plan.networks().network(plan.strongest())
+        self._plans: dict[float, tuple] = {}
+        self._engines: dict[tuple, tuple] = {}
         self.limit_c = junction_limit_c(study)
         peak = module.ratings.i_peak_repetitive_a if spec.limits.i_peak_max_a is None else spec.limits.i_peak_max_a
         self.peak_a = min(peak, current_reach_a(module))
-        settings = MarchSettings(f_slow_hz=spec.march.slow_below_hz, steps_per_period=spec.march.steps_per_period, t_stop_c=1000.0)
-        self._engine = ElectrothermalMarch(self.tables, self.network, settings)
+        self._settings = MarchSettings(f_slow_hz=spec.march.slow_below_hz, steps_per_period=spec.march.steps_per_period, t_stop_c=1000.0)
+        low, high = study.coolant_range_c()
+        self._cool(0.5 * (low + high))
+
+    def _cool(self, coolant_c: float, place: int = -1):
+        """Take the cooling at a coolant temperature, at a place among the levels that its sink chooses from (-1: the strongest); returns the plan and the group."""
+        coolant_c = float(coolant_c)
+        if coolant_c not in self._plans:
+            plan = self.study.cooling_plan(coolant_c)
+            self._plans[coolant_c] = plan, plan.networks(), plan.sound_group()
+        plan, networks, group = self._plans[coolant_c]
+        level = group.levels[place]
+        if (coolant_c, level) not in self._engines:
+            network = networks.network(level)
+            self._engines[coolant_c, level] = network, ElectrothermalMarch(self.tables, network, self._settings)
+        self.network, self._engine = self._engines[coolant_c, level]
+        self._cooling = plan.state(level)
+        return group
 
     def periodic_peak_c(self, point: RatingPoint, i_peak_a: float) -> np.ndarray:
-        """Highest temperature of every chip in the periodic state, shape (n,) [degC]; infinite where none is stable.
+        """Highest temperature of every chip in the periodic state on the cooling taken last, shape (n,) [degC]; infinite where none is stable.
 
         Where the module states a spread of parallel chips it is that of the favoured one. A standstill is taken at its
         worst angle. Schedules over output frequency and current lower the switching frequency of the point.
@@ -119,13 +138,14 @@ class RatingBench:
         state = HeldPoint(self.tables, self.network, theta_rad=theta, **load).settle(point.coolant_c)
         if not state.exists:
             return np.full(n, np.inf)
+        self._heat_w = float(state.loss_w.sum())
         if still or i_peak_a == 0.0:
             return self._with_favoured(state.t_vj_c, point.coolant_c + self.network.r_case_k_per_w() @ state.loss_w, i_peak_a)
         net, f = self.network, point.frequency_hz
         states = MarchState((net.rho_local / net.lam_local_per_s * state.loss_w).ravel(), net.b_shared @ state.loss_w / net.lam_shared_per_s, point.coolant_c)
         # whole periods, long enough for the local modes to feel their own swing
         periods = max(1, round(0.2 * f)) if f < self._engine.settings.f_slow_hz else max(4, round(f))
-        row = OperatingPoints(*(np.array([v]) for v in (f, 1.0, i_peak_a, m, phi, 0.0, np.nan, np.nan, np.nan, np.nan)))
+        row = OperatingPoints(*(np.array([v]) for v in (f, 1.0, i_peak_a, m, phi, 0.0, np.nan, np.nan, np.nan, np.nan, 0.0, 0.0)))
         peak = state.t_vj_c
         for _ in range(60):
             self._engine.start(point.coolant_c, states=states)
@@ -169,18 +189,36 @@ class RatingBench:
             A frequency, modulation index or power factor outside its range.
         """
         self._check(point)
+        group = self._cool(point.coolant_c)
+        place, tried = len(group.levels) - 1, set()
+        while True:
+            found = self._largest(point)
+            if not group.up_c:
+                return found
+            # the level must be one that the sink's temperature would keep there; between two that send each other away the weaker one counts
+            tried.add(place)
+            surface = self._surface_rise_k + (0.0 if group.on_rise else point.coolant_c)
+            wanted = int(np.searchsorted(group.down_c, surface))
+            if wanted >= place or wanted in tried:
+                return found
+            place = wanted
+            self._cool(point.coolant_c, place)
+
+    def _largest(self, point: RatingPoint) -> Rating:
         low, high = 0.0, self.peak_a
         peak = self.periodic_peak_c(point, high)
         if peak.max() <= self.limit_c:
+            self._surface_rise_k = self._heat_w * self._cooling.r_th_k_per_w
             return self._rating(point, high, PEAK, peak)
         peak_low = self.periodic_peak_c(point, 0.0)
+        self._surface_rise_k = 0.0
         if peak_low.max() > self.limit_c:
             return self._rating(point, 0.0, JUNCTION, peak_low)
         while high - low > WITHIN * self.peak_a:
             middle = 0.5 * (low + high)
             peak = self.periodic_peak_c(point, middle)
             if peak.max() <= self.limit_c:
-                low, peak_low = middle, peak
+                low, peak_low, self._surface_rise_k = middle, peak, self._heat_w * self._cooling.r_th_k_per_w
             else:
                 high = middle
         return self._rating(point, low, JUNCTION, peak_low)
@@ -195,7 +233,7 @@ class RatingBench:
 
     def _rating(self, point, i_peak, why, peak):
         hot = int(np.argmax(peak))
-        return Rating(float(i_peak / np.sqrt(2.0)), why, self.study.module.chip_names()[hot], float(peak[hot]), point)
+        return Rating(float(i_peak / np.sqrt(2.0)), why, self.study.module.chip_names()[hot], float(peak[hot]), point, self._cooling.words)
 
     def _check(self, point):
         require_range("frequency_hz", point.frequency_hz, low=0.0, high=2000.0, unit="Hz")

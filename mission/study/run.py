@@ -15,7 +15,7 @@ from ..errors import InputError, MissionError
 from ..history import MOST_PIECES, ElectrothermalMarch, EnvelopeBuilder, HeldPoint, JunctionHistory, MarchSettings
 from ..lifetime import DamageLedger
 from ..losses import LossTables, build_tables
-from ..machine import operating_points
+from ..machine import Shortfall, operating_points
 from ..thermal import CoolingPlan, LevelState, ReducedNetwork
 from .cyclemap import CycleMap
 from .spec import Study
@@ -24,6 +24,8 @@ BLOCK_ROWS = 65536
 #: A repeated mission starts and ends at the same temperatures within this [K], or this share of its largest swing.
 PERIODIC_WITHIN_K, PERIODIC_WITHIN_SHARE = 0.02, 0.002
 MAX_PASSES = 40
+#: Rows whose peaks differ by less than this are equally hot [K].
+HOT_ALIKE_K = 0.1
 
 Progress = Callable[[float, str], None]
 
@@ -128,6 +130,8 @@ class MissionResult:
     network : ReducedNetwork
         The one in force at the hottest point.
     cooling : CoolingRecord
+    shortfall : Shortfall
+        What a machine with ``beyond = "limit"`` could not deliver.
     tables : LossTables
     cycles : CycleTable or None
         Every counted cycle, if they were kept in memory.
@@ -144,7 +148,9 @@ class MissionResult:
     passes : int
         How often the mission was marched until it closed on itself.
     closes_within_k : float
-        Largest temperature difference between start and end.
+        Largest temperature difference between start and end, or what is left to the start that would repeat itself.
+    closed : bool
+        False when a mission that should repeat did not close on its start.
     wall_s : float
         Time the run took.
     """
@@ -155,6 +161,7 @@ class MissionResult:
     cycle_map: CycleMap
     network: ReducedNetwork
     cooling: CoolingRecord
+    shortfall: Shortfall
     tables: LossTables
     cycles: CycleTable | None
     hot_point: HotPoint
@@ -168,6 +175,7 @@ class MissionResult:
     complete: bool
     passes: int
     closes_within_k: float
+    closed: bool
     wall_s: float
 
     @property
@@ -233,28 +241,73 @@ def run(study: Study, *, progress: Progress | None = None, keep_cycles: bool = T
     settings = MarchSettings(f_slow_hz=spec.march.slow_below_hz, steps_per_period=spec.march.steps_per_period,
                              watch_c=np.inf if study.module.ratings.t_vj_overload_c is None else study.module.ratings.t_vj_op_max_c)
     states, theta = None, np.radians(spec.march.start_angle_deg)
-    known = None
+    known, seeker = None, _StartSeeker()
     for passes in range(1, MAX_PASSES + 1):
         one = _Pass(study, tables, plan, networks, settings, states, theta, progress, passes, keep_cycles, cycle_sink)
         one.march()
-        swing = float((one.envelope.peak_c - one.envelope.lowest_c).max())
-        if not one.complete or spec.march.start == "coolant" or one.closes_within_k <= max(PERIODIC_WITHIN_K, PERIODIC_WITHIN_SHARE * swing):
+        if not one.complete or spec.march.start == "coolant":
+            closed = True
             break
-        states = one.next_start()
+        swing = float((one.envelope.peak_c - one.envelope.lowest_c).max())
+        states, off_k = seeker.next(one) if networks.count > 1 else one.next_start()
+        one.closes_within_k = max(one.closes_within_k, off_k)
+        closed = one.closes_within_k <= max(PERIODIC_WITHIN_K, PERIODIC_WITHIN_SHARE * swing)
+        if closed or seeker.exhausted:
+            break
         if one.loaded_joint:
             # the current goes on through the joint, and so does its angle
             theta = one.engine.angle_rad
         # with losses that hardly depend on temperature the closing value falls fast; stop when it no longer does
-        if known is not None and passes > 4 and one.closes_within_k > 0.9 * known:
+        if networks.count == 1 and known is not None and passes > 4 and one.closes_within_k > 0.9 * known:
             break
         known = one.closes_within_k
     if one.complete and spec.march.start == "repeat":
         one.envelope.join_ends()
     one.close(spec.lifetime.residue)
     return MissionResult(
-        study, one.envelope.finish(one.marched_s), one.ledger, one.cycle_map, networks.network(one.hot_point.level), one.cooling_record(networks), tables, one.kept(),
-        one.hot_point, one.i_peak_max, one.dc_voltage_max, one.fsw_max, one.coolant_max, one.mod_index_max, one.frequency_max, one.carriers_min, one.complete, passes, one.closes_within_k, time.perf_counter() - begin,
+        study, one.envelope.finish(one.marched_s), one.ledger, one.cycle_map, networks.network(one.hot_point.level), one.cooling_record(networks), one.shortfall, tables, one.kept(),
+        one.hot_point, one.i_peak_max, one.dc_voltage_max, one.fsw_max, one.coolant_max, one.mod_index_max, one.frequency_max, one.carriers_min, one.complete, passes, one.closes_within_k, closed, time.perf_counter() - begin,
     )
+
+
+class _StartSeeker:
+    """Seeks the start that repeats itself where the cooling changes.
+
+    What the sink's surface gains over a pass is a function of where it starts. The first steps go where the modes of the levels met would
+    go; once one start gains and another loses, the next lies between them (regula falsi, Illinois rule). A controller that switches
+    differently from pass to pass may have no such start.
+    """
+
+    def __init__(self):
+        self._gains = self._loses = None  # (start, what is gained) on either side
+        self._side = 0
+        self.exhausted = False
+
+    def next(self, one):
+        """States to begin the next pass with, and the distance from this pass's start [K]."""
+        engine, start = one.engine, one.start_surface_c
+        end = engine.surface_c()
+        gain = end - start
+        if gain >= 0.0:
+            self._gains = [start, gain]
+            if self._side == 1 and self._loses is not None:
+                self._loses[1] *= 0.5
+            self._side = 1
+        else:
+            self._loses = [start, gain]
+            if self._side == -1 and self._gains is not None:
+                self._gains[1] *= 0.5
+            self._side = -1
+        far = engine.surface_c(one.next_states(1.0)) - end
+        if self._gains is None or self._loses is None:
+            # not beyond what still resembles the levels that were met
+            reach = 2.0 * abs(end - one.coolant_start_c) + 20.0
+            target = end + float(np.clip(far, -reach, reach))
+        else:
+            (a, up), (b, down) = self._gains, self._loses
+            target = b - down * (b - a) / (down - up) if down != up else 0.5 * (a + b)
+            self.exhausted = abs(a - b) < 0.5 * PERIODIC_WITHIN_K and abs(gain) > PERIODIC_WITHIN_K
+        return one.next_states((target - end) / far if abs(far) > 1e-9 else 0.0), abs(target - start)
 
 
 class _Pass:
@@ -273,7 +326,8 @@ class _Pass:
         self.engine = ElectrothermalMarch(tables, networks, settings, derating=study.spec.inverter.derating, on_points=self._points, on_ripple=self._ripples)
         self.i_peak_max = self.mod_index_max = self.frequency_max = self.dc_voltage_max = self.fsw_max = 0.0
         self.coolant_max, self.hot_c, self.hot_point, self.loaded_joint, self.carriers_min = -np.inf, -np.inf, None, False, np.inf
-        self._group = None  # of the cooling, in the latest row
+        self.shortfall = Shortfall()
+        self._group, self._levelled = None, networks.count > 1  # group of the cooling in the latest row
         self.complete, self.marched_s, self._tables_kept = True, 0.0, []
 
     def _points(self, p):
@@ -313,6 +367,7 @@ class _Pass:
                 t_cool = block.columns["coolant_c"] if coolant is None else np.full(n, coolant)
                 points = operating_points(block, spec.machine, dc_voltage_v=v_study, mod_index_max=spec.inverter.mod_index_max,
                                           where=profile.source)
+                self.shortfall += Shortfall.of(points, block.time_s, block.dt_s)
                 row, start_s, dt_s = cut_rows(block.time_s, block.dt_s, self.plan.cut_s)
                 if row.size > n:
                     points, v_dc, t_cool, n = points.rows(row), v_dc[row], t_cool[row], row.size
@@ -325,6 +380,8 @@ class _Pass:
                     starts_loaded = bool(points.i_peak_a[0] > 0.0)
                     self._start_states = self.engine.states
                     self._start_c = self.engine.junction_c
+                    if self._levelled:
+                        self.start_surface_c, self.coolant_start_c = self.engine.surface_c(), float(t_cool[0])
                     first = False
                 # hand the kernel a few thousand rows at a time, fewer of long ones, so that a stop is heard between them and cycles do not pile up
                 work = np.concatenate([[0], np.cumsum(self.engine.pieces(points, dt_s))])
@@ -367,12 +424,17 @@ class _Pass:
 
     def _note_hottest(self, rows, points, v_dc):
         hot = rows.t_max_c.max(axis=1)
-        k = int(np.argmax(hot))
-        if hot[k] > self.hot_c:
+        # the first moment of a pause is as hot as the end of the load before it: the load is the point that matters
+        alike = np.flatnonzero((hot >= hot.max() - HOT_ALIKE_K) & (points.i_peak_a > 0.0))
+        k = int(alike[0]) if alike.size else int(np.argmax(hot))
+        if hot[k] > self.hot_c + (0.0 if alike.size else HOT_ALIKE_K):
             self.hot_c = float(hot[k])
             self.hot_point = HotPoint(*(float(v[k]) for v in (points.i_peak_a, points.mod_index, points.phi_rad, points.frequency_hz, points.direction,
                                                                rows.switching_hz, v_dc, rows.coolant_c, rows.end_s)),
                                       int(rows.phase_id[k]), float(rows.theta_rad[k]), int(rows.level[k]), rows.t_max_c[k].copy(), rows.case_max_c[k].copy())
+
+    def next_states(self, far):
+        return self.engine.periodic_start(self._start_states, self.marched_s, far)
 
     def cooling_record(self, networks):
         time_s, changes = self.engine.level_time_s, self.engine.changes
@@ -381,7 +443,14 @@ class _Pass:
                              networks.largest_move_error)
 
     def next_start(self):
-        return self.engine.periodic_start(self._start_states, self.marched_s)
+        """Start of the mission if it were repeated for ever, and how far it lies from this pass's start [K]."""
+        engine = self.engine
+        found = engine.periodic_start(self._start_states, self.marched_s)
+        local, shared = found.local - self._start_states.local, found.shared - self._start_states.shared
+        off = local.reshape(engine.network.lam_local_per_s.shape).sum(axis=0) + engine.network.c_shared @ shared
+        if self.loaded_joint:
+            off = off.reshape(-1, 3, 2).mean(axis=1)
+        return found, float(np.abs(off).max())
 
     def close(self, residue):
         self._take(self.counter.drain())

@@ -222,8 +222,8 @@ class Study:
         given = self.spec.cooling.coolant_c
         return self.profile.ranges["coolant_c"] if given is None else (given, given)
 
-    def cooling_plan(self) -> CoolingPlan:
-        """Levels of the cooling, and which holds when."""
+    def cooling_plan(self, coolant_c: float | None = None) -> CoolingPlan:
+        """Levels of the cooling, and which holds when; at one ``coolant_c`` [degC] in place of the duty's, if given."""
         flow = self.profile.ranges.get("flow_m3_per_s")
         still = flow is not None and flow[0] == 0.0
         if still:
@@ -232,7 +232,7 @@ class Study:
             if not np.isfinite(flow[0]):
                 raise InputError(f"{self.profile.source}, column for flow", "no flow at all", "a flow in some rows", "take the column out and give the sink as it stands without flow")
         try:
-            plan = CoolingPlan(self.spec.cooling, self.module, coolant_c=self.coolant_range_c(), flow_m3_per_s=flow, stands_still=still, duration_s=self.profile.duration_s,
+            plan = CoolingPlan(self.spec.cooling, self.module, coolant_c=self.coolant_range_c() if coolant_c is None else (coolant_c, coolant_c), flow_m3_per_s=flow, stands_still=still, duration_s=self.profile.duration_s,
                                materials=self.materials(), relative_tolerance=self.spec.march.network_tolerance)
         except InputError as err:
             raise err.at(self.source) from None
@@ -257,7 +257,12 @@ class Study:
             raise InputError("section", f"'{section}'", "one of " + ", ".join(StudySpec.model_fields))
         if not isinstance(data[section], dict):
             raise InputError("section", f"'{section}', which is a single value", "one of " + ", ".join(k for k, v in data.items() if isinstance(v, dict)))
-        data[section] = {**data[section], **values}
+        old = data[section]
+        if "kind" in values and values["kind"] != old.get("kind"):
+            # fields of another kind mean nothing here; what every kind has stays
+            known = {"coolant_c", "sink_sees", "grease"} if section == "cooling" else set()
+            old = {k: v for k, v in old.items() if k in known}
+        data[section] = {**old, **values}
         spec = parse_model(data, StudySpec, self.source)
         return _assemble(spec, self.source, self.folder, profile=self.profile if section != "duty" else None)
 
@@ -335,17 +340,18 @@ def _check_together(study: Study) -> None:
     if spec.inverter.stray_inductance_nh is not None and module.switching is None:
         raise InputError(f"{study.source}, field inverter.stray_inductance_nh", f"{spec.inverter.stray_inductance_nh:g} nH, and no section switching in {module.name}",
                          "a module file with [switching] (its own inductance and fall time)", "add the section to the module file, or take the field out")
-    needs = {"synchronous": ("speed_rad_s",), "direct": ("frequency_hz", "mod_index", "phi_rad", "current_a")}[spec.machine.kind]
+    needs = {"synchronous": ("speed_rad_s",), "induction": ("speed_rad_s",), "induction-vf": ("frequency_hz" if "frequency_hz" in has else "speed_rad_s",),
+             "direct": ("frequency_hz", "mod_index", "phi_rad", "current_a")}[spec.machine.kind]
     words = {"speed_rad_s": "speed", "frequency_hz": "frequency", "mod_index": "mod_index", "phi_rad": "displacement or power_factor", "current_a": "current"}
     for quantity in needs:
         if quantity not in has:
             raise InputError(f"{study.source}, section duty.columns", f"no column for {words[quantity]}",
                              f"{words[quantity]}, which machine.kind = '{spec.machine.kind}' needs", "map the column, or choose another machine.kind")
-    if spec.machine.kind == "synchronous":
+    if spec.machine.kind != "direct":
         if ("current_a" in has) == ("torque_nm" in has):
             raise InputError(f"{study.source}, section duty.columns", "both current and torque" if "current_a" in has else "neither current nor torque",
                              "current or torque, one of them", "map one of the two columns")
-        extra = {"frequency_hz", "mod_index", "phi_rad"} & has
+        extra = {"speed_rad_s", "frequency_hz", "mod_index", "phi_rad"} - set(needs) & has
     else:
         extra = {"speed_rad_s", "torque_nm"} & has
     if extra:
@@ -395,5 +401,7 @@ def check_parts(study: Study) -> None:
             for level in {group.levels[0], group.levels[-1]} if len(plan.groups) <= 4 else {group.levels[0]}:
                 plan.state(level)
         check_fit(tables, networks.network(0))
+        for level in {plan.groups[0].levels[0], plan.groups[-1].levels[-1]} if len(plan.levels) > 1 else ():
+            networks.network(level)
     except InputError as err:
-        raise err.at(study.source) from None
+        raise (err if err.where.startswith(study.source) else err.at(study.source)) from None

@@ -153,12 +153,15 @@ class Stability:
         Coolant from which on that point, lasting for ever, runs away; None if it never does.
     coolant_c : float
         Coolant at that point.
+    cooling : str
+        Setting of the cooling at that point, where it has several; it is taken to stay.
     """
 
     loop_gain: float
     settles_at_c: float | None
     runaway_coolant_c: float | None
     coolant_c: float
+    cooling: str = ""
 
     @property
     def words(self) -> str:
@@ -171,7 +174,8 @@ class Stability:
             coolant = "no coolant temperature makes it run away"
         else:
             coolant = f"it runs away with a coolant above {self.runaway_coolant_c:.0f} degC (now {self.coolant_c:.0f} degC)"
-        return f"thermal stability at the hottest point of the mission: loop gain {self.loop_gain:.2f} (stable below 1); {fate}; {coolant}"
+        kept = f", with the cooling of that moment ({self.cooling})" if self.cooling else ""
+        return f"thermal stability at the hottest point of the mission{kept}: loop gain {self.loop_gain:.2f} (stable below 1); {fate}; {coolant}"
 
 
 def stability(result) -> Stability:
@@ -179,7 +183,8 @@ def stability(result) -> Stability:
     point = result.hot_point
     held = point.held(result.tables, result.network)
     state = held.settle(point.coolant_c)
-    return Stability(held.loop_gain(point.t_vj_c), float(state.t_vj_c.max()) if state.exists else None, held.runaway_coolant_c(point.coolant_c), point.coolant_c)
+    return Stability(held.loop_gain(point.t_vj_c), float(state.t_vj_c.max()) if state.exists else None, held.runaway_coolant_c(point.coolant_c), point.coolant_c,
+                     result.cooling.plan.state(point.level).words if len(result.cooling.plan.levels) > 1 else "")
 
 
 def _stability(result):

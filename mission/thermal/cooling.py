@@ -49,7 +49,7 @@ class Law(FileModel):
     """Speed or flow over a temperature, straight between the points and constant beyond them.
 
     ``watch``: the sink's ``surface`` or the ``coolant`` at its inlet. It is followed in steps that change the sink's resistance by no
-    more than 4 %; over the surface a step down needs ``hysteresis_k`` less than the step up.
+    more than 2 %; over the surface a step down needs ``hysteresis_k`` (1 K) less than the step up.
     """
 
     watch: Literal["surface", "coolant"]
@@ -57,7 +57,7 @@ class Law(FileModel):
     speed_ratio: tuple[_Speed, ...] | None = None
     flow_l_per_min: tuple[_Positive, ...] | None = None
     flow_m3_per_h: tuple[_Positive, ...] | None = None
-    hysteresis_k: Annotated[float, Field(strict=True, ge=0.2, le=30)] = 1.0
+    hysteresis_k: Annotated[float, Field(strict=True, ge=0.2, le=30)] | None = None
 
     @model_validator(mode="after")
     def _sensible(self):
@@ -67,7 +67,18 @@ class Law(FileModel):
         if len(getattr(self, given[0])) != len(self.at_c):
             raise RangeError(given[0], f"{len(getattr(self, given[0]))} values beside {len(self.at_c)} temperatures", "one for every temperature", "complete the shorter list")
         rising("at_c", self.at_c)
+        course = getattr(self, given[0])
+        for k, (a, b) in enumerate(zip(course, course[1:]), 2):
+            if b < a:
+                raise RangeError(given[0], f"{b:g} at point {k} after {a:g}", "a course that does not fall with temperature", "check the order of the points")
+        if self.watch == "coolant" and self.hysteresis_k is not None:
+            raise RangeError("hysteresis_k", f"{self.hysteresis_k:g} K with watch = 'coolant'", "no hysteresis there", "the coolant does not feel the flow: take it out")
         return self
+
+    @property
+    def hysteresis(self) -> float:
+        """How much the surface must fall below a step before it is taken back [K]."""
+        return 1.0 if self.hysteresis_k is None else self.hysteresis_k
 
     @property
     def quantity(self) -> str:
@@ -161,6 +172,10 @@ class CoolingBase(FileModel):
             if high.down_below_c >= low.up_above_c - 0.2:
                 raise RangeError(f"stage[{number}].down_below_c", f"{high.down_below_c:g} degC below a stage that ends at {low.up_above_c:g} degC",
                                  "at least 0.2 K less than up_above_c of the stage before", "without a gap the stages would chatter")
+        for name, values in (("up_above_c", [s.up_above_c for s in self.stage[:-1]]), ("down_below_c", [s.down_below_c for s in self.stage[1:]])):
+            for number, (a, b) in enumerate(zip(values, values[1:]), 2 if name == "up_above_c" else 3):
+                if b <= a:
+                    raise RangeError(f"stage[{number}].{name}", f"{b:g} degC after {a:g} degC", "thresholds that rise from stage to stage", "weakest stage first")
         spans = sorted((f.at_s, np.inf if f.until_s is None else f.until_s) for f in self.fault)
         for (_, end), (begin, _) in zip(spans, spans[1:]):
             if begin < end:

@@ -30,6 +30,8 @@ COMPUTED = (TableSink, FanSink, NaturalSink, LiquidPlate)
 STEP = 0.02
 #: Rises over which still air is followed [K], and how much of a rise lies between the step up and the step down.
 _STILL_K, _STILL_GAP = (2.0, 250.0), 0.05
+#: More than this times the fresh grease is no grease any more; on plates :mod:`mission.thermal.plates` has a bound of its own.
+_MOST_PASTE = 5.0
 
 
 class Setting(NamedTuple):
@@ -109,23 +111,38 @@ class CoolingPlan:
         self._coolant, self._range = 0.5 * (coolant_c[0] + coolant_c[1]), coolant_c
         self._flows, self._stands_still = flow_m3_per_s, stands_still
         _check_parts(spec, module, flow_m3_per_s, stands_still)
+        for number, one in enumerate(spec.fault, 1):
+            if duration_s > 0.0 and one.at_s >= duration_s:
+                raise InputError(f"cooling.fault[{number}].at_s", f"{one.at_s:g} s", f"a time before the mission's end at {duration_s:.6g} s", "times count from the start of the mission, in seconds")
+        if spec.grease is not None and float(spec.grease.factor(duration_s)) > _MOST_PASTE:
+            raise RangeError("cooling.grease", f"a factor of {float(spec.grease.factor(duration_s)):.3g} on the resistance at the mission's end", f"at most {_MOST_PASTE:g}",
+                             "check growth, per_h (hours) and age_h; grease that far gone is a module that is no longer cooled")
         self._paste, self._paste_s = _paste_steps(spec.grease, duration_s)
         self._coolants, self._coolant_borders = self._coolant_steps(coolant_c)
         self._flow_values, self._flow_borders = self._flow_steps()
         #: Times at which rows must be cut [s].
         self.cut_s = np.unique([*self._paste_s, *(t for f in spec.fault for t in (f.at_s, f.until_s) if t is not None and 0.0 < t < duration_s)])
-        self.levels: list[Level] = []
+        #: What is left of the flow, without fault and with each kind of fault.
+        self._left = (1.0, *sorted({f.share for f in spec.fault}))
+        numbers: dict[Level, int] = {}
+        known: dict[tuple, tuple] = {}
         groups = []
-        for fault, paste, coolant, flow in product(self._faults(), self._paste, self._coolants, self._flow_values):
-            inside, borders = self._inside(fault, coolant, flow)
-            first = len(self.levels)
-            self.levels += [Level(s, coolant, paste) for s in inside]
-            groups.append(LevelGroup(tuple(range(first, first + len(inside))), *borders))
+        for left, paste, coolant, flow in product(self._left, self._paste, self._coolants, self._flow_values):
+            if (left, coolant, flow) not in known:
+                known[left, coolant, flow] = self._inside(left, coolant, flow)
+            inside, borders = known[left, coolant, flow]
+            groups.append(LevelGroup(tuple(numbers.setdefault(Level(s, coolant, paste), len(numbers)) for s in inside), *borders))
+        self.levels = list(numbers)
         self.groups = tuple(groups)
-        self._shape = (len(self._faults()), len(self._paste), len(self._coolants), len(self._flow_values))
+        self._shape = (len(self._left), len(self._paste), len(self._coolants), len(self._flow_values))
         if len(self.levels) > 1 and self._in_a_row():
             raise InputError("cooling.positions", f"{spec.positions} positions with a cooling that changes", "one position, or a cooling that stays",
                              "modules in a row feel each other through the coolant; that is reckoned for one flow only")
+        if spec.stage:
+            r = [self.state(k).r_th_k_per_w for k in self.groups[0].levels]
+            for number, (weak, strong) in enumerate(zip(r, r[1:]), 2):
+                if strong >= weak:
+                    raise InputError(f"cooling.stage[{number}]", f"a stage of {strong:.4g} K/W after one of {weak:.4g} K/W", "stages that cool better from one to the next", "weakest first")
         if any(len(g.levels) > 1 for g in groups) and not isinstance(self.state(0).path.ladders[0], CauerLadder):
             raise InputError("cooling.heat_capacity_j_per_k", "a sink without heat capacity, whose stages follow its temperature", "the heat capacity of the sink",
                              "without it the surface would jump with every stage")
@@ -145,8 +162,8 @@ class CoolingPlan:
         """
         time_s = np.asarray(time_s, float)
         fault = np.zeros(time_s.shape, int)
-        for k, one in enumerate(self.spec.fault, 1):
-            fault[(time_s >= one.at_s - 1e-9) & (time_s < (np.inf if one.until_s is None else one.until_s) - 1e-9)] = k
+        for one in self.spec.fault:
+            fault[(time_s >= one.at_s - 1e-9) & (time_s < (np.inf if one.until_s is None else one.until_s) - 1e-9)] = self._left.index(one.share, 1)
         paste = np.searchsorted(self._paste_s, time_s + 1e-9, side="right")
         places = (None, None) if before is None else np.unravel_index(before, self._shape)[2:]
         coolant = _settled(self._coolant_borders, coolant_c, places[0])
@@ -166,19 +183,9 @@ class CoolingPlan:
                 raise err.at(self.source) if self.source else err from None
         return self._states[k]
 
-    def strongest(self) -> int:
-        """Level at the start of the mission without fault, at its highest stage and largest flow, at the middle of the coolant's range.
-
-        Raises
-        ------
-        InputError
-            Still air whose resistance follows the rise: no single level stands for it.
-        """
-        if self._follows_rise():
-            raise InputError("cooling.kind", "still air that follows the rise of the sink", "heat_w or surface_c under [cooling] where a single resistance is needed",
-                             "give the heat or the surface temperature to reckon with")
-        group = np.ravel_multi_index((0, 0, len(self._coolants) // 2, len(self._flow_values) - 1 - self._stands_still), self._shape)
-        return self.groups[int(group)].levels[-1]
+    def sound_group(self) -> LevelGroup:
+        """Group at the start of the mission, without fault, at the largest flow of the duty and the middle of the coolant's range."""
+        return self.groups[int(np.ravel_multi_index((0, 0, len(self._coolants) // 2, len(self._flow_values) - 1 - self._stands_still), self._shape))]
 
     def networks(self) -> CoolingLevels:
         """The networks that the march goes through."""
@@ -243,9 +250,6 @@ class CoolingPlan:
         point = self._point(setting, coolant_c)
         return setting.value if point is None else point.r_th_k_per_w
 
-    def _faults(self):
-        return (None, *self.spec.fault)
-
     def _coolant_steps(self, coolant_c):
         """Coolant temperatures at which levels are reckoned, and the borders between them."""
         low, high = coolant_c
@@ -253,7 +257,7 @@ class CoolingPlan:
         if not isinstance(self.spec, COMPUTED) or (isinstance(self.spec, TableSink) and law is None) or high - low < 0.1 or self._in_a_row():
             return (self._coolant,), np.empty(0)
         if self._follows_rise() or self.spec.stage or (self.spec.law is not None and law is None):
-            trial = [self._inside(None, c, self._middle_flow())[0][0] for c in (low,)][0]
+            trial = self._inside(1.0, low, self._middle_flow())[0][0]
             return _steps(lambda c: self._r(trial, c), np.linspace(low, high, 9))
         return _steps(lambda c: self._r(self._setting(self._middle_flow(), c), c), np.union1d(np.linspace(low, high, 17), law.at_c if law else []).clip(low, high))
 
@@ -280,22 +284,23 @@ class CoolingPlan:
     def _follows_rise(self) -> bool:
         return isinstance(self.spec, NaturalSink) and self.spec.heat_w is None and self.spec.surface_c is None
 
-    def _inside(self, fault, coolant_c, flow):
-        """Settings among which the sink's temperature chooses, and (up, down, on rise) of their borders."""
+    def _inside(self, left, coolant_c, flow):
+        """Settings among which the sink's temperature chooses where a share ``left`` of the flow is left, and (up, down, on rise) of their borders."""
         spec = self.spec
-        if flow == 0.0 or (fault is not None and fault.share == 0.0):
+        if flow == 0.0 or left == 0.0:
             if spec.stopped.r_th_k_per_w is not None:
                 return [Setting("resistance", spec.stopped.r_th_k_per_w)], ()
             return self._still(coolant_c)
-        if fault is not None:
-            return [_less(spec, self._setting(flow, coolant_c), fault.share)], ()
+        if left < 1.0:
+            inside, borders = self._inside(1.0, coolant_c, flow)
+            return [_less(spec, one, left) for one in inside], borders
         if self._follows_rise():
             return self._still(coolant_c)
         if spec.stage:
             return [_stage_setting(s) for s in spec.stage], (tuple(s.up_above_c for s in spec.stage[:-1]), tuple(s.down_below_c for s in spec.stage[1:]))
         if spec.law is not None and spec.law.watch == "surface":
             at, borders = _steps(lambda t: self._r(_law_setting(spec.law, t), coolant_c), np.union1d(np.linspace(spec.law.at_c[0], spec.law.at_c[-1], 33), spec.law.at_c))
-            return [_law_setting(spec.law, t) for t in at], (tuple(borders), tuple(borders - spec.law.hysteresis_k))
+            return [_law_setting(spec.law, t) for t in at], (tuple(borders), tuple(borders - spec.law.hysteresis))
         return [self._setting(flow, coolant_c)], ()
 
     def _still(self, coolant_c):
@@ -347,14 +352,23 @@ def _has_curve(spec) -> bool:
 
 
 def _less(spec, setting: Setting, share: float) -> Setting:
-    """What a fault leaves."""
-    if setting.what in ("flow", "speed"):
-        return Setting(setting.what, setting.value * share)
-    if _has_curve(spec):
-        return Setting("speed", share)
-    if isinstance(spec, TableSink):
-        return Setting("flow", spec.at_m3_per_s * share)
-    return Setting("flow", share * (spec.flow_l_per_min / 60000.0 if isinstance(spec, LiquidPlate) else spec.flow_m3_per_h / 3600.0))
+    """What a fault leaves of a setting."""
+    where = "cooling.fault.share"
+    if setting.what == "resistance":
+        raise InputError(where, f"{share:g} beside stages given as resistances", "0 with [cooling.stopped], or stages by speed or flow", "nothing says what a part of the flow would do")
+    if setting.what == "given":
+        if _has_curve(spec):
+            setting = Setting("speed", 1.0)
+        elif isinstance(spec, TableSink):
+            setting = Setting("flow", spec.at_m3_per_s)
+        else:
+            setting = Setting("flow", spec.flow_l_per_min / 60000.0 if isinstance(spec, LiquidPlate) else spec.flow_m3_per_h / 3600.0)
+    if setting.what == "speed" and setting.value * share < 0.05:
+        raise RangeError(where, f"{share:g} of a speed of {setting.value:g}", "at least a twentieth of the speed of the curve, or 0", "take 0, with [cooling.stopped]")
+    if isinstance(spec, TableSink) and setting.value * share < spec.table_m3_per_s[0] * (1.0 - 1e-9):
+        raise RangeError(where, f"{share:g}, which leaves {setting.value * share * 60000.0:.4g} l/min", f"a flow of the table, from {spec.table_m3_per_s[0] * 60000.0:.4g} l/min on, or 0",
+                         "take 0, with [cooling.stopped], or extend the table")
+    return Setting(setting.what, setting.value * share)
 
 
 def _still_fins(spec, surface_c: float) -> NaturalSink:
@@ -402,6 +416,13 @@ def _check_parts(spec, module, flows, stands_still) -> None:
     if flows is not None or stands_still:
         if not flowing:
             raise InputError("cooling.kind", f"{kind} beside a flow column in the duty", "flow-table, plate-fin-fan or liquid-plate", "take the column out of duty.columns, or choose such a kind")
+        if isinstance(spec, TableSink) and flows is not None:
+            low, high = spec.table_m3_per_s[[0, -1]]
+            for one in flows:
+                if not low * (1 - 1e-9) <= one <= high * (1 + 1e-9):
+                    factor, unit = (60000.0, "l/min") if spec.flow_l_per_min is not None else (3600.0, "m3/h")
+                    raise RangeError("duty.columns.flow", f"{factor * one:.4g} {unit} in the duty", f"{factor * low:.4g} to {factor * high:.4g} {unit}, the flows of the table",
+                                     "check the unit of the column; the table is not continued beyond its ends")
         own = [n for n in ("stage", "law", "fan", "pump", "at_l_per_min", "at_m3_per_h") if getattr(spec, n, None)]
         own += [n for n in ("flow_l_per_min", "flow_m3_per_h") if not isinstance(spec, TableSink) and getattr(spec, n, None)]
         if own:
@@ -411,8 +432,8 @@ def _check_parts(spec, module, flows, stands_still) -> None:
     if spec.fault and not flowing and any(f.share > 0.0 for f in spec.fault):
         raise InputError("cooling.fault.share", f"a share of the flow with kind = {kind}, which has none", "0, with [cooling.stopped]")
     if spec.stopped is not None:
-        if not spec.fault and not stands_still:
-            raise InputError("cooling.stopped", "a section stopped that nothing leads to", "a fault, or rows of a flow column at 0", "add [[cooling.fault]], or take it out")
+        if all(f.share > 0.0 for f in spec.fault) and not stands_still:
+            raise InputError("cooling.stopped", "a section stopped that nothing leads to", "a fault with share 0, or rows of a flow column at 0", "add [[cooling.fault]], or take it out")
         if spec.stopped.emissivity is not None and not isinstance(spec, FanSink):
             raise InputError("cooling.stopped.emissivity", f"an emissivity with kind = {kind}", "emissivity with kind = 'plate-fin-fan' only", "give r_th_k_per_w")
     if isinstance(spec, NaturalSink) and (spec.stage or spec.fault or spec.law is not None):
@@ -427,5 +448,5 @@ def _check_parts(spec, module, flows, stands_still) -> None:
     if isinstance(spec, LiquidPlate) and spec.positions > 1 and (spec.positions != 3 or module.arrangement == "six-pack"):
         raise InputError("cooling.positions", f"{spec.positions} positions under {module.name}",
                          "1" if module.arrangement == "six-pack" else "1, or 3: one for each leg", "a six-pack is one module" if module.arrangement == "six-pack" else "")
-    if isinstance(spec, LiquidPlate) and spec.heat_shares is not None and min(spec.heat_shares) == 0.0:
-        raise RangeError("cooling.heat_shares", "a share of 0", "shares above 0 in a study", "every module of a bridge gives off heat")
+    if isinstance(spec, LiquidPlate) and spec.heat_shares is not None:
+        raise InputError("cooling.heat_shares", "shares in a study", "no such field", "the heat of each module comes from its losses: take it out")

@@ -251,7 +251,7 @@ class NaturalSink(_Finned):
 
     kind: Literal["plate-fin-natural"]
     emissivity: Annotated[float, Field(strict=True, ge=0, le=1)]
-    surface_c: Annotated[float, Field(strict=True, ge=-50, le=300)] | None = None
+    surface_c: Annotated[float, Field(strict=True, ge=-60, le=400)] | None = None
     surroundings_c: Annotated[float, Field(strict=True, ge=-60, le=150)] | None = None
 
     @model_validator(mode="after")

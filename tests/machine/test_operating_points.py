@@ -1,7 +1,5 @@
 """Operating points of the synchronous machine against other ways to get them."""
 
-from dataclasses import dataclass
-
 import numpy as np
 import pytest
 from hypothesis import assume, given, settings
@@ -14,10 +12,11 @@ from mission.machine import (
     SynchronousMachine,
     mtpa_from_current,
     mtpa_from_torque,
-    operating_points,
     torque_of_currents_nm,
 )
 from mission.tomlfile import parse_model
+
+from .factories import M_MAX, V_DC, V_MAX, points
 
 WINCH = SynchronousMachine(
     kind="synchronous", pole_pairs=6, r_s_ohm=0.018, l_d_h=1.10e-3, l_q_h=1.90e-3, psi_pm_wb=0.74
@@ -41,26 +40,6 @@ MACHINES = {
     "assisted": ASSISTED,
     "inverse": INVERSE,
 }
-M_MAX = 2.0 / np.sqrt(3.0)
-V_DC = 600.0
-V_MAX = M_MAX * V_DC / 2.0
-
-
-@dataclass
-class Block:
-    """What the stage reads of a profile block."""
-
-    time_s: np.ndarray
-    columns: dict
-    first_row: int = 0
-
-
-def points(machine, *, v_dc=V_DC, mod_index_max=M_MAX, first_row=0, where="day.csv", **columns):
-    columns = {k: np.atleast_1d(np.asarray(v, float)) for k, v in columns.items()}
-    n = max(c.size for c in columns.values())
-    columns = {k: np.broadcast_to(c, (n,)).copy() for k, c in columns.items()}
-    block = Block(0.5 * np.arange(n), columns, first_row)
-    return operating_points(block, machine, dc_voltage_v=v_dc, mod_index_max=mod_index_max, where=where)
 
 
 def voltage(machine, omega, current):

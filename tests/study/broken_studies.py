@@ -91,7 +91,7 @@ BROKEN_STUDIES = [
     BrokenStudy("machine without torque", ("field machine.psi_pm_wb", "psi_pm_wb = 0", "magnets, or l_q_h above l_d_h"), part("machine", psi_pm_wb=0.0, l_q_h=1.0e-3)),
     BrokenStudy("unknown machine", ("field machine.kind", "'synchronus'", "synchronous, direct", "did you mean 'synchronous'?"), part("machine", kind="synchronus")),
     BrokenStudy("machine of no kind", ("field machine.kind", "nothing", "required"), part("machine", kind=None)),
-    BrokenStudy("key of the other machine", ("field machine.pole_pairs", "belongs to kind = 'synchronous'", "remove it"),
+    BrokenStudy("key of the other machine", ("field machine.pole_pairs", "which belongs to kind = 'induction' or kind = 'induction-vf' or kind = 'synchronous'", "remove it"),
                 direct_study(machine={"kind": "direct", "pole_pairs": 6}), DIRECT),
     # inverter and module
     BrokenStudy("unknown modulation", ("field inverter.modulation", "'space vector'", "sine, third-harmonic, third-harmonic-quarter, space-vector", "did you mean 'space-vector'?"),
