@@ -190,19 +190,19 @@ class RatingBench:
         """
         self._check(point)
         group = self._cool(point.coolant_c)
-        place, tried = len(group.levels) - 1, set()
+        if not group.up_c:
+            return self._largest(point)
+        place, known = 0, {}
         while True:
-            found = self._largest(point)
-            if not group.up_c:
-                return found
-            # the level must be one that the sink's temperature would keep there; between two that send each other away the weaker one counts
-            tried.add(place)
-            surface = self._surface_rise_k + (0.0 if group.on_rise else point.coolant_c)
-            wanted = int(np.searchsorted(group.down_c, surface))
-            if wanted >= place or wanted in tried:
-                return found
-            place = wanted
             self._cool(point.coolant_c, place)
+            known[place] = self._largest(point)
+            # from cold, a level holds until the sink is too hot for it; of two that send each other away the weaker counts
+            surface = self._surface_rise_k + (0.0 if group.on_rise else point.coolant_c)
+            least, most = int(np.searchsorted(group.up_c, surface)), int(np.searchsorted(group.down_c, surface))
+            wanted = least if place < least else min(place, most)
+            if wanted in known:
+                return known[min(wanted, place)]
+            place = wanted
 
     def _largest(self, point: RatingPoint) -> Rating:
         low, high = 0.0, self.peak_a

@@ -180,6 +180,83 @@ def test_rating_takes_the_strongest_stage(tmp_path):
     np.testing.assert_allclose(bench.network.r_th_k_per_w(), plain.network.r_th_k_per_w(), rtol=1e-6)
 
 
+STILL = {"kind": "plate-fin-natural", "base_mm": 12, "fin_count": 50, "fin_mm": 1.5, "gap_mm": 10, "fin_height_mm": 60, "length_mm": 250, "emissivity": 0.8, "coolant_c": 30}
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize(("cooling", "current", "times"), [
+    ({**FAN, "heat_capacity_j_per_k": 8000, "law": {"watch": "surface", "at_c": [40, 70], "speed_ratio": [0.3, 1.0]}}, 250, 150),
+    ({**STILL, "heat_capacity_j_per_k": 8000}, 120, 500)], ids=["law", "still air"])
+def test_a_short_mission_on_a_slow_sink_starts_where_many_of_them_end(tmp_path, cooling, current, times):
+    """Against the march itself: the same twenty seconds many times from the coolant's temperature."""
+    once = [(0, current, 50, 0.8, 0.85), (10, 0, 0, 0.05, 1)]
+    repeated = mission.run(load(tmp_path / "a", rows([*once, (20, 0, 0, 0.05, 1)]).replace("\n20,", "\n19,"), cooling=cooling, start="repeat"), keep_cycles=False)
+    many = rows([(t + 20 * k, *rest) for k in range(times) for t, *rest in once] + [(20 * times - 1, 0, 0, 0.05, 1)])
+    end = mission.run(load(tmp_path / "b", many, cooling=cooling), keep_cycles=False).history
+    last = end.edge_s[:-1] > end.duration_s - 45.0
+    assert repeated.closed
+    assert repeated.history.peak_c.max() == pytest.approx(end.t_max_c[last].max(), abs=0.01 * (end.t_max_c[last].max() - 30.0))
+
+
+def test_a_mission_that_does_not_close_says_so(tmp_path):
+    """Two stages that send each other away on a slow sink: which of them holds differs from mission to mission."""
+    cooling = {"kind": "fixed", "r_th_k_per_w": 0.05, "heat_capacity_j_per_k": 20000, "coolant_c": 30,
+               "stage": [{"r_th_k_per_w": 0.08, "up_above_c": 62}, {"r_th_k_per_w": 0.03, "down_below_c": 61}]}
+    result = mission.run(load(tmp_path, rows([(0, 150, 50, 0.8, 0.85), (60, 150, 50, 0.8, 0.85)]), cooling=cooling, start="repeat"), keep_cycles=False)
+    document = build_document(result)
+    assert not result.closed and not document.closed
+    assert any("does not close on its start" in t for t in document.rests_on) and "does not close on its start" in result_text(result)
+
+
+def test_a_stage_survives_steps_of_the_coolant(tmp_path):
+    """By hand: inside the gap between the thresholds nothing but the sink's own temperature may change the stage."""
+    coolant = [*np.linspace(45.0, -20.0, 60), *np.linspace(-20.0, 45.0, 60)]
+    csv = rows([(10 * k, 170, 50, 0.8, 0.85, c) for k, c in enumerate(coolant)] + [(1200, 0, 0, 0.05, 1, 45)], "t,I,f,m,cos_phi,T")
+    cooling = {k: v for k, v in FAN.items() if k != "coolant_c"} | {"stage": [{"speed_ratio": 0.3, "up_above_c": 55}, {"speed_ratio": 1.0, "down_below_c": -15}]}
+    study = load(tmp_path, csv, columns={"coolant": {"column": "T", "unit": "degC"}}, cooling=cooling)
+    result = mission.run(study)
+    speeds = [study.cooling_plan().levels[level].setting.value for _, level in result.cooling.changes]
+    assert len(result.cooling.used) > 3  # several steps of the coolant
+    assert sum(a != b for a, b in zip(speeds, speeds[1:])) <= 2 and 1.0 in speeds
+
+
+def test_the_hottest_point_is_one_under_load(tmp_path):
+    result = mission.run(load(tmp_path, rows([(0, 200, 50, 0.8, 0.85), (30, 0, 0, 0.05, 1), (60, 0, 0, 0.05, 1)]), cooling={"kind": "fixed", "r_th_k_per_w": 0.02, "coolant_c": 30}))
+    assert result.hot_point.i_peak_a > 0.0 and result.hot_point.end_s <= 30.0
+
+
+def test_rating_takes_the_stage_and_the_coolant_that_hold(tmp_path):
+    """Against studies that have only that stage, or only that coolant."""
+    from dataclasses import replace
+
+    from mission.study import RatingBench, rating_point
+
+    never = [{"speed_ratio": 0.3, "up_above_c": 240}, {"speed_ratio": 1.0, "down_below_c": 40}]
+    staged = load(tmp_path / "a", LOADED, cooling={**FAN, "stage": never})
+    weak = load(tmp_path / "b", LOADED, cooling={**FAN, "law": {"watch": "coolant", "at_c": [20, 60], "speed_ratio": [0.3, 0.3]}})
+    found, want = (RatingBench(s).largest_current(rating_point(s)) for s in (staged, weak))
+    assert found.current_a == pytest.approx(want.current_a, rel=2e-3) and found.cooling == "30 % speed"
+    law = {**FAN, "law": {"watch": "coolant", "at_c": [20, 60], "speed_ratio": [0.3, 1.0]}}
+    bench = RatingBench(load(tmp_path / "c", LOADED, cooling=law))
+    for coolant in (22.0, 50.0):
+        own = load(tmp_path / f"d{coolant:g}", LOADED, cooling={**law, "coolant_c": coolant})
+        got = bench.largest_current(replace(rating_point(bench.study), coolant_c=coolant))
+        assert got.current_a == pytest.approx(RatingBench(own).largest_current(rating_point(own)).current_a, rel=2e-3)
+
+
+def test_a_liquid_that_would_boil_is_flagged(tmp_path):
+    plate = {"kind": "liquid-plate", "channel_count": 20, "channel_width_mm": 3, "channel_height_mm": 6, "web_mm": 2, "base_mm": 5, "length_mm": 200, "fluid": "water",
+             "flow_l_per_min": 0.4, "coolant_c": 80}
+    result = mission.run(load(tmp_path, LOADED, cooling=plate))
+    assert any("boiling is not reckoned" in t for t in build_document(result).cooling.flags) and "boiling is not reckoned" in result_text(result)
+
+
+def test_another_kind_of_cooling_by_change(tmp_path):
+    study = load(tmp_path, LOADED, cooling={**FAN, "stage": STAGES})
+    changed = study.changed("cooling", kind="fixed", r_th_k_per_w=0.03)
+    assert changed.spec.cooling.r_th_k_per_w == 0.03 and changed.spec.cooling.coolant_c == 30 and not changed.spec.cooling.stage
+
+
 def test_every_kind_is_refused_in_words_and_not_by_a_traceback(tmp_path):
     with pytest.raises(InputError, match="study.toml"):
         mission.run(load(tmp_path, LOADED, cooling={**FAN, "fan": {"flow_m3_per_h": [0, 100], "pressure_pa": [4000, 3000]}}))

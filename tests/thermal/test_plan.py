@@ -146,6 +146,31 @@ def test_a_fault_holds_from_its_time_to_its_end():
     assert [resistance(found, t) for t in (0.0, 100.0, 199.0, 200.0, 299.9, 300.0)] == [whole, 0.8, 0.8, whole, whole, half]
 
 
+def test_a_fault_leaves_a_share_of_every_stage():
+    """Less flow cools worse: half of a stage at 0.4 of the speed is 0.2, not half of full speed."""
+    found = plan({**FAN, "stage": STAGES, "fault": [{"at_s": 100.0, "until_s": 150.0, "share": 0.5}, {"at_s": 200.0, "share": 0.5}]}, duration_s=400.0)
+    assert len(found.groups) == 2 and found.groups[1].up_c == found.groups[0].up_c
+    assert [found.levels[k].setting.value for k in found.groups[1].levels] == pytest.approx([0.2, 0.35, 0.5])
+    for a, b in zip(*(g.levels for g in found.groups)):
+        assert found.state(b).r_th_k_per_w > found.state(a).r_th_k_per_w
+
+
+def test_levels_do_not_multiply_needlessly():
+    """Like faults share their levels, and what grease does not change is reckoned once."""
+    found = plan({**FAN, "fault": [{"at_s": 100.0 * k, "until_s": 100.0 * k + 10.0} for k in range(1, 9)], "stopped": {"emissivity": 0.8},
+                  "grease": {"growth": 0.5, "per_h": 1.0}}, duration_s=3600.0)
+    assert len(found.levels) == len(set(found.levels)) and found._shape[0] == 2
+    steps = len(found._paste)
+    assert len(found.groups) == 2 * steps and len(found.levels) < steps * 300
+
+
+@pytest.mark.parametrize("air", [-58.0, 55.0, 140.0])
+def test_still_air_of_any_temperature(air):
+    found = plan({k: v for k, v in NATURAL.items() if k != "heat_w"}, coolant=(air, air))
+    group, = found.groups
+    assert found.state(group.levels[0]).r_th_k_per_w > found.state(group.levels[-1]).r_th_k_per_w
+
+
 def test_a_stopped_fan_leaves_its_fins_in_still_air():
     found = plan({**FAN, "fault": [{"at_s": 10.0}], "stopped": {"emissivity": 0.85}}, duration_s=100.0)
     group = found.groups[found.groups_of([50.0], [40.0])[0]]
@@ -198,7 +223,17 @@ REFUSED = [
     ("row that changes", {**{k: v for k, v in PLATE.items() if k != "flow_l_per_min"}, "pump": PUMP, "positions": 3, "legs_along_flow": ["a", "b", "c"], "stage": STAGES}, {"module": LEG},
      ["cooling.positions", "a cooling that changes"]),
     ("table without a flow", {k: v for k, v in TABLE.items() if k != "at_l_per_min"}, {}, ["at_l_per_min", "no flow at which the sink works"]),
-    ("flow outside the table", {**{k: v for k, v in TABLE.items() if k != "at_l_per_min"}}, {"flow_m3_per_s": (1.0 / 60000, 5.0 / 60000)}, ["flow", "flows of the table"]),
+    ("flow outside the table", {**{k: v for k, v in TABLE.items() if k != "at_l_per_min"}}, {"flow_m3_per_s": (1.0 / 60000, 5.0 / 60000)}, ["duty.columns.flow", "1 l/min in the duty", "2 to 10 l/min"]),
+    ("shares of the heat in a study", {**PLATE, "positions": 3, "legs_along_flow": ["a", "b", "c"], "heat_shares": [0.5, 0.3, 0.2]}, {"module": LEG}, ["heat_shares", "comes from its losses"]),
+    ("stages that cool worse and worse", {**FAN, "stage": [{**STAGES[0], "speed_ratio": 1.0}, {**STAGES[1], "speed_ratio": 0.5}, {**STAGES[2], "speed_ratio": 0.3}]}, {},
+     ["cooling.stage[2]", "cool better from one to the next"]),
+    ("fault after the end", {**FAN, "fault": [{"at_s": 500.0}], "stopped": {"r_th_k_per_w": 1.0}}, {}, ["cooling.fault[1].at_s", "before the mission's end at 100 s"]),
+    ("stopped beside a part of the flow", {**FAN, "fault": [{"at_s": 5.0, "share": 0.5}], "stopped": {"r_th_k_per_w": 1.0}}, {}, ["cooling.stopped", "nothing leads to"]),
+    ("part of hardly any speed", {**FAN, "fault": [{"at_s": 5.0, "share": 0.01}]}, {}, ["cooling.fault.share", "twentieth"]),
+    ("part of the flow below the table", {**TABLE, "fault": [{"at_s": 5.0, "share": 0.1}]}, {}, ["cooling.fault.share", "from 2 l/min on"]),
+    ("part of a resistance", {"kind": "flow-table", **{k: TABLE[k] for k in ("flow_l_per_min", "r_th_k_per_w")}, "heat_capacity_j_per_k": 900.0, "fault": [{"at_s": 5.0, "share": 0.5}],
+                              "stage": [{"r_th_k_per_w": 0.1, "up_above_c": 50.0}, {"r_th_k_per_w": 0.05, "down_below_c": 40.0}]}, {}, ["cooling.fault.share", "given as resistances"]),
+    ("grease beyond all measure", {"kind": "fixed", "r_th_k_per_w": 0.1, "grease": {"growth": 50.0, "per_h": 0.01}}, {}, ["cooling.grease", "at most 5"]),
     ("grease of a module to the sink", {"kind": "fixed", "r_th_k_per_w": 0.1, "grease": {"growth": 0.1, "per_h": 100.0}}, {"module": HERON.model_copy(update={"case_to_sink": None})},
      ["cooling.grease", "no case_to_sink"]),
 ]
