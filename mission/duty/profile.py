@@ -8,7 +8,8 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from ..errors import InputError, RangeError
-from .units import QUANTITIES, conversion
+from .spec import ColumnSpec
+from .units import ALL_QUANTITIES, QUANTITIES, conversion
 
 WHOLE_MISSION = "whole mission"
 
@@ -200,6 +201,21 @@ class _Reader:
         if phases is None:
             object.__setattr__(self, "found", tuple(names) if "phase" in self.columns else (WHOLE_MISSION,))
 
+    def whole(self) -> dict[str, np.ndarray]:
+        """All columns in our units at once, checked, the closing row included."""
+        scales = {q: conversion(q, c.unit, f"duty.columns.{q}") for q, c in self.columns.items()}
+        parts: dict[str, list] = {q: [] for q in self.columns}
+        before = 0
+        for raw in self.source(65536):
+            for q, values in self._convert(raw, scales, before, _Words(())).items():
+                parts[q].append(values)
+            before += raw["time"].size
+        if before < 2:
+            raise InputError(self.label, "a header without rows" if before == 0 else "a single row", "at least two rows", "check the export of the table")
+        out = {q: np.concatenate(v) for q, v in parts.items()}
+        self._check_steps(out["time"], 0)
+        return out
+
     def _convert(self, raw, scales, first, seen):
         out = {}
         for quantity, (factor, offset) in scales.items():
@@ -211,7 +227,7 @@ class _Reader:
             if bad.any():
                 self._refuse(quantity, first + int(np.flatnonzero(bad)[0]), f"value {values[np.flatnonzero(bad)[0]]:g}", "a finite number",
                              "correct the row or cut it out; nothing is filled in")
-            limits = QUANTITIES[quantity]
+            limits = ALL_QUANTITIES[quantity]
             ours = values if factor == 1.0 and offset == 0.0 else factor * (values + offset)
             bad = (ours < limits.low) | (ours > limits.high)
             if bad.any():
@@ -307,3 +323,58 @@ def checked(reader: _Reader, name: str) -> MissionProfile:
     phases = reader.found
     return MissionProfile(name, reader.label, rows, duration, phases, frozenset(ranges), ranges,
                           tuple(time_by_phase[: len(phases)].tolist()), longest, float(shortest), tuple(notes), replace(reader))
+
+
+@dataclass(frozen=True)
+class _HeldRows:
+    """Raw blocks of a duty whose rows are held in memory."""
+
+    columns: dict
+
+    def __call__(self, rows):
+        for a in range(0, self.columns["time"].size, rows):
+            yield {q: (v[0][a:a + rows], v[1]) if q == "phase" else v[a:a + rows] for q, v in self.columns.items()}
+
+
+def _row_number(row: int) -> str:
+    return f"row {row + 1}"
+
+
+def profile_from_rows(name, source, time_s, torque_nm, speed_rad_s, phase, *, notes=()) -> MissionProfile:
+    """A duty from rows that were reckoned, checked like one from a file.
+
+    Parameters
+    ----------
+    name, source : str
+        Name of the duty, and what made it.
+    time_s : array_like, shape (n + 1,)
+        Start of each row, and the end of the last one. [s]
+    torque_nm, speed_rad_s : array_like, shape (n,)
+        At the motor's shaft; their product is the shaft's power.
+    phase : tuple of (array_like of int, shape (n,)) and (sequence of str)
+        Codes, and the words they stand for.
+    notes : sequence of str
+        What a result must repeat.
+
+    Returns
+    -------
+    MissionProfile
+
+    Raises
+    ------
+    InputError
+        A value that cannot be, with row and column.
+
+    Examples
+    --------
+    >>> duty = profile_from_rows("haul", "an example", [0.0, 2.0, 5.0], [40.0, 0.0], [10.0, 0.0], ([0, 1], ["haul", "rest"]))
+    >>> duty.duration_s, duty.phases, duty.ranges["torque_nm"]
+    (5.0, ('haul', 'rest'), (0.0, 40.0))
+    """
+    columns = {"time": np.array(time_s, float), "torque": np.append(np.asarray(torque_nm, float), 0.0),
+               "speed": np.append(np.asarray(speed_rad_s, float), 0.0), "phase": (np.append(phase[0], phase[0][-1]), list(phase[1]))}
+    for q, values in columns.items():
+        (values[0] if q == "phase" else values).flags.writeable = False  # blocks are views of them
+    units = {"time": "s", "torque": "N m", "speed": "rad/s", "phase": None}
+    reader = _Reader(_HeldRows(columns), source, {q: ColumnSpec(column=q, unit=u) for q, u in units.items()}, _row_number, np.inf, None)
+    return replace(checked(reader, name), notes=tuple(notes))

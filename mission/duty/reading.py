@@ -17,7 +17,7 @@ from ..checks import require_range
 from ..errors import InputError
 from ..tomlfile import parse_model
 from .profile import MissionProfile, _Reader, checked, shown
-from .spec import ColumnMap, DutySpec
+from .spec import ColumnMap, DutySpec, TableFile
 from .units import conversion, near_name
 
 _LONGEST_LINE = 1 << 20
@@ -29,12 +29,12 @@ _BLANKS = " \t"
 _CSV_ENDINGS, _PARQUET_ENDINGS = (".csv", ".txt", ".tsv"), (".parquet", ".pq")
 
 
-def read_profile(spec: DutySpec, folder=".") -> MissionProfile:
-    """Read and check the duty that ``[duty]`` of a study names.
+def read_profile(spec, folder=".") -> MissionProfile:
+    """Read, or make, and check the duty that ``[duty]`` of a study names.
 
     Parameters
     ----------
-    spec : DutySpec
+    spec : DutySpec or Recipe
     folder : path-like
         A relative path counts from here (the study's folder).
 
@@ -59,7 +59,14 @@ def read_profile(spec: DutySpec, folder=".") -> MissionProfile:
     >>> duty.rows, duty.duration_s, duty.ranges["current_a"]
     (2, 60.0, (-40.0, 100.0))
     """
+    if not isinstance(spec, DutySpec):
+        return spec.profile(folder)
     path = Path(folder) / spec.file
+    return checked(table_reader(path, spec, spec.columns.given(), spec.last_row_lasts_s), spec.name or path.stem)
+
+
+def table_reader(path: Path, spec: TableFile, columns: dict, last_row_lasts_s: float | None = None) -> _Reader:
+    """A file that is there and has the columns, ready to be read; ``columns``: quantity -> ColumnSpec."""
     label = _printable(str(path))
     try:
         is_folder, is_there, size = path.is_dir(), path.exists(), path.stat().st_size if path.is_file() else None
@@ -77,15 +84,13 @@ def read_profile(spec: DutySpec, folder=".") -> MissionProfile:
         raise InputError(label, "a device or pipe, which cannot be read twice", "a CSV or Parquet file")
     if size == 0:
         raise InputError(label, "an empty file", "a header line and rows", "check the export of the table")
-    columns = spec.columns.given()
     for quantity, column in columns.items():
         conversion(quantity, column.unit, f"field duty.columns.{quantity}")
     if ending in _PARQUET_ENDINGS:
         source, place = _parquet_source(path, label, columns), _row_place
     else:
         source, place = _csv_source(path, label, columns, spec), _LinePlace(path, spec)
-    reader = _Reader(source, label, columns, place, spec.longest_step_s, spec.last_row_lasts_s)
-    return checked(reader, spec.name or path.stem)
+    return _Reader(source, label, columns, place, spec.longest_step_s, last_row_lasts_s)
 
 
 def profile_from_frame(frame, columns, *, name: str = "duty", longest_step_s: float = 60.0, last_row_lasts_s: float | None = None) -> MissionProfile:

@@ -70,7 +70,26 @@ class ColumnMap(FileModel):
         return self
 
 
-class DutySpec(FileModel):
+class TableFile(FileModel):
+    """How a table of a user is written: signs, encoding, the longest step that is no gap."""
+
+    delimiter: str = ","
+    decimal: str = "."
+    encoding: str = "utf-8"
+    longest_step_s: _Positive = 60.0
+
+    @model_validator(mode="after")
+    def _signs(self):
+        if self.delimiter not in DELIMITERS:
+            raise RangeError("delimiter", f"{self.delimiter!r}", "one of " + " ".join(repr(d) for d in DELIMITERS), "use the sign between the columns of the file")
+        if self.decimal not in (".", ","):
+            raise RangeError("decimal", f"{self.decimal!r}", "a point \".\" or a comma \",\"")
+        if self.delimiter == self.decimal:
+            raise RangeError("decimal", f"'{self.decimal}' for both delimiter and decimal", "two different signs")
+        return self
+
+
+class DutySpec(TableFile):
     """Where the duty comes from and how its columns are read.
 
     Examples
@@ -83,18 +102,4 @@ class DutySpec(FileModel):
     file: str = Field(min_length=1)
     columns: ColumnMap
     name: str | None = None
-    delimiter: str = ","
-    decimal: str = "."
-    encoding: str = "utf-8"
-    longest_step_s: _Positive = 60.0
     last_row_lasts_s: _Positive | None = None
-
-    @model_validator(mode="after")
-    def _signs(self):
-        if self.delimiter not in DELIMITERS:
-            raise RangeError("delimiter", f"{self.delimiter!r}", "one of " + " ".join(repr(d) for d in DELIMITERS), "use the sign between the columns of the file")
-        if self.decimal not in (".", ","):
-            raise RangeError("decimal", f"{self.decimal!r}", "a point \".\" or a comma \",\"")
-        if self.delimiter == self.decimal:
-            raise RangeError("decimal", f"'{self.decimal}' for both delimiter and decimal", "two different signs")
-        return self

@@ -56,6 +56,13 @@ QUANTITIES: dict[str, Quantity] = {
     "phase": Quantity("phase", {}, -math.inf, math.inf, ""),
 }
 
+#: Those, and what stands in other tables than a duty's own: a vehicle's speed on the road.
+ALL_QUANTITIES: dict[str, Quantity] = {
+    **QUANTITIES,
+    "road_speed": Quantity("road_speed_m_per_s", {"m/s": (1.0, 0.0), "km/h": (1.0 / 3.6, 0.0), "mph": (0.44704, 0.0)}, 0.0, 150.0,
+                           "speeds of the vehicle, forwards; check the unit (m/s, km/h, mph)"),
+}
+
 
 def near_name(word: str, choices) -> str:
     """Offer the closest name; capitals and blanks do not count.
@@ -83,7 +90,7 @@ def conversion(quantity: str, unit: str | None, where: str) -> tuple[float, floa
     >>> conversion("speed", "1/s", "example")[0] == 2 * math.pi
     True
     """
-    units = QUANTITIES[quantity].units
+    units = ALL_QUANTITIES[quantity].units
     if not units:
         if unit is not None:
             raise InputError(f"{where}.unit", f"'{unit}'", f"no unit: {quantity} has none", "remove it")

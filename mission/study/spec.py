@@ -12,7 +12,7 @@ from pydantic import Field, model_validator
 
 from .. import device
 from ..device import PowerModule, shipped_modules
-from ..duty import DutySpec, MissionProfile, read_profile
+from ..duty import DutySource, MissionProfile, read_profile
 from ..errors import InputError, RangeError, near_match
 from ..lifetime import FailureMode, resolve_modes
 from ..losses import MOD_INDEX_SIX_STEP, Modulation
@@ -170,7 +170,7 @@ class StudySpec(FileModel):
 
     format: Literal[1]
     name: str = Field(min_length=1)
-    duty: DutySpec
+    duty: DutySource
     machine: MachineSpec
     module: ModuleRef
     inverter: InverterSpec
