@@ -299,7 +299,8 @@ def compare(kind, modulation, case, *, carrier_ratio, edge=False, **both):
     """
     for point, found, want, conduction, switching in deviations(kind, modulation, case, carrier_ratio=carrier_ratio, **both):
         assert conduction <= 1e-3 * want.conduction_w.max(), (point, found[0], want.conduction_w)
-        allowed = 5e-3 * want.switching_w.max() + (one_edge_w(MODULES[kind], point, carrier_ratio) if edge else 0.0)
+        # a milliwatt besides: of a few amperes in a chip for hundreds, half a percent is less than one edge of the carrier counts
+        allowed = 5e-3 * want.switching_w.max() + 1e-3 + (one_edge_w(MODULES[kind], point, carrier_ratio) if edge else 0.0)
         assert switching <= allowed, (point, found[1], want.switching_w)
 
 

@@ -84,7 +84,9 @@ def test_period_means_are_the_exact_means(case, current, m, phi, t_c, f_sw, dire
                  frequency_hz=60.0, overmodulation=beyond).total_w[:, 0]
     read = Reader(tables_of(*case), i=i, m=m, phi=phi, f_sw=f_sw, f=60.0, direction=direction)
     found = read.at(read.means(), t_c)
-    np.testing.assert_allclose(found, want, atol=1e-3 * want.max() + 0.01)
+    # at the edge of the linear range itself the reference touches the rail, and pulses shorter than the dead time come or do not come by rounding
+    share = 3e-3 if dead and m >= limit * (1.0 - 1e-9) else 1e-3
+    np.testing.assert_allclose(found, want, atol=share * want.max() + 0.01)
     # along the angle: linear between 128 nodes, so its area is that of a trapezoid rule
     nodes = read.nodes()
     mean = [np.mean([kernels.at_temperature(n[p], read.knot, read.knot.size - 1, t_c) for n in nodes[:-1]]) for p in range(nodes.shape[1])]

@@ -119,7 +119,7 @@ def test_most_torque_of_nothing_is_nothing():
 # --- any speed, current and torque, both signs -------------------------------------------
 
 
-@settings(max_examples=150, deadline=None)
+@settings(derandomize=True, max_examples=150, deadline=None)
 @given(any_machine, signed(900.0), signed(250.0))
 def test_current_duty_against_a_dense_scan(machine, current, speed):
     """Independent code: of all angles that fit the voltage and drive as wanted, the one with the most torque."""
@@ -149,7 +149,7 @@ def test_current_duty_against_a_dense_scan(machine, current, speed):
         assert np.sign(p.i_q_a[0]) == way * p.direction[0] or abs(p.i_q_a[0]) < 1e-9 * size
 
 
-@settings(max_examples=150, deadline=None)
+@settings(derandomize=True, max_examples=150, deadline=None)
 @given(any_machine, signed(1500.0), signed(300.0))
 def test_torque_duty_gives_the_torque_with_the_least_current(machine, torque, speed):
     omega, wanted = machine.pole_pairs * abs(speed), torque * (-1.0 if speed < 0 else 1.0)
@@ -183,7 +183,7 @@ def test_torque_duty_gives_the_torque_with_the_least_current(machine, torque, sp
     assert p.v_peak_v[0] == pytest.approx(v(i_d), rel=1e-7, abs=1e-9)
 
 
-@settings(max_examples=100, deadline=None)
+@settings(derandomize=True, max_examples=100, deadline=None)
 @given(any_machine, signed(300.0), signed(100.0))
 def test_power_at_the_terminals_is_copper_loss_and_shaft(machine, current, speed):
     p = points(machine, v_dc=1e5, current_a=current, speed_rad_s=speed)
@@ -196,7 +196,7 @@ def test_power_at_the_terminals_is_copper_loss_and_shaft(machine, current, speed
     assert (abs(p.phi_rad[0]) > np.pi / 2) == (copper[0] + p.torque_nm[0] * speed < 0)
 
 
-@settings(max_examples=100, deadline=None)
+@settings(derandomize=True, max_examples=100, deadline=None)
 @given(any_machine, signed(200.0), st.floats(0.01, 250.0), st.sampled_from(["current_a", "torque_nm"]))
 def test_reversed_rotation_is_the_mirror_image(machine, load, speed, kind):
     try:
