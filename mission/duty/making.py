@@ -7,6 +7,7 @@ it generates. The rows hold (zero-order hold); while the speed changes they are 
 from __future__ import annotations
 
 import math
+from abc import abstractmethod
 from typing import Annotated
 
 import numpy as np
@@ -142,8 +143,8 @@ class Recipe(FileModel):
             data[field] = _times(data[field], float(factor), field)
         return parse_model(data, type(self), f"recipe '{self.recipe}'")
 
-    def _rows(self, folder) -> tuple[Rows, tuple[str, ...]]:
-        raise NotImplementedError
+    @abstractmethod
+    def _rows(self, folder) -> tuple[Rows, tuple[str, ...]]: ...
 
 
 def _times(value, factor, field):

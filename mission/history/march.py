@@ -234,8 +234,7 @@ class ElectrothermalMarch:
             w[k.B_S + s:k.B_S + n * k.S_MAX:k.S_MAX] = net.b_shared[s]
         for place, rows in ((k.C_S, net.c_shared), (k.CASE_S, net.c_case_shared)):
             w[place:place + n_s * k.LANE].reshape(n_s, k.LANE)[:, :n] = rows.T
-        own = net.rho_local != 0.0
-        self._local(k.CASE_L)[:] = np.where(own, net.rho_case_local / np.where(own, net.rho_local, 1.0), 0.0)
+        self._local(k.CASE_L)[:] = net.case_share_local
         self._now[k.H_LOADED] = 0.0  # factors of the steps are those of the network before
         k.junctions(self._lane_tuple, w, n_l, n_s, self._now[k.COOLANT])
         groups = self._groups[1].size
@@ -292,7 +291,7 @@ class ElectrothermalMarch:
         lam, heat, even, _ = self._levels.field(self.level)
         step = np.diff(coolant_c, prepend=self._field_coolant)
         self._field_coolant = float(coolant_c[-1])
-        rate = np.concatenate([net.lam_local_per_s.ravel(), net.lam_shared_per_s])
+        rate = net.rates_per_s
         power = loss_j / dt_s[:, None]
         for a in range(0, dt_s.size, 4096):
             rows = slice(a, a + 4096)
@@ -309,7 +308,7 @@ class ElectrothermalMarch:
             self._field = taken(lam, power[rows] @ heat, even, self._field)
             local = np.tile(power[rows], net.rho_local.shape[0]) * net.rho_local.ravel()
             self._mean_state = taken(rate, np.hstack([local, power[rows] @ net.b_shared.T]),
-                                     np.concatenate([net.g_coolant_local.ravel(), net.g_coolant]), self._mean_state)
+                                     net.g_state, self._mean_state)
         slow = self._memory.shape[0]
         self._memory = np.exp(-lam[:slow] * dt_s.sum())[:, None] * self._memory
 
@@ -376,10 +375,10 @@ class ElectrothermalMarch:
         x = np.concatenate(now[:2])
         change = self._coolant_start - now.coolant_c
         # the coolant may end elsewhere than it began; the next start takes its step again
-        x = x - np.concatenate([net.g_coolant_local.ravel(), net.g_coolant]) * change
+        x = x - net.g_state * change
         field = None
         if self._field is None:
-            rate = np.concatenate([net.lam_local_per_s.ravel(), net.lam_shared_per_s])
+            rate = net.rates_per_s
             x = (x - np.exp(-rate * duration_s) * np.concatenate(states_before[:2])) / -np.expm1(-rate * duration_s)
         else:
             _, _, even, read = self._levels.field(self.level)
@@ -500,19 +499,19 @@ class ElectrothermalMarch:
         """Which of a group's levels holds: the one that held when such a group was last in force, as far as the sink's temperature lets it."""
         if len(group.levels) == 1:
             return 0
-        surface = self.surface_c() - (self._now[self._k.COOLANT] if group.on_rise else 0.0)
-        low, high = int(np.searchsorted(group.up_c, surface)), int(np.searchsorted(group.down_c, surface))
+        low, high = group.allowed(self.surface_c(), float(self._now[self._k.COOLANT]))
         share = self._places.get(group.on_rise)
         return low if share is None else min(max(round(share * (len(group.levels) - 1)), low), high)
 
     def _step_level(self, group: int) -> None:
         """The sink has passed a threshold: the level that its temperature asks for, at least the next one up or down."""
         one, k = self._levels.groups[group], self._k
-        surface = self.surface_c() - (self._now[k.COOLANT] if one.on_rise else 0.0)
-        if surface > self._settings[k.SURFACE_UP]:
-            self._at = max(self._at + 1, int(np.searchsorted(one.up_c, surface)))
+        surface, coolant = self.surface_c(), float(self._now[k.COOLANT])
+        low, high = one.allowed(surface, coolant)
+        if (surface - coolant if one.on_rise else surface) > self._settings[k.SURFACE_UP]:
+            self._at = max(self._at + 1, low)
         else:
-            self._at = min(self._at - 1, int(np.searchsorted(one.down_c, surface)))
+            self._at = min(self._at - 1, high)
         self._change(one.levels[self._at])
         self._set_look(group)
 

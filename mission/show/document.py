@@ -10,7 +10,6 @@ import math
 import platform
 from importlib.metadata import PackageNotFoundError, version
 
-import numpy as np
 from pydantic import BaseModel, ConfigDict, Field
 
 from .. import __version__
@@ -340,35 +339,6 @@ def build_document(result) -> ResultDocument:
     )
 
 
-#: Air that warms by more than this is no longer at its inlet's temperature [K].
-_AIR_WARMS_K = 30.0
-
-
-def heat_flags(result) -> tuple[str, ...]:
-    """What to mistrust in the cooling: what its levels say, and what only the heat of the run shows."""
-    record, history, spec = result.cooling, result.history, result.study.spec.cooling
-    out = list(record.flags)
-    points = [(one, one.state.point) for one in record.used if one.state.point is not None and one.state.point.outlet_rise_k_per_w is not None]
-    if points:
-        # heat that flows for minutes: the sink does not see shorter peaks
-        width = max(1, int(np.ceil(120.0 * history.coolant_c.size / history.duration_s)))
-        heat = np.convolve(history.loss_w.sum(axis=1), np.ones(width) / width, mode="same").max()
-        least = max(points, key=lambda p: p[1].outlet_rise_k_per_w)
-        rise = heat * least[1].outlet_rise_k_per_w
-        hot = float(history.coolant_c.max()) + rise
-        liquid = spec.kind == "liquid-plate" or getattr(spec, "fluid", "air") != "air"
-        if liquid and hot > 100.0:
-            out.append(f"at {heat:.4g} W and the weakest flow that held ({least[0].state.words}) the coolant would leave at {hot:.0f} degC; boiling is not reckoned")
-        elif liquid and float(history.case_peak_c.max()) > 110.0:
-            out.append(f"the case reaches {history.case_peak_c.max():.0f} degC over a liquid; whether it boils at the channel walls is not reckoned")
-        elif not liquid and rise > _AIR_WARMS_K:
-            out.append(f"at {heat:.4g} W and the weakest flow that held ({least[0].state.words}) the air warms by {rise:.0f} K")
-        mean = history.energy_j.sum() / history.duration_s
-        if spec.heat_w is not None and not 0.5 * mean <= spec.heat_w <= 1.2 * heat:
-            out.append(f"fluid properties are taken at heat_w = {spec.heat_w:g} W; the run gives {mean:.4g} W in the mean and up to {heat:.4g} W over two minutes")
-    return tuple(out)
-
-
 def _cooling(result) -> CoolingEntry:
     record = result.cooling
     levels = []
@@ -379,7 +349,7 @@ def _cooling(result) -> CoolingEntry:
             flow_m3_per_s=None if p is None else p.flow_m3_per_s, pressure_drop_pa=None if p is None else p.pressure_drop_pa, regime=None if p is None else p.regime))
     changes = [ChangeEntry(time_s=t, setting=record.plan.state(k).words) for t, k in record.changes[:20]]
     return CoolingEntry(kind=record.plan.spec.kind, levels=levels, changes=record.n_changes, first_changes=changes, change_error=record.move_error,
-                        flags=list(heat_flags(result)), sources=list(record.sources))
+                        flags=list(result.cooling_flags), sources=list(record.sources))
 
 
 def _how_heat(result):
@@ -405,7 +375,7 @@ def _how_heat(result):
         yield f"cooling: case-to-sink resistances times {span} for the age of the grease, a course that the study states"
     if record.plan.computed and spec.heat_w is None and spec.kind not in ("flow-table", "plate-fin-natural"):
         yield "cooling: fluid properties at the inlet temperature, as no heat_w is given; the coolant's own rise is in the resistance"
-    for text in heat_flags(result):
+    for text in result.cooling_flags:
         yield f"cooling, to be mistrusted: {text}"
 
 

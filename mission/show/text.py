@@ -60,10 +60,10 @@ def result_text(result) -> str:
     if not study.modes:
         lines.append("  no failure mode given: temperatures only")
     lines += ["", *_cooling_lines(result)]
-    from .document import NOT_CLOSED, heat_flags
+    from .document import NOT_CLOSED
 
     open_ends = () if result.closed else (NOT_CLOSED.format(result.closes_within_k, f"{result.passes} passes"),)
-    lines += ["", "  to know:"] + [f"  - {w}" for w in (*open_ends, *result.shortfall.words(), stability(result).words, *result.ledger.warnings(), *(f"cooling: {f}" for f in heat_flags(result)))]
+    lines += ["", "  to know:"] + [f"  - {w}" for w in (*open_ends, *result.shortfall.words(), stability(result).words, *result.ledger.warnings(), *(f"cooling: {f}" for f in result.cooling_flags))]
     lines += ["", "  An estimate; verify on the real device. High voltage, stored energy and hot surfaces: see the cautions in the report."]
     return "\n".join(lines)
 

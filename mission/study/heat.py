@@ -285,13 +285,9 @@ def _resting_level(plan, start, coolant_c, losses):
     k, seen = group.levels.index(start), set()
     while True:
         level = group.levels[k]
-        watched = plan.state(level).r_th_k_per_w * losses(level).sum() + (0.0 if group.on_rise else coolant_c)
-        watched = np.inf if np.isnan(watched) else watched  # no stable temperature
-        step = 0
-        if k < len(group.up_c) and watched > group.up_c[k]:
-            step = 1
-        elif k > 0 and watched < group.down_c[k - 1]:
-            step = -1
+        rise = plan.state(level).r_th_k_per_w * losses(level).sum()
+        low, high = group.allowed(coolant_c + (np.inf if np.isnan(rise) else rise), coolant_c)  # NaN: no stable temperature
+        step = 1 if k < low else -1 if k > high else 0
         if step == 0:
             return level, None
         if k + step in seen:

@@ -197,8 +197,7 @@ class RatingBench:
             self._cool(point.coolant_c, place)
             known[place] = self._largest(point)
             # from cold, a level holds until the sink is too hot for it; of two that send each other away the weaker counts
-            surface = self._surface_rise_k + (0.0 if group.on_rise else point.coolant_c)
-            least, most = int(np.searchsorted(group.up_c, surface)), int(np.searchsorted(group.down_c, surface))
+            least, most = group.allowed(point.coolant_c + self._surface_rise_k, point.coolant_c)
             wanted = least if place < least else min(place, most)
             if wanted in known:
                 return known[min(wanted, place)]

@@ -97,23 +97,19 @@ class CoolingRecord:
     @property
     def flags(self) -> tuple[str, ...]:
         """What to mistrust in the levels that held, each said once, with the share of the time where it is not all of it."""
-        return _said(self.used, lambda s: s.point.flags if s.point is not None else ())
+        # flags carry numbers of their own level; the one that held longest speaks for all of its kind
+        whole, said = sum(u.time_s for u in self.used), {}
+        for one in self.used:
+            for text in () if one.state.point is None else one.state.point.flags:
+                kind = re.sub(r"[0-9][0-9.,e+-]*", "#", text)
+                first, time_s = said.get(kind, (text, 0.0))
+                said[kind] = first, time_s + one.time_s
+        return tuple(text if time_s >= 0.9995 * whole else f"{text} ({time_s / whole:.1%} of the time)" for text, time_s in said.values())
 
     @property
     def sources(self) -> tuple[str, ...]:
         """Where the rules come from."""
         return tuple(dict.fromkeys(w for one in self.used if one.state.point is not None for w in one.state.point.sources))
-
-
-def _said(used, words):
-    # flags carry numbers of their own level; the one that held longest speaks for all of its kind
-    whole, out = sum(u.time_s for u in used), {}
-    for one in used:
-        for text in words(one.state):
-            kind = re.sub(r"[0-9][0-9.,e+-]*", "#", text)
-            said, time_s = out.get(kind, (text, 0.0))
-            out[kind] = said, time_s + one.time_s
-    return tuple(text if time_s >= 0.9995 * whole else f"{text} ({time_s / whole:.1%} of the time)" for text, time_s in out.values())
 
 
 @dataclass(frozen=True)
@@ -189,6 +185,13 @@ class MissionResult:
         from .verdicts import verdicts
 
         return verdicts(self)
+
+    @cached_property
+    def cooling_flags(self) -> tuple[str, ...]:
+        """What to mistrust in the cooling; see :func:`mission.study.verdicts.cooling_flags`."""
+        from .verdicts import cooling_flags
+
+        return cooling_flags(self)
 
     def save(self, folder) -> list:
         """Write all files of the result into ``folder``; returns their paths."""

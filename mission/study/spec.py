@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import re
 from dataclasses import dataclass, replace
+from functools import cached_property
 from pathlib import Path
 from typing import Annotated, Literal
 
@@ -224,6 +225,13 @@ class Study:
 
     def cooling_plan(self, coolant_c: float | None = None) -> CoolingPlan:
         """Levels of the cooling, and which holds when; at one ``coolant_c`` [degC] in place of the duty's, if given."""
+        return self._plan if coolant_c is None else self._planned((coolant_c, coolant_c))
+
+    @cached_property
+    def _plan(self) -> CoolingPlan:
+        return self._planned(self.coolant_range_c())
+
+    def _planned(self, coolant_c: tuple[float, float]) -> CoolingPlan:
         flow = self.profile.ranges.get("flow_m3_per_s")
         still = flow is not None and flow[0] == 0.0
         if still:
@@ -232,8 +240,8 @@ class Study:
             if not np.isfinite(flow[0]):
                 raise InputError(f"{self.profile.source}, column for flow", "no flow at all", "a flow in some rows", "take the column out and give the sink as it stands without flow")
         try:
-            plan = CoolingPlan(self.spec.cooling, self.module, coolant_c=self.coolant_range_c() if coolant_c is None else (coolant_c, coolant_c), flow_m3_per_s=flow, stands_still=still, duration_s=self.profile.duration_s,
-                               materials=self.materials(), relative_tolerance=self.spec.march.network_tolerance)
+            plan = CoolingPlan(self.spec.cooling, self.module, coolant_c=coolant_c, flow_m3_per_s=flow, stands_still=still,
+                               duration_s=self.profile.duration_s, materials=self.materials(), relative_tolerance=self.spec.march.network_tolerance)
         except InputError as err:
             raise err.at(self.source) from None
         plan.source = self.source

@@ -192,3 +192,32 @@ def _stability(result):
     gain = point.held(result.tables, result.network).loop_gain(point.t_vj_c)
     one = _at_most("loop gain of losses and temperature", gain, 1.0, "", f"hottest point of the mission, at {point.end_s:.6g} s")
     yield Verdict(one.what, one.value, one.limit, one.unit, gain < 1.0, one.margin, one.where)
+
+
+#: Air that warms by more than this is no longer at its inlet's temperature [K].
+_AIR_WARMS_K = 30.0
+
+
+def cooling_flags(result) -> tuple[str, ...]:
+    """What to mistrust in the cooling: what its levels say, and what only the heat of the run shows."""
+    record, history, spec = result.cooling, result.history, result.study.spec.cooling
+    out = list(record.flags)
+    points = [(one, one.state.point) for one in record.used if one.state.point is not None and one.state.point.outlet_rise_k_per_w is not None]
+    if points:
+        # heat that flows for minutes: the sink does not see shorter peaks
+        width = max(1, int(np.ceil(120.0 * history.coolant_c.size / history.duration_s)))
+        heat = np.convolve(history.loss_w.sum(axis=1), np.ones(width) / width, mode="same").max()
+        least = max(points, key=lambda p: p[1].outlet_rise_k_per_w)
+        rise = heat * least[1].outlet_rise_k_per_w
+        hot = float(history.coolant_c.max()) + rise
+        liquid = record.plan.liquid
+        if liquid and hot > 100.0:
+            out.append(f"at {heat:.4g} W and the weakest flow that held ({least[0].state.words}) the coolant would leave at {hot:.0f} degC; boiling is not reckoned")
+        elif liquid and float(history.case_peak_c.max()) > 110.0:
+            out.append(f"the case reaches {history.case_peak_c.max():.0f} degC over a liquid; whether it boils at the channel walls is not reckoned")
+        elif not liquid and rise > _AIR_WARMS_K:
+            out.append(f"at {heat:.4g} W and the weakest flow that held ({least[0].state.words}) the air warms by {rise:.0f} K")
+        mean = history.energy_j.sum() / history.duration_s
+        if spec.heat_w is not None and not 0.5 * mean <= spec.heat_w <= 1.2 * heat:
+            out.append(f"fluid properties are taken at heat_w = {spec.heat_w:g} W; the run gives {mean:.4g} W in the mean and up to {heat:.4g} W over two minutes")
+    return tuple(out)

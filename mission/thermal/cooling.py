@@ -80,11 +80,6 @@ class Law(FileModel):
         """How much the surface must fall below a step before it is taken back [K]."""
         return 1.0 if self.hysteresis_k is None else self.hysteresis_k
 
-    @property
-    def quantity(self) -> str:
-        """What the law sets."""
-        return next(n for n in ("speed_ratio", "flow_l_per_min", "flow_m3_per_h") if getattr(self, n) is not None)
-
 
 class Fault(FileModel):
     """A blocked fan or a pump that stops, from a time in the mission on, in every mission.

@@ -62,6 +62,11 @@ class LevelGroup(NamedTuple):
     down_c: tuple[float, ...] = ()
     on_rise: bool = False
 
+    def allowed(self, surface_c: float, coolant_c: float) -> tuple[int, int]:
+        """First and last place of the levels that a sink surface keeps, over a coolant [degC]."""
+        watched = surface_c - coolant_c if self.on_rise else surface_c
+        return int(np.searchsorted(self.up_c, watched)), int(np.searchsorted(self.down_c, watched, side="right"))
+
 
 class CoolingLevels:
     """Networks of one inverter at several levels of cooling.
@@ -168,8 +173,7 @@ class _Level:
         """What junctions and case points do ``after`` a time without heat: rows for the reduced state and for the full modes."""
         net = self.plain
         n, t = net.n_chips, np.asarray(after)[:, None]
-        own = net.rho_local != 0.0
-        ratio = np.where(own, net.rho_case_local / np.where(own, net.rho_local, 1.0), 0.0)
+        own, ratio = net.rho_local != 0.0, net.case_share_local
         fade = np.exp(-t[:, :, None] * net.lam_local_per_s)  # (time, L, n)
         local = np.zeros((2, after.size, n, *net.lam_local_per_s.shape))
         chips = np.arange(n)

@@ -96,6 +96,22 @@ class ReducedNetwork:
         """Modes kept, local ones counted for every chip."""
         return self.lam_local_per_s.size + self.lam_shared_per_s.size
 
+    @property
+    def rates_per_s(self) -> np.ndarray:
+        """Decay rates of a state: local modes (mode by mode, chips within), then shared ones, shape (L n + S,)."""
+        return np.concatenate([self.lam_local_per_s.ravel(), self.lam_shared_per_s])
+
+    @property
+    def g_state(self) -> np.ndarray:
+        """What a rise of the coolant by 1 K takes off a state, in the order of :attr:`rates_per_s`."""
+        return np.concatenate([self.g_coolant_local.ravel(), self.g_coolant])
+
+    @property
+    def case_share_local(self) -> np.ndarray:
+        """Part of each local mode that its case point sees, where the junction sees it whole, shape (L, n)."""
+        own = self.rho_local != 0.0
+        return np.where(own, self.rho_case_local / np.where(own, self.rho_local, 1.0), 0.0)
+
     def r_th_k_per_w(self) -> np.ndarray:
         """Steady self and mutual resistances over the coolant, shape (n, n)."""
         shared = self.c_shared @ (self.b_shared / self.lam_shared_per_s[:, None])

@@ -20,7 +20,7 @@ from .build import full_and_reduced, inverter_modes
 from .cooling import FixedCooling, FosterCooling, SinkPath, sink_ladder, with_resistance
 from .levels import CoolingLevels, LevelGroup
 from .networks import CauerLadder
-from .sinks import FanSink, LiquidPlate, NaturalSink, SinkPoint, TableSink, sink_point
+from .sinks import FanSink, LiquidPlate, NaturalSink, SinkPoint, TableSink, flow_m3_per_s_of, sink_point
 
 CoolingSpec = Annotated[FixedCooling | FosterCooling | TableSink | FanSink | NaturalSink | LiquidPlate, Field(discriminator="kind")]
 #: Kinds whose resistance is reckoned.
@@ -108,7 +108,7 @@ class CoolingPlan:
         self._states: dict[int, LevelState] = {}
         #: File that speaks of this cooling, put in front of what later turns out to be wrong with it.
         self.source = ""
-        self._coolant, self._range = 0.5 * (coolant_c[0] + coolant_c[1]), coolant_c
+        self._coolant = 0.5 * (coolant_c[0] + coolant_c[1])
         self._flows, self._stands_still = flow_m3_per_s, stands_still
         _check_parts(spec, module, flow_m3_per_s, stands_still)
         for number, one in enumerate(spec.fault, 1):
@@ -151,6 +151,11 @@ class CoolingPlan:
     def computed(self) -> bool:
         """Whether the resistance is reckoned, not given."""
         return isinstance(self.spec, COMPUTED)
+
+    @property
+    def liquid(self) -> bool:
+        """Whether the coolant is known to be a liquid."""
+        return getattr(self.spec, "fluid", "air") not in ("air", None)
 
     # what a row says ------------------------------------------------------------------------------------------------------------
 
@@ -218,7 +223,7 @@ class CoolingPlan:
                 ladder = with_resistance(ladder, level.setting.value, "cooling.r_th_k_per_w")
             r = float(ladder.r_k_per_w.sum()) if isinstance(ladder, CauerLadder) else ladder
         path = path or SinkPath((ladder,))
-        return LevelState(level.setting.words(isinstance(self.spec, LiquidPlate) or getattr(self.spec, "fluid", "air") not in ("air", None)), r,
+        return LevelState(level.setting.words(self.liquid), r,
                           replace(path, paste=level.paste, chip_losses=self.spec.sink_sees == "chip-losses"), point)
 
     def _capacity(self):
@@ -339,12 +344,12 @@ def _stage_setting(stage) -> Setting:
         return Setting("speed", stage.speed_ratio)
     if stage.r_th_k_per_w is not None:
         return Setting("resistance", stage.r_th_k_per_w)
-    return Setting("flow", stage.flow_l_per_min / 60000.0 if stage.flow_l_per_min is not None else stage.flow_m3_per_h / 3600.0)
+    return Setting("flow", float(flow_m3_per_s_of(stage)))
 
 
 def _law_setting(law, t_c: float) -> Setting:
-    value = float(np.interp(t_c, law.at_c, getattr(law, law.quantity)))
-    return Setting("speed", value) if law.quantity == "speed_ratio" else Setting("flow", value / (60000.0 if law.quantity == "flow_l_per_min" else 3600.0))
+    course = law.speed_ratio if law.speed_ratio is not None else flow_m3_per_s_of(law)
+    return Setting("flow" if law.speed_ratio is None else "speed", float(np.interp(t_c, law.at_c, course)))
 
 
 def _has_curve(spec) -> bool:
@@ -359,10 +364,8 @@ def _less(spec, setting: Setting, share: float) -> Setting:
     if setting.what == "given":
         if _has_curve(spec):
             setting = Setting("speed", 1.0)
-        elif isinstance(spec, TableSink):
-            setting = Setting("flow", spec.at_m3_per_s)
         else:
-            setting = Setting("flow", spec.flow_l_per_min / 60000.0 if isinstance(spec, LiquidPlate) else spec.flow_m3_per_h / 3600.0)
+            setting = Setting("flow", spec.at_m3_per_s if isinstance(spec, TableSink) else float(flow_m3_per_s_of(spec)))
     if setting.what == "speed" and setting.value * share < 0.05:
         raise RangeError(where, f"{share:g} of a speed of {setting.value:g}", "at least a twentieth of the speed of the curve, or 0", "take 0, with [cooling.stopped]")
     if isinstance(spec, TableSink) and setting.value * share < spec.table_m3_per_s[0] * (1.0 - 1e-9):
@@ -395,11 +398,10 @@ def _paste_steps(grease, duration_s):
 
 def _row_of_sinks(spec: LiquidPlate, point: SinkPoint) -> SinkPath:
     """Each module on its own part of the plate; what the coolant takes up of one warms the next."""
-    shares = np.full(spec.positions, 1.0 / spec.positions) if spec.heat_shares is None else np.array(spec.heat_shares)
     place = ["abc".index(leg) for leg in spec.legs_along_flow]
     ladders: list = [None] * 3
-    for n, position in enumerate(point.positions):
-        r = (position.surface_rise_k_per_w - position.coolant_rise_k_per_w) / shares[n]
+    for n, position in enumerate(point.positions):  # each with a like part of the heat
+        r = (position.surface_rise_k_per_w - position.coolant_rise_k_per_w) * spec.positions
         ladders[place[n]] = CauerLadder(np.array([r]), np.array([point.heat_capacity_j_per_k / spec.positions]))
     return SinkPath(tuple(ladders), coolant_rise_k_per_w=point.outlet_rise_k_per_w, first_to_last=tuple(place))
 

@@ -82,7 +82,7 @@ class FlowCurve(FileModel):
     @property
     def flow_m3_per_s(self) -> np.ndarray:
         """Flows [m3/s], shape (points,)."""
-        return _flow(self, "flow")
+        return flow_m3_per_s_of(self, "flow")
 
 
 class Duct(FileModel):
@@ -163,14 +163,14 @@ class TableSink(_Sink):
     @property
     def table_m3_per_s(self) -> np.ndarray:
         """Flows of the table [m3/s], shape (points,)."""
-        return _flow(self, "flow")
+        return flow_m3_per_s_of(self, "flow")
 
     @property
     def at_m3_per_s(self) -> float:
         """Flow that the sink gets [m3/s]."""
         if self.at_l_per_min is None and self.at_m3_per_h is None:
             raise RangeError("cooling.at_l_per_min", "no flow at which the sink works", "at_l_per_min or at_m3_per_h, in the unit of the table")
-        return float(_flow(self, "at"))
+        return float(flow_m3_per_s_of(self, "at"))
 
 
 class _Finned(_Sink):
@@ -378,7 +378,8 @@ def _footprint_fits(footprint: Footprint, length_mm: float, width_mm: float) -> 
                          f"what fits on {length_mm:g} x {width_mm:g} mm", "check the sizes; length runs along the flow")
 
 
-def _flow(spec, stem: str):
+def flow_m3_per_s_of(spec, stem: str = "flow"):
+    """Flow or flows of a section [m3/s], from whichever of its fields ``<stem>_l_per_min`` and ``<stem>_m3_per_h`` is given."""
     liters = getattr(spec, f"{stem}_l_per_min", None)
     return np.asarray(liters, float) * _L_PER_MIN if liters is not None else np.asarray(getattr(spec, f"{stem}_m3_per_h"), float) * _M3_PER_H
 
